@@ -1,0 +1,2 @@
+/** Severity zones of published tables. */
+export type Zone = 'A' | 'B' | 'C' | 'D';
