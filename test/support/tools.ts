@@ -1,0 +1,18 @@
+/** Which optional tools this machine has. A test that needs one runs where it is present; scripts/test.mjs names the others. */
+import { spawnSync } from 'node:child_process';
+import { existsSync } from 'node:fs';
+import { fileURLToPath } from 'node:url';
+
+export function hasTool(command: string): boolean {
+  return spawnSync('sh', ['-c', `command -v ${command}`]).status === 0 || existsSync(`/usr/sbin/${command}`);
+}
+
+export function hasScipy(): boolean {
+  return spawnSync('/usr/bin/python3', ['-c', 'import scipy']).status === 0;
+}
+
+/** The folder of open recordings beside the checkout, or null. */
+export function recordingsFolder(): string | null {
+  const folder = fileURLToPath(new URL('../../../shared/data', import.meta.url));
+  return existsSync(folder) ? folder : null;
+}
