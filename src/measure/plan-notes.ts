@@ -1,0 +1,111 @@
+/** What a plan has to say to whoever wrote the settings, and which frequencies its lines cannot tell apart. */
+
+import type { PointPlan } from './plan.ts';
+
+/** A record promises 0 to rate/2.56 (common practice, no source). */
+export const RATE_OVER_FMAX = 2.56;
+/** Two components closer than the main lobe of a Hann window, four lines wide between zeros, look like one. */
+const TELL_APART_LINES = 2;
+
+export class PlanNotes {
+  /** For whoever writes the settings. */
+  readonly warnings: string[] = [];
+  /** Those of them that make every reading uncertain. */
+  readonly caveats: string[] = [];
+
+  warn(text: string): void {
+    this.warnings.push(text);
+  }
+
+  caution(text: string): void {
+    this.warnings.push(text);
+    this.caveats.push(text);
+  }
+}
+
+/** Notes bands that lie out of reach or are too narrow, and frequencies closer than the lines can tell apart. */
+export function noteFrequencies(plan: Omit<PointPlan, 'warnings' | 'caveats'>, notes: PlanNotes): void {
+  noteBands(plan, notes);
+  noteMains(plan, notes);
+  noteBearings(plan, notes);
+}
+
+type Frequency = readonly [name: string, hz: number];
+
+function noteBands(
+  { point, shaft, spectrum }: Omit<PointPlan, 'warnings' | 'caveats'>,
+  notes: PlanNotes,
+): void {
+  const nominalHz = shaft?.nominalHz ?? null;
+  for (const band of point.measure.bands) {
+    const edges = 'hz' in band.range ? band.range.hz : band.range.orders;
+    const unitHz = 'hz' in band.range ? 1 : nominalHz;
+    if (unitHz === null) continue;
+    const [low, high] = [edges[0] * unitHz, edges[1] * unitHz];
+    if (high > spectrum.fmaxHz) {
+      notes.warn(`band ${band.id} reaches ${hz(high)}, above Fmax ${hz(spectrum.fmaxHz)}: it will be null`);
+    } else if (high - low < 2 * TELL_APART_LINES * spectrum.lineHz) {
+      notes.warn(`band ${band.id} is ${hz(high - low)} wide, too narrow for lines of ${hz(spectrum.lineHz)}`);
+    }
+  }
+}
+
+function noteMains(plan: Omit<PointPlan, 'warnings' | 'caveats'>, notes: PlanNotes): void {
+  const { machine, mainsHz, shaft, spectrum } = plan;
+  if (machine.motor.supply !== 'mains' || shaft?.nominalHz == null) return;
+  const harmonic = Math.round((2 * mainsHz) / shaft.nominalHz);
+  const harmonicHz = harmonic * shaft.nominalHz;
+  if (Math.abs(harmonicHz - 2 * mainsHz) < TELL_APART_LINES * spectrum.lineHz) {
+    notes.warn(
+      `lines of ${hz(spectrum.lineHz)} cannot tell ${harmonic}x of the shaft (${hz(harmonicHz)}) from twice mains (${hz(2 * mainsHz)})`,
+    );
+  }
+}
+
+function noteBearings(plan: Omit<PointPlan, 'warnings' | 'caveats'>, notes: PlanNotes): void {
+  const { bearings, envelope, shaft } = plan;
+  for (const { id, multiples } of bearings) {
+    if (multiples === null)
+      notes.warn(`bearing ${id}: neither geometry nor multiples nor elements are given`);
+    else if (!multiples.certain)
+      notes.warn(`bearing ${id}: geometry unknown, its frequencies are rules of thumb`);
+  }
+  if (envelope === null || shaft?.nominalHz == null) return;
+  const reachHz = TELL_APART_LINES * envelope.lineHz;
+  const lines = bearings.flatMap(({ id, nominalHz }): Frequency[] => {
+    if (nominalHz === null) return [];
+    const { ftf, bsf, bpfo, bpfi } = nominalHz;
+    return [
+      [`FTF of ${id}`, ftf],
+      [`2xBSF of ${id}`, 2 * bsf],
+      [`BPFO of ${id}`, bpfo],
+      [`BPFI of ${id}`, bpfi],
+    ];
+  });
+  for (const [index, [name, lineHz]] of lines.entries()) {
+    if (lineHz > envelope.fmaxHz) notes.warn(`${name} (${hz(lineHz)}) lies above the envelope's Fmax`);
+    for (const [other, otherHz] of lines.slice(index + 1)) {
+      // The same frequency twice is the same bearing type at two places: no line spacing helps, and none is wrong.
+      if (lineHz !== otherHz && Math.abs(lineHz - otherHz) < reachHz) {
+        notes.warn(
+          `envelope lines of ${hz(envelope.lineHz)} cannot tell ${name} (${hz(lineHz)}) from ${other} (${hz(otherHz)})`,
+        );
+      }
+    }
+    const harmonic = Math.round(lineHz / shaft.nominalHz);
+    const harmonicHz = harmonic * shaft.nominalHz;
+    if (harmonic > 0 && Math.abs(lineHz - harmonicHz) < reachHz) {
+      notes.warn(`${name} (${hz(lineHz)}) lies on ${harmonic}x of the shaft (${hz(harmonicHz)})`);
+    }
+  }
+}
+
+/** A frequency for a person. */
+export function hz(value: number): string {
+  return `${Number(value.toPrecision(4))} Hz`;
+}
+
+/** A band for a person. */
+export function range(band: readonly [number, number]): string {
+  return `${Number(band[0].toPrecision(4))} to ${hz(band[1])}`;
+}

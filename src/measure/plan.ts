@@ -1,0 +1,225 @@
+/**
+ * From the settings of a point and the nominal sample rate to sizes: what a record must hold, how it is cut into
+ * blocks, which bands its figures cover, and where the settings ask for more than the rate or the sensor carries.
+ */
+
+import type { Machine, Point, WindowName } from '../config/station.ts';
+import { type BearingMultiples, type BearingRates, bearingMultiples } from '../machine/bearing.ts';
+import { synchronousHz } from '../machine/electrical.ts';
+import { chooseFactor, planDecimation } from '../signal/decimate.ts';
+import { ENVELOPE_EDGE_S, type EnvelopePlan, planEnvelope } from './plan-envelope.ts';
+import { hz, noteFrequencies, PlanNotes, RATE_OVER_FMAX, range } from './plan-notes.ts';
+
+/** Stop band of the anti-alias filter. The Kaiser estimate lands about 1 dB short: 82 is asked where 80 must hold. */
+export const ATTENUATION_DB = 82;
+/** Below 600 r/min the overall band starts at 2 Hz (ISO 10816-3 Annex A). */
+const SLOW_HZ = 10;
+const OVERALL_HZ = { slow: 2, usual: 10, high: 1000 } as const;
+/** A record must fit the rings and the transforms; two minutes of 100 kHz are about this. */
+const MAX_RECORD_SAMPLES = 1 << 24;
+
+/** Settings that no record can meet. */
+export class PlanError extends Error {
+  constructor(key: string, message: string) {
+    super(`${key}: ${message}`);
+    this.name = 'PlanError';
+  }
+}
+
+/** Averaged spectrum of the decimated acceleration. */
+export interface SpectrumPlan {
+  /** The decimation factor, and the rate after it. */
+  readonly factor: number;
+  readonly rateHz: number;
+  /** As asked, or what the rate carries if that is lower. */
+  readonly fmaxHz: number;
+  readonly lines: number;
+  readonly lineHz: number;
+  readonly blockSamples: number;
+  readonly averages: number;
+  readonly window: WindowName;
+  /** Raw samples at each end that only feed the filter. */
+  readonly marginSamples: number;
+}
+
+export interface PlannedBearing {
+  readonly id: string;
+  /** null: nothing is known of it. */
+  readonly multiples: BearingMultiples | null;
+  /** At the nominal speed; null: not known beforehand. */
+  readonly nominalHz: BearingRates | null;
+}
+
+/** Speed of the shaft at the point, as far as the settings tell. */
+export interface PlannedShaft {
+  readonly lowHz: number;
+  readonly highHz: number;
+  readonly nominalHz: number | null;
+}
+
+export interface PointPlan {
+  readonly key: string;
+  readonly point: Point;
+  readonly machine: Pick<Machine, 'shaft' | 'running' | 'motor'>;
+  readonly mainsHz: number;
+  /** Nominal raw rate: it gives the sizes; a record's own rate gives its frequencies. */
+  readonly rateHz: number;
+  readonly stepSamples: number;
+  readonly recordSamples: number;
+  readonly spectrum: SpectrumPlan;
+  /** Edges of `overall` at the nominal speed. */
+  readonly overallHz: readonly [number, number];
+  readonly accelerationHz: readonly [number, number];
+  readonly envelope: EnvelopePlan | null;
+  readonly shaft: PlannedShaft | null;
+  readonly bearings: readonly PlannedBearing[];
+  /** What the settings ask for and cannot have, for whoever writes them. */
+  readonly warnings: readonly string[];
+  /** Those of them that make every reading uncertain. */
+  readonly caveats: readonly string[];
+}
+
+/** Edges of the overall velocity: from 10 Hz, or from 2 Hz for a shaft below 600 r/min, to 1000 Hz or Fmax. */
+export function overallBandHz(shaftHz: number | null, fmaxHz: number): [number, number] {
+  const low = shaftHz !== null && shaftHz < SLOW_HZ ? OVERALL_HZ.slow : OVERALL_HZ.usual;
+  return [low, Math.min(OVERALL_HZ.high, fmaxHz)];
+}
+
+/**
+ * Plans the measurement of one point.
+ *
+ * @param rateHz nominal sample rate of the node.
+ * @param mainsHz frequency of the site's mains.
+ * @throws PlanError where no record can meet the settings.
+ */
+export function planPoint(point: Point, machine: Machine, rateHz: number, mainsHz: number): PointPlan {
+  if (!(Number.isFinite(rateHz) && rateHz > 0)) {
+    throw new PlanError(point.key, `the sample rate must be above 0 Hz, not ${rateHz}`);
+  }
+  const notes = new PlanNotes();
+
+  const shaft = plannedShaft(machine, point.ratio);
+  const spectrum = planSpectrum(point, rateHz, notes);
+  const overallHz = overallBandHz(shaft?.nominalHz ?? shaft?.lowHz ?? null, spectrum.fmaxHz);
+  if (overallHz[1] < OVERALL_HZ.high) {
+    notes.warn(`overall velocity ends at Fmax, ${hz(overallHz[1])}, instead of 1000 Hz`);
+  }
+  const usable = point.sensor.usableHz;
+  if (usable !== null && (usable[0] > overallHz[0] || usable[1] < overallHz[1])) {
+    notes.caution(
+      `overall velocity wants ${range(overallHz)}, the sensor is usable over ${range(usable)}: its figures are uncertain`,
+    );
+  }
+  const bearings = point.bearings.map((bearing): PlannedBearing => {
+    const multiples = bearingMultiples(bearing);
+    return { id: bearing.id, multiples, nominalHz: ratesAt(multiples, shaft?.nominalHz ?? null) };
+  });
+  const fastestHz = shaft?.nominalHz ?? shaft?.highHz ?? fastestUnknownHz(machine, point.ratio, mainsHz);
+  const envelope = planEnvelope(point, highestBpfi(bearings) * fastestHz, rateHz, notes);
+
+  const stepSamples = Math.max(1, Math.round(point.measure.everyS * rateHz));
+  const envelopeS =
+    envelope === null ? 0 : overlappedBlocks(envelope.blockS, envelope.averages) + 2 * ENVELOPE_EDGE_S;
+  const recordSamples = Math.max(stepSamples, rawSamplesFor(spectrum), Math.ceil(envelopeS * rateHz));
+  if (recordSamples > MAX_RECORD_SAMPLES) {
+    throw new PlanError(
+      point.key,
+      `a record of ${(recordSamples / rateHz).toFixed(0)} s is too long; ask for fewer lines, fewer averages or a shorter interval`,
+    );
+  }
+  const plan = {
+    key: point.key,
+    point,
+    machine: { shaft: machine.shaft, running: machine.running, motor: machine.motor },
+    mainsHz,
+    rateHz,
+    stepSamples,
+    recordSamples,
+    spectrum,
+    overallHz,
+    accelerationHz: accelerationBandHz(point, rateHz),
+    envelope,
+    shaft,
+    bearings,
+  };
+  noteFrequencies(plan, notes);
+  return { ...plan, warnings: notes.warnings, caveats: notes.caveats };
+}
+
+function plannedShaft(machine: Machine, ratio: number): PlannedShaft | null {
+  const source = machine.shaft;
+  if (source?.kind === 'fixed') {
+    const nominalHz = (source.rpm / 60) * ratio;
+    const tolerance = source.tolerancePct / 100;
+    return { lowHz: nominalHz * (1 - tolerance), highHz: nominalHz * (1 + tolerance), nominalHz };
+  }
+  if (source?.kind === 'range') {
+    const [low, high] = source.rpmRange;
+    return { lowHz: (low / 60) * ratio, highHz: (high / 60) * ratio, nominalHz: null };
+  }
+  return null;
+}
+
+function planSpectrum(point: Point, rateHz: number, notes: PlanNotes): SpectrumPlan {
+  const asked = point.measure.velocity;
+  const carriedHz = rateHz / RATE_OVER_FMAX;
+  const fmaxHz = Math.min(asked.fmaxHz, carriedHz);
+  if (fmaxHz < asked.fmaxHz) {
+    notes.caution(
+      `Fmax ${hz(asked.fmaxHz)} needs a rate of ${hz(asked.fmaxHz * RATE_OVER_FMAX)}; ${hz(rateHz)} carries ${hz(carriedHz)}`,
+    );
+  }
+  if (fmaxHz <= OVERALL_HZ.usual) {
+    throw new PlanError(
+      point.key,
+      `a rate of ${hz(rateHz)} carries ${hz(carriedHz)}, too little for a velocity`,
+    );
+  }
+  const factor = chooseFactor(rateHz, fmaxHz);
+  const lineHz = asked.fmaxHz / asked.lines;
+  const decimatedHz = rateHz / factor;
+  const decimation = planDecimation({ rateHz, factor, fmaxHz, attenuationDb: ATTENUATION_DB });
+  return {
+    factor,
+    rateHz: decimatedHz,
+    fmaxHz,
+    lines: Math.floor(fmaxHz / lineHz),
+    lineHz,
+    blockSamples: Math.round(decimatedHz / lineHz),
+    averages: asked.averages,
+    window: asked.window,
+    marginSamples: decimation.marginSamples,
+  };
+}
+
+/** Without a speed in the settings: synchronous, or two poles on mains, as fast as a pump commonly gets. */
+function fastestUnknownHz(machine: Machine, ratio: number, mainsHz: number): number {
+  return synchronousHz(mainsHz, machine.motor.poles ?? 2) * ratio;
+}
+
+function highestBpfi(bearings: readonly PlannedBearing[]): number {
+  return Math.max(0, ...bearings.map((bearing) => bearing.multiples?.bpfi ?? 0));
+}
+
+function accelerationBandHz(point: Point, rateHz: number): [number, number] {
+  const usable = point.sensor.usableHz;
+  const carriedHz = rateHz / RATE_OVER_FMAX;
+  return [usable?.[0] ?? OVERALL_HZ.slow, Math.min(usable?.[1] ?? carriedHz, carriedHz)];
+}
+
+function ratesAt(multiples: BearingMultiples | null, shaftHz: number | null): BearingRates | null {
+  if (multiples === null || shaftHz === null) return null;
+  const { ftf, bsf, bpfo, bpfi } = multiples;
+  return { ftf: ftf * shaftHz, bsf: bsf * shaftHz, bpfo: bpfo * shaftHz, bpfi: bpfi * shaftHz };
+}
+
+/** How many blocks' worth of time half-overlapped averages take. */
+function overlappedBlocks(blockLength: number, averages: number): number {
+  return blockLength * (1 + (averages - 1) / 2);
+}
+
+/** Raw samples that give the averages, with what the filter takes at both ends. */
+function rawSamplesFor(spectrum: SpectrumPlan): number {
+  const decimated = Math.ceil(overlappedBlocks(spectrum.blockSamples, spectrum.averages)) + spectrum.averages;
+  return decimated * spectrum.factor + 2 * spectrum.marginSamples;
+}
