@@ -1,11 +1,36 @@
 /**
- * The catalogue of errors a person can meet: a stable code, one sentence, the fix. Each code stands once here and
- * once in config/ERRORS.md; a test holds the two against each other.
+ * The catalogue of errors a person can meet: a stable code and the fix. Each code stands once here and once in
+ * config/ERRORS.md; a test holds the two against each other. To add one: a line here, a line there.
  */
 
 export const errorCatalogue = {
+  'config.invalid': 'Mend each place that is listed; `forebay check -c FILE` lists them again.',
+  'config.syntax': 'Mend the YAML at that place; a text editor with YAML support shows it.',
+  'config.too-large': 'Keep the station file under 64 kB and without needless nesting.',
+  'config.duplicate-key': 'Keep one of the two.',
+  'config.unknown-key': 'Correct the spelling or take the key out.',
+  'config.missing-key': 'Add the key.',
+  'config.wrong-value': 'Give a value of the kind and range that is named.',
+  'config.exclusive-keys': 'Keep one of the keys that exclude each other.',
+  'config.reference': 'Name something that this file defines, or define it.',
+  'config.duplicate-id': 'Give each its own id.',
+  'config.reserved-id': 'Choose another id: this one is a topic of the agent.',
+  'config.impossible': 'Check the figure against the nameplate or the data sheet.',
+  'config.secret': 'Move the secret into a file of its own and name that in broker.password_file.',
+  'config.not-available-yet': 'Take it out of the station file until a later version brings it.',
   'file.unreadable': 'Check the path and that this user may read it.',
-  'recording.malformed': 'Export the recording again as PCM WAV, 16 to 32 bit, and check that it was copied whole.',
+  'recording.malformed':
+    'Export the recording again as PCM WAV, 16 to 32 bit, and check that it was copied whole.',
+  'link.device-missing':
+    'Check the cable and the path of the device; `ls /dev/serial/by-id` lists what is plugged in.',
+  'link.device-denied': 'Add the user of the agent to the group that owns the device, usually dialout.',
+  'link.port-busy': 'Stop the other program that has this port open.',
+  'broker.port-busy': 'Stop the other broker, or choose another port: broker: {embedded: {port: 1884}}.',
+  'broker.refused': 'Check user, password file, client id and the rights of this user at the broker.',
+  'store.locked': 'Stop the other agent that runs on this storage.directory, or give this station its own.',
+  'store.unwritable':
+    'Check that the folder exists, that this user may write it and that the disk is not full.',
+  'command.usage': 'See `forebay help`.',
 } as const satisfies Record<string, string>;
 
 export type ErrorCode = keyof typeof errorCatalogue;
