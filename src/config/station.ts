@@ -4,7 +4,8 @@
  * Everything is deeply frozen.
  */
 
-export type WindowName = 'rectangular' | 'hann' | 'flat-top';
+import type { WindowName } from '../signal/window.ts';
+
 export type Level = 'alert' | 'danger';
 
 export interface Station {
