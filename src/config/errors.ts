@@ -25,23 +25,22 @@ export const errorCatalogue = {
     'Check the cable and the path of the device; `ls /dev/serial/by-id` lists what is plugged in.',
   'link.device-denied': 'Add the user of the agent to the group that owns the device, usually dialout.',
   'link.port-busy': 'Stop the other program that has this port open.',
-  'broker.port-busy': 'Stop the other broker, or choose another port: broker: {embedded: {port: 1884}}.',
-  'broker.refused': 'Check user, password file, client id and the rights of this user at the broker.',
-  'store.locked': 'Stop the other agent that runs on this storage.directory, or give this station its own.',
-  'store.unwritable':
-    'Check that the folder exists, that this user may write it and that the disk is not full.',
   'command.usage': 'See `forebay help`.',
   'store.locked': 'Stop the other agent, or give this one a `storage.directory` of its own.',
-  'store.unwritable': 'Check that `storage.directory` exists, that this user may write there and that the disk is not read-only.',
+  'store.unwritable':
+    'Check that `storage.directory` exists, that this user may write there and that the disk is not read-only.',
   'store.full': 'Free space on the disk; what could not be written is kept in memory and tried again.',
-  'store.newer': 'Run the agent version that wrote this directory, or give this one a `storage.directory` of its own.',
+  'store.newer':
+    'Run the agent version that wrote this directory, or give this one a `storage.directory` of its own.',
   'store.broken': 'Restart the agent: it sets the broken database aside and starts a fresh one.',
   'store.busy': 'The disk cannot keep up; check the card and lower the number of points or the publish rate.',
   'store.stopped': 'Restart the agent if it was not stopped on purpose, and report the log.',
   'uplink.secret': 'Put the secret alone into the file, and let the user of the agent read it: chmod 600.',
-  'uplink.url': 'Write the broker as mqtt://, mqtts://, ws:// or wss:// with its host and port, without user or password in it.',
+  'uplink.url':
+    'Write the broker as mqtt://, mqtts://, ws:// or wss:// with its host and port, without user or password in it.',
   'uplink.busy-port': 'Choose another `broker.embedded.port`, or stop the broker that holds this one.',
-  'uplink.certificate': 'Check `ca_file`, that the certificate is still valid and that its name is the host in `broker.url`.',
+  'uplink.certificate':
+    'Check `ca_file`, that the certificate is still valid and that its name is the host in `broker.url`.',
   'uplink.clock': 'Set the clock of the gateway (NTP, or a battery clock); measuring goes on meanwhile.',
   'uplink.refused': 'Check `username`, `password_file` and what the broker allows this client.',
 } as const satisfies Record<string, string>;

@@ -18,12 +18,19 @@ export interface Station {
   /** The alarm rules in force: those of the file, or the default set. */
   readonly rules: readonly Rule[];
   readonly asks: readonly string[];
+  /** Whether the file lists the asks itself, or they are the default. */
+  readonly asksListed: boolean;
   /** First 12 hex digits of the SHA-256 of the file's text: `config` in the `agent` topic. */
   readonly configHash: string;
 }
 
 export type Broker =
-  | { readonly kind: 'embedded'; readonly port: number; readonly bytesPerDay: number; readonly snapshotBytesPerDay: number }
+  | {
+      readonly kind: 'embedded';
+      readonly port: number;
+      readonly bytesPerDay: number;
+      readonly snapshotBytesPerDay: number;
+    }
   | {
       readonly kind: 'remote';
       readonly url: string;
@@ -75,20 +82,33 @@ export interface LinkSettings {
   readonly transport: Transport;
   readonly format:
     | { readonly kind: 'frames'; readonly expect: Expectation }
-    | { readonly kind: 'columns'; readonly sampleRateHz: number; readonly channels: readonly ColumnChannel[] };
+    | {
+        readonly kind: 'columns';
+        readonly sampleRateHz: number;
+        readonly channels: readonly ColumnChannel[];
+      };
   /** By channel name. */
   readonly sensors: Readonly<Record<string, SensorTrust>>;
 }
 
 export type Severity =
   | { readonly table: 'iso-10816-7'; readonly category: 'I' | 'II'; readonly ratedKw: number }
-  | { readonly table: 'iso-20816-3' | 'iso-10816-3'; readonly group: 1 | 2; readonly support: 'rigid' | 'flexible' }
+  | {
+      readonly table: 'iso-20816-3' | 'iso-10816-3';
+      readonly group: 1 | 2;
+      readonly support: 'rigid' | 'flexible';
+    }
   | { readonly table: 'limits'; readonly limitsMmS: readonly [number, number, number] };
 
 export type ShaftSource =
   | { readonly kind: 'fixed'; readonly rpm: number; readonly tolerancePct: number }
   | { readonly kind: 'range'; readonly rpmRange: readonly [number, number] }
-  | { readonly kind: 'tachometer'; readonly link: string; readonly channel: string; readonly pulsesPerRev: number }
+  | {
+      readonly kind: 'tachometer';
+      readonly link: string;
+      readonly channel: string;
+      readonly pulsesPerRev: number;
+    }
   | { readonly kind: 'mqtt'; readonly topic: string };
 
 export type RunningSource =
@@ -99,9 +119,18 @@ export type RunningSource =
 export interface Bearing {
   readonly id: string;
   readonly elements: number | null;
-  readonly geometry: { readonly elementMm: number; readonly pitchMm: number; readonly contactDeg: number } | null;
+  readonly geometry: {
+    readonly elementMm: number;
+    readonly pitchMm: number;
+    readonly contactDeg: number;
+  } | null;
   /** Per shaft revolution; `bsf` is once per spin of the element. */
-  readonly multiples: { readonly ftf: number; readonly bsf: number; readonly bpfo: number; readonly bpfi: number } | null;
+  readonly multiples: {
+    readonly ftf: number;
+    readonly bsf: number;
+    readonly bpfo: number;
+    readonly bpfi: number;
+  } | null;
 }
 
 export interface BandSettings {
@@ -165,7 +194,12 @@ export type RuleTest =
   | { readonly kind: 'zones' }
   | { readonly kind: 'is'; readonly values: readonly string[]; readonly level: Level }
   | { readonly kind: 'baseline'; readonly alert: number | null; readonly danger: number | null }
-  | { readonly kind: 'rise'; readonly alertPct: number | null; readonly dangerPct: number | null; readonly overDays: number }
+  | {
+      readonly kind: 'rise';
+      readonly alertPct: number | null;
+      readonly dangerPct: number | null;
+      readonly overDays: number;
+    }
   /** The built-in sensor rule: silent, flat, over-range, foreign node. */
   | { readonly kind: 'sensor' };
 

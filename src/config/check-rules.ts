@@ -1,0 +1,141 @@
+/** Alarm rules: one test each, a figure that exists, limits in order, points that exist. */
+
+import { checkIds, checkOneOf } from './check-ids.ts';
+import { type Report, suggestion } from './issues.ts';
+import { mergeMeasure } from './merge-measure.ts';
+import type { LooseStationFile } from './schema.ts';
+import { type WatchKind, watchKind, watchPaths } from './watch-paths.ts';
+import type { KeyPath } from './yaml-text.ts';
+
+type LooseRule = NonNullable<NonNullable<LooseStationFile['alarms']>[number]>;
+type BandsByPoint = ReadonlyMap<string, ReadonlySet<string>>;
+
+const tests = ['above', 'below', 'zones', 'is', 'baseline', 'rise'] as const;
+
+export function checkRules(file: LooseStationFile, report: Report): void {
+  const reserved = { sensor: 'the built-in rule for sensor health, which is always in force' };
+  checkIds(file.alarms, ['alarms'], 'rule', reserved, report);
+  const bands = bandsByPoint(file);
+  for (const [index, rule] of (file.alarms ?? []).entries()) {
+    if (rule) checkRule(rule, ['alarms', index], bands, report);
+  }
+}
+
+function bandsByPoint(file: LooseStationFile): BandsByPoint {
+  const bands = new Map<string, ReadonlySet<string>>();
+  for (const machine of file.machines ?? []) {
+    for (const point of machine?.points ?? []) {
+      if (machine?.id === undefined || point?.id === undefined) continue;
+      const merged = mergeMeasure([file.measure, machine.measure, point.measure]);
+      bands.set(`${machine.id}/${point.id}`, new Set(merged.bands.flatMap((band) => band?.id ?? [])));
+    }
+  }
+  return bands;
+}
+
+function checkRule(rule: LooseRule, path: KeyPath, bands: BandsByPoint, report: Report): void {
+  const test = checkOneOf(rule, tests, path, true, report);
+  const keys = [...bands.keys()];
+  for (const [index, key] of (rule.points ?? []).entries()) {
+    if (key === undefined || bands.has(key)) continue;
+    report(
+      'config.reference',
+      [...path, 'points', index],
+      `there is no point ${key}${suggestion(key, keys)}`,
+    );
+  }
+  const kind = checkWatch(rule, path, bands, report);
+  if (test !== null && kind !== undefined) checkKind(rule, test, kind, path, report);
+  if (test === 'zones' && rule.watch !== undefined && rule.watch !== 'velocity.overall') {
+    report('config.wrong-value', [...path, 'watch'], `is ${rule.watch}, zones judge velocity.overall`);
+  }
+  checkLimits(rule, path, report);
+  if (rule.level !== undefined && test !== null && test !== 'is') {
+    report('config.exclusive-keys', [...path, 'level'], `goes with is, ${test} names its levels itself`);
+  }
+  checkOneOf(rule, ['deadband_pct', 'deadband'], path, false, report);
+  for (const key of ['deadband_pct', 'deadband'] as const) {
+    if (rule[key] === undefined || test !== 'is') continue;
+    report('config.exclusive-keys', [...path, key], 'does not go with is, which has no limit; take it out');
+  }
+}
+
+/** The kind of figure that is watched; undefined where there is none. */
+function checkWatch(
+  rule: LooseRule,
+  path: KeyPath,
+  bands: BandsByPoint,
+  report: Report,
+): WatchKind | undefined {
+  if (rule.watch === undefined) return undefined;
+  const watched = [...bands].filter(([key]) => rule.points === undefined || rule.points.includes(key));
+  const all = new Set(watched.flatMap(([, ids]) => [...ids]));
+  const kind = watchKind(rule.watch, all);
+  if (kind === undefined) {
+    const message = `${rule.watch} is no figure of a reading${suggestion(rule.watch, watchPaths(all))}`;
+    report('config.reference', [...path, 'watch'], message);
+    return undefined;
+  }
+  for (const key of rule.points ?? []) {
+    const ids = key === undefined ? undefined : bands.get(key);
+    if (ids === undefined || watchKind(rule.watch, ids) !== undefined) continue;
+    report(
+      'config.reference',
+      [...path, 'watch'],
+      `${rule.watch} is no figure of ${key}, which has no such band`,
+    );
+  }
+  return kind;
+}
+
+function checkKind(
+  rule: LooseRule,
+  test: (typeof tests)[number],
+  kind: WatchKind,
+  path: KeyPath,
+  report: Report,
+): void {
+  if (test === 'is') {
+    if (kind.kind === 'number') {
+      const message = `${rule.watch} is a number, compare it by above or below`;
+      report('config.wrong-value', [...path, 'is'], message);
+      return;
+    }
+    for (const [index, value] of (rule.is ?? []).entries()) {
+      if (value === undefined || kind.values.includes(value)) continue;
+      const message = `${rule.watch} is never ${value}${suggestion(value, kind.values)}`;
+      report('config.wrong-value', [...path, 'is', index], message);
+    }
+  } else if (kind.kind === 'text' && test !== 'zones') {
+    const message = `${rule.watch} is one of ${kind.values.join(', ')}, compare it by is`;
+    report('config.wrong-value', [...path, test], message);
+  }
+}
+
+function checkLimits(rule: LooseRule, path: KeyPath, report: Report): void {
+  for (const key of ['above', 'below', 'baseline'] as const) {
+    const levels = rule[key];
+    if (levels) checkOrder(levels.alert, levels.danger, key, [...path, key], 'danger', report);
+  }
+  const rise = rule.rise;
+  if (rise) checkOrder(rise.alert_pct, rise.danger_pct, 'rise', [...path, 'rise'], 'danger_pct', report);
+}
+
+function checkOrder(
+  alert: number | undefined,
+  danger: number | undefined,
+  test: string,
+  path: KeyPath,
+  dangerKey: string,
+  report: Report,
+): void {
+  if (alert === undefined && danger === undefined) {
+    report('config.missing-key', path, 'has neither alert nor danger, give one at least');
+    return;
+  }
+  if (alert === undefined || danger === undefined) return;
+  const inverted = test === 'below' ? danger > alert : danger < alert;
+  if (!inverted) return;
+  const message = `is ${danger}, danger lies ${test === 'below' ? 'below' : 'above'} alert (${alert}); are they swapped?`;
+  report('config.impossible', [...path, dangerKey], message);
+}
