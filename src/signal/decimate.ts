@@ -20,10 +20,9 @@ interface Stage {
   readonly kernel: Kernel;
 }
 
-/** One half of a symmetric filter without its zeros. */
+/** A symmetric filter as pairs of equal taps about its middle, without its zeros. */
 interface Kernel {
   readonly half: number;
-  readonly centre: number;
   readonly offsets: Int32Array;
   readonly weights: Float64Array;
 }
@@ -105,7 +104,7 @@ export function planDecimation(options: DecimationOptions): DecimationPlan {
   for (const stage of stages) {
     marginSamples += stage.kernel.half * before;
     before *= stage.factor;
-    cost += (stage.kernel.weights.length + 1) / before;
+    cost += stage.kernel.weights.length / before;
   }
   return {
     rateHz,
@@ -138,35 +137,84 @@ export function decimate(plan: DecimationPlan, x: Float64Array): Float64Array {
   if (x.length < needed) {
     throw new SignalRangeError('x.length', x.length, `the decimation filters need ${needed} samples or more`);
   }
-  let samples = x;
-  for (const stage of plan.stages) samples = runStage(stage, samples);
-  return samples === x ? x.slice() : samples;
-}
-
-function runStage({ factor, kernel }: Stage, x: Float64Array): Float64Array {
-  const out = new Float64Array(Math.floor((x.length - 1 - 2 * kernel.half) / factor) + 1);
-  const { half, centre, offsets, weights } = kernel;
-  const pairs = weights.length;
-  for (let i = 0, at = half; i < out.length; i++, at += factor) {
-    let sum = centre * x[at]!;
-    for (let j = 0; j < pairs; j++) {
-      const offset = offsets[j]!;
-      sum += weights[j]! * (x[at - offset]! + x[at + offset]!);
-    }
-    out[i] = sum;
+  if (plan.factor === 1) return x.slice();
+  const out = new Float64Array(plan.outputLength(x.length));
+  // Tile by tile through the whole cascade: what lies between the stages stays in the cache.
+  const tile = Math.min(out.length, Math.max(256, Math.ceil(16_384 / plan.factor)));
+  const between: Float64Array[] = [];
+  let length = plan.inputLength(tile);
+  for (const stage of plan.stages.slice(0, -1)) {
+    length = stageOutputs(stage, length);
+    between.push(new Float64Array(length));
+  }
+  for (let from = 0; from < out.length; from += tile) {
+    const to = Math.min(out.length, from + tile);
+    const start = from * plan.factor;
+    let samples = x.subarray(start, start + plan.inputLength(to - from));
+    plan.stages.forEach((stage, s) => {
+      const target = between[s]?.subarray(0, stageOutputs(stage, samples.length)) ?? out.subarray(from, to);
+      runStage(stage, samples, target);
+      samples = target;
+    });
   }
   return out;
 }
 
+function stageOutputs({ factor, kernel }: Stage, inputs: number): number {
+  return Math.floor((inputs - 1 - 2 * kernel.half) / factor) + 1;
+}
+
+/** Four taps pairs at a time over all outputs: long loops, weights in registers. */
+function runStage({ factor, kernel }: Stage, x: Float64Array, out: Float64Array): void {
+  const { half, offsets, weights } = kernel;
+  out.fill(0);
+  let j = 0;
+  for (; j + 4 <= weights.length; j += 4) addFourPairs(out, x, half, factor, offsets, weights, j);
+  for (; j < weights.length; j++) addPair(out, x, half, factor, offsets[j]!, weights[j]!);
+}
+
+function addFourPairs(
+  out: Float64Array,
+  x: Float64Array,
+  half: number,
+  factor: number,
+  offsets: Int32Array,
+  weights: Float64Array,
+  j: number,
+): void {
+  const [a, b, c, d] = [offsets[j]!, offsets[j + 1]!, offsets[j + 2]!, offsets[j + 3]!];
+  const [u, v, w, z] = [weights[j]!, weights[j + 1]!, weights[j + 2]!, weights[j + 3]!];
+  for (let i = 0, k = half; i < out.length; i++, k += factor) {
+    out[i] =
+      out[i]! +
+      u * (x[k - a]! + x[k + a]!) +
+      v * (x[k - b]! + x[k + b]!) +
+      w * (x[k - c]! + x[k + c]!) +
+      z * (x[k - d]! + x[k + d]!);
+  }
+}
+
+function addPair(
+  out: Float64Array,
+  x: Float64Array,
+  half: number,
+  factor: number,
+  offset: number,
+  weight: number,
+): void {
+  for (let i = 0, k = half; i < out.length; i++, k += factor)
+    out[i] = out[i]! + weight * (x[k - offset]! + x[k + offset]!);
+}
+
 function foldKernel(taps: Float64Array): Kernel {
   const middle = (taps.length - 1) / 2;
-  const offsets: number[] = [];
+  const offsets = [0];
   for (let k = 1; k <= middle; k++) if (taps[middle + k] !== 0) offsets.push(k);
   return {
-    half: offsets.at(-1) ?? 0,
-    centre: taps[middle]!,
+    half: offsets.at(-1)!,
     offsets: Int32Array.from(offsets),
-    weights: Float64Array.from(offsets, (k) => taps[middle + k]!),
+    // The middle tap as a pair of halves.
+    weights: Float64Array.from(offsets, (k) => (k === 0 ? taps[middle]! / 2 : taps[middle + k]!)),
   };
 }
 

@@ -5,7 +5,7 @@ import { requireCount, requirePositive, SignalRangeError } from './range-error.t
  * Samples a transform takes at most: long records are cut into pieces that overlap by what is dropped at their ends, so
  * memory stays bounded and the work stays in the cache.
  */
-const PIECE_SAMPLES = 2 ** 16;
+const PIECE_SAMPLES = 2 ** 15;
 
 /** A record in the frequency domain, piece by piece: made once, used for any number of bands. */
 export interface RecordTransform {

@@ -62,11 +62,12 @@ export interface DisplacementOptions {
 
 /**
  * Displacement over time: acceleration of one stretch, integrated twice in the frequency domain within a band. The
- * stretch is faded in and out over three periods of the lower edge, and those ends are left out of the result.
+ * stretch is faded in and out over two periods of the lower edge; six periods at each end, where that still rings, are left
+ * out of the result.
  *
- * @param x Acceleration, longer than 12 periods of the lower edge.
+ * @param x Acceleration, at least 16 periods of the lower edge.
  * @param options Rate, band, unit.
- * @returns µm, shorter than x by 3·rate/lower edge at each end.
+ * @returns µm, shorter than x by 6·rate/lower edge at each end.
  * @throws SignalRangeError if the band is not in order, lies above half the rate, or the stretch is too short.
  * @see Kinematics; 1 g = 9.80665 m/s².
  * @example 10 Hz at 1 g peak swings 4968.1 µm peak to peak.
@@ -110,8 +111,8 @@ export function displacementWaveform(x: Float64Array, options: DisplacementOptio
   }
   // Only positive frequencies, doubled: the real part of the inverse is the signal.
   const complex = inverseFft(spectrum);
-  const out = new Float64Array(x.length - 2 * fade);
-  for (let i = 0; i < out.length; i++) out[i] = complex[2 * (i + fade)]!;
+  const out = new Float64Array(x.length - 2 * cut);
+  for (let i = 0; i < out.length; i++) out[i] = complex[2 * (i + cut)]!;
   return out;
 }
 

@@ -110,8 +110,8 @@ export function windowResponse(name: WindowName, offsetBins: number): number {
   const terms = cosineTerms[name];
   let sum = terms[0]! * sinc(offsetBins);
   for (let k = 1; k < terms.length; k++) {
-    const pair = (terms[k]! / 2) * (sinc(offsetBins - k) + sinc(offsetBins + k));
-    sum += k % 2 === 0 ? pair : -pair;
+    // About the window's middle all terms are positive.
+    sum += (terms[k]! / 2) * (sinc(offsetBins - k) + sinc(offsetBins + k));
   }
   return Math.abs(sum) / terms[0]!;
 }
