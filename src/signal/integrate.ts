@@ -80,12 +80,14 @@ export function displacementWaveform(x: Float64Array, options: DisplacementOptio
   if (!(highHz > lowHz && highHz <= rateHz / 2)) {
     throw new SignalRangeError('bandHz', bandHz, `needs edges in order, the upper at most ${rateHz / 2} Hz`);
   }
-  const fade = Math.ceil((3 * rateHz) / lowHz);
-  if (x.length <= 4 * fade) {
+  const fade = Math.ceil((2 * rateHz) / lowHz);
+  const cut = 3 * fade;
+  const needed = 8 * fade;
+  if (x.length < needed) {
     throw new SignalRangeError(
       'x.length',
       x.length,
-      `displacement from ${lowHz} Hz needs more than ${4 * fade} samples`,
+      `displacement from ${lowHz} Hz needs ${needed} samples or more`,
     );
   }
   const size = nextPowerOfTwo(x.length);
