@@ -1,0 +1,122 @@
+/**
+ * The measuring worker as seen from the main thread: jobs in, readings out, in order. A worker that dies is replaced;
+ * the job it was at is given up, so that a record that kills it cannot do so for ever.
+ */
+
+import { Worker } from 'node:worker_threads';
+import type { MeasureJob, MeasureOutcome, MeasuringSetup, ToWorker } from './measure-job.ts';
+
+/** Jobs that may wait. Beyond, the oldest is given up: what is newest matters most. */
+const MAX_WAITING = 256;
+const RESTART_AFTER_MS = 500;
+
+export interface MeasuringHost {
+  workerLost(reason: string): void;
+}
+
+interface Waiting {
+  job: Omit<MeasureJob, 'id'>;
+  resolve(outcome: MeasureOutcome): void;
+}
+
+export class MeasuringRoom {
+  /** Records that got no reading, by reason. */
+  readonly missed: Record<string, number> = {};
+  workerRestarts = 0;
+  readonly #setup: MeasuringSetup;
+  readonly #host: MeasuringHost;
+  readonly #rings = new Map<string, SharedArrayBuffer>();
+  readonly #queue: Waiting[] = [];
+  #current: (Waiting & { id: number }) | null = null;
+  #nextId = 1;
+  #worker: Worker | null = null;
+  #restart: NodeJS.Timeout | null = null;
+  #stopped = false;
+
+  constructor(setup: MeasuringSetup, host: MeasuringHost) {
+    this.#setup = setup;
+    this.#host = host;
+    this.#start();
+  }
+
+  get waiting(): number {
+    return this.#queue.length + (this.#current ? 1 : 0);
+  }
+
+  /** Makes the ring of a link known; a later one takes the place of an earlier. */
+  addRing(link: string, memory: SharedArrayBuffer): void {
+    this.#rings.set(link, memory);
+    this.#post({ kind: 'ring', link, memory });
+  }
+
+  /** Always settles: with a reading, or with why there is none. */
+  measure(job: Omit<MeasureJob, 'id'>): Promise<MeasureOutcome> {
+    return new Promise((resolve) => {
+      if (this.#stopped) {
+        resolve({ id: 0, missed: 'stopping' });
+        return;
+      }
+      this.#queue.push({ job, resolve });
+      if (this.#queue.length > MAX_WAITING) this.#giveUp(this.#queue.shift(), 'measuring is behind');
+      this.#next();
+    });
+  }
+
+  async stop(): Promise<void> {
+    this.#stopped = true;
+    if (this.#restart) clearTimeout(this.#restart);
+    for (const waiting of this.#queue.splice(0)) this.#giveUp(waiting, 'stopping');
+    await this.#worker?.terminate();
+    if (this.#current) this.#giveUp(this.#current, 'stopping');
+    this.#current = null;
+  }
+
+  #start(): void {
+    const worker = new Worker(new URL('./measuring-worker.js', import.meta.url), { workerData: this.#setup });
+    this.#worker = worker;
+    worker.on('message', (outcome: MeasureOutcome) => this.#settle(outcome));
+    worker.on('error', (error) => this.#lost(worker, error.message));
+    worker.on('exit', (code) => this.#lost(worker, `the measuring worker ended with ${code}`));
+    for (const [link, memory] of this.#rings) this.#post({ kind: 'ring', link, memory });
+    this.#next();
+  }
+
+  #lost(worker: Worker, reason: string): void {
+    if (this.#stopped || this.#worker !== worker) return;
+    this.#worker = null;
+    this.workerRestarts++;
+    const current = this.#current;
+    this.#current = null;
+    this.#giveUp(current, 'the measuring worker died');
+    this.#host.workerLost(reason);
+    this.#restart = setTimeout(() => this.#start(), RESTART_AFTER_MS);
+  }
+
+  #next(): void {
+    if (this.#current || !this.#worker) return;
+    const waiting = this.#queue.shift();
+    if (!waiting) return;
+    const id = this.#nextId++;
+    this.#current = { ...waiting, id };
+    this.#post({ kind: 'measure', job: { ...waiting.job, id } });
+  }
+
+  #settle(outcome: MeasureOutcome): void {
+    const current = this.#current;
+    if (!current || current.id !== outcome.id) return;
+    this.#current = null;
+    if ('missed' in outcome) this.#giveUp(current, outcome.missed);
+    else current.resolve(outcome);
+    this.#next();
+  }
+
+  #giveUp(waiting: Waiting | null | undefined, missed: string): void {
+    if (!waiting) return;
+    this.missed[missed] = (this.missed[missed] ?? 0) + 1;
+    waiting.resolve({ id: 0, missed });
+  }
+
+  #post(message: ToWorker): void {
+    this.#worker?.postMessage(message);
+  }
+}
