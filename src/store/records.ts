@@ -130,7 +130,7 @@ const statements = {
   trend: `SELECT max(wall_ms) AS wallMs, max(made_s) AS runS, avg(value) AS mean, min(value) AS min,
       max(value) AS max, count(*) AS count
     FROM trend WHERE point = :point AND watch = :watch AND wall_ms BETWEEN :from AND :to
-    GROUP BY (wall_ms - :from) * :spans / :width ORDER BY wallMs`,
+    GROUP BY CAST((wall_ms - :from) * :spans / :width AS INTEGER) ORDER BY wallMs`,
   putBudget: `INSERT INTO budget VALUES (?, ?, ?, ?)
     ON CONFLICT (day, class) DO UPDATE SET sent = excluded.sent, received = excluded.received`,
   pruneBudget: 'DELETE FROM budget WHERE day < ?',

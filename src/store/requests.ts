@@ -10,7 +10,7 @@ export interface StoreSettings {
   limits: StoreLimits;
 }
 
-export type Operation = Exclude<keyof StoreEngine, never>;
+export type Operation = keyof StoreEngine;
 
 export interface Request {
   id: number;

@@ -137,6 +137,12 @@ export class WorkerStore implements Store {
     await ended;
   }
 
+  /** Ends the thread at once, when closing takes too long. What was acknowledged is on the disk. */
+  async terminate(): Promise<void> {
+    this.#closing = true;
+    await this.#worker?.terminate();
+  }
+
   #ask(op: Operation, args: readonly unknown[]): Promise<unknown> {
     const worker = this.#worker;
     if (worker === null) return Promise.reject(new ForebayError('store.stopped', 'the store is not open'));
