@@ -3,14 +3,15 @@
  * blocks, which bands its figures cover, and where the settings ask for more than the rate or the sensor carries.
  */
 
-import type { Machine, Point, WindowName } from '../config/station.ts';
+import type { Machine, Point } from '../config/station.ts';
 import { type BearingMultiples, type BearingRates, bearingMultiples } from '../machine/bearing.ts';
 import { synchronousHz } from '../machine/electrical.ts';
 import { chooseFactor, planDecimation } from '../signal/decimate.ts';
+import type { WindowName } from '../signal/window.ts';
 import { ENVELOPE_EDGE_S, type EnvelopePlan, planEnvelope } from './plan-envelope.ts';
 import { hz, noteFrequencies, PlanNotes, RATE_OVER_FMAX, range } from './plan-notes.ts';
 
-/** Stop band of the anti-alias filter. The Kaiser estimate lands about 1 dB short: 82 is asked where 80 must hold. */
+/** Stop band of the anti-alias filter: 80 dB must hold, with something to spare. */
 export const ATTENUATION_DB = 82;
 /** Below 600 r/min the overall band starts at 2 Hz (ISO 10816-3 Annex A). */
 const SLOW_HZ = 10;
@@ -40,6 +41,8 @@ export interface SpectrumPlan {
   readonly window: WindowName;
   /** Raw samples at each end that only feed the filter. */
   readonly marginSamples: number;
+  /** Raw samples that all averages need, margins included. */
+  readonly rawSamples: number;
 }
 
 export interface PlannedBearing {
@@ -120,7 +123,7 @@ export function planPoint(point: Point, machine: Machine, rateHz: number, mainsH
   const stepSamples = Math.max(1, Math.round(point.measure.everyS * rateHz));
   const envelopeS =
     envelope === null ? 0 : overlappedBlocks(envelope.blockS, envelope.averages) + 2 * ENVELOPE_EDGE_S;
-  const recordSamples = Math.max(stepSamples, rawSamplesFor(spectrum), Math.ceil(envelopeS * rateHz));
+  const recordSamples = Math.max(stepSamples, spectrum.rawSamples, Math.ceil(envelopeS * rateHz));
   if (recordSamples > MAX_RECORD_SAMPLES) {
     throw new PlanError(
       point.key,
@@ -178,6 +181,7 @@ function planSpectrum(point: Point, rateHz: number, notes: PlanNotes): SpectrumP
   const factor = chooseFactor(rateHz, fmaxHz);
   const lineHz = asked.fmaxHz / asked.lines;
   const decimatedHz = rateHz / factor;
+  const blockSamples = Math.round(decimatedHz / lineHz);
   const decimation = planDecimation({ rateHz, factor, fmaxHz, attenuationDb: ATTENUATION_DB });
   return {
     factor,
@@ -185,10 +189,11 @@ function planSpectrum(point: Point, rateHz: number, notes: PlanNotes): SpectrumP
     fmaxHz,
     lines: Math.floor(fmaxHz / lineHz),
     lineHz,
-    blockSamples: Math.round(decimatedHz / lineHz),
+    blockSamples,
     averages: asked.averages,
     window: asked.window,
     marginSamples: decimation.marginSamples,
+    rawSamples: decimation.inputLength(blockSamples + (asked.averages - 1) * Math.ceil(blockSamples / 2)),
   };
 }
 
@@ -216,10 +221,4 @@ function ratesAt(multiples: BearingMultiples | null, shaftHz: number | null): Be
 /** How many blocks' worth of time half-overlapped averages take. */
 function overlappedBlocks(blockLength: number, averages: number): number {
   return blockLength * (1 + (averages - 1) / 2);
-}
-
-/** Raw samples that give the averages, with what the filter takes at both ends. */
-function rawSamplesFor(spectrum: SpectrumPlan): number {
-  const decimated = Math.ceil(overlappedBlocks(spectrum.blockSamples, spectrum.averages)) + spectrum.averages;
-  return decimated * spectrum.factor + 2 * spectrum.marginSamples;
 }
