@@ -105,6 +105,7 @@ function resolveMachine(file: StationFile, machine: MachineInFile, links: readon
     shaft: resolveShaft(machine.shaft),
     running: resolveRunning(machine.running),
     startDelayS: machine.start_delay_s,
+    ...(machine.usual_run_s === undefined ? {} : { usualRunS: machine.usual_run_s }),
     motor: { poles: machine.motor?.poles ?? null, supply: machine.motor?.supply ?? null },
     vanes: machine.vanes ?? null,
     bearings,

@@ -365,6 +365,7 @@ const machine = z.strictObject({
   shaft: shaft.optional(),
   running,
   start_delay_s: num(0, 86_400, 'After a start, before readings count, s').default(20),
+  usual_run_s: num(1, 31_536_000, 'How long it usually runs at a time, s; `check` compares').optional(),
   motor: z
     .strictObject({
       poles: int(2, 96, 'Poles of the motor, even').optional(),

@@ -183,6 +183,8 @@ export interface Machine {
   readonly shaft: ShaftSource | null;
   readonly running: RunningSource;
   readonly startDelayS: number;
+  /** How long it usually runs at a time; only for advice on the settings. */
+  readonly usualRunS?: number;
   readonly motor: { readonly poles: number | null; readonly supply: 'mains' | 'inverter' | null };
   readonly vanes: number | null;
   readonly bearings: readonly Bearing[];

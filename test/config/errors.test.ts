@@ -3,7 +3,7 @@ import { describe, expect, it } from 'vitest';
 import { errorCatalogue, ForebayError } from '../../src/config/errors.ts';
 
 const page = readFileSync(new URL('../../config/ERRORS.md', import.meta.url), 'utf8');
-const documented = [...page.matchAll(/^\| `([a-z-]+\.[a-z-]+)` \|/gm)].map((match) => match[1]);
+const documented = [...page.matchAll(/^\| `([a-z-]+\.[a-z-]+)` +\|/gm)].map((match) => match[1]);
 
 describe('the catalogue of errors', () => {
   it('has each code of the page, and the page each code, once', () => {
