@@ -26,7 +26,7 @@ export interface NodeCounts {
 
 const describeEveryS = 2;
 const healthEveryS = 30;
-/** Behind by more (the process slept), a node does not send what its converter could not have kept. */
+/** In real time: behind by more, the process slept. */
 const mostBehindS = 0.5;
 const tickMs = 5;
 
@@ -80,7 +80,7 @@ export class SimulatedNode {
   start(): void {
     if (this.#timer !== null) return;
     const began = performance.now() - (this.#sent * 1000) / this.#source.rateHz;
-    this.#timer = setInterval(() => this.advanceTo((performance.now() - began) / 1000), tickMs);
+    this.#timer = setInterval(() => this.advanceTo((performance.now() - began) / 1000, mostBehindS), tickMs);
   }
 
   stop(): void {
@@ -88,11 +88,14 @@ export class SimulatedNode {
     this.#timer = null;
   }
 
-  /** Sends every whole frame that is due by `elapsedS` after the start. */
-  advanceTo(elapsedS: number): void {
+  /**
+   * Sends every whole frame that is due by `elapsedS` after the start. A node that is further behind than
+   * `mostBehindSeconds` does not send what its converter could not have kept: its index jumps to what is due.
+   */
+  advanceTo(elapsedS: number, mostBehindSeconds = Number.POSITIVE_INFINITY): void {
     const due = Math.floor(elapsedS * this.#source.rateHz);
     const behind = due - this.#sent;
-    if (behind > this.#samplesIn(mostBehindS)) this.#skip(behind - (behind % this.#frameSamples));
+    if (behind > mostBehindSeconds * this.#source.rateHz) this.#skip(behind - (behind % this.#frameSamples));
     while (this.#sent + this.#frameSamples <= due) this.#sendPortion();
   }
 
