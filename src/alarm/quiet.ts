@@ -1,0 +1,111 @@
+/**
+ * The quiet that keeps alarms believed. Of a machine at most 6 messages are sent in any minute, its state topic among
+ * them, and of a station at most 10 newly unacknowledged alarms in any 10 minutes. What does not fit waits, the worst
+ * first, and is told as it then stands; nothing waits twice, so what waits is bounded by the number of topics. The
+ * journal has every change all the same.
+ *
+ * Ages advance with ticks. What was sent since the last tick is taken to be as young as that tick can make it.
+ */
+
+import { machineFacts, machinePayload } from './machine-state.ts';
+import { alarmPayload } from './payload.ts';
+import type { AlarmDefinition } from './plan.ts';
+import { type AlarmRow, type QuietRow, signature } from './state.ts';
+import type { StepWork } from './work.ts';
+
+const MACHINE_WINDOW_S = 60;
+const MACHINE_MESSAGES = 6;
+/** One of them is kept for the state topic, so that the lamp follows in a flood. */
+const MACHINE_ALARMS = MACHINE_MESSAGES - 1;
+/** More than 10 in 10 minutes is a flood to one operator (ISA-18.2 and IEC 62682, as reproduced). */
+const STATION_WINDOW_S = 600;
+const STATION_ANNOUNCED = 10;
+const STATE_AT_LEAST_S = 3600;
+const FRESH = -1;
+
+export function tickQuiet(work: StepWork, elapsedS: number): void {
+  const older = (ageS: number) => (ageS === FRESH ? 0 : ageS + elapsedS);
+  const sent = Object.entries(work.quiet.sent)
+    .map(([machine, messages]) => {
+      const aged = messages.map(({ ageS, alarm }) => ({ ageS: older(ageS), alarm }));
+      return [machine, aged.filter(({ ageS }) => ageS <= MACHINE_WINDOW_S)] as const;
+    })
+    .filter(([, messages]) => messages.length > 0);
+  const announced = work.quiet.announced.map(older).filter((ageS) => ageS <= STATION_WINDOW_S);
+  const idle = sent.length === 0 && announced.length === 0;
+  if (idle && Object.keys(work.quiet.sent).length === 0 && work.quiet.announced.length === 0) return;
+  work.quiet = { sent: Object.fromEntries(sent), announced };
+}
+
+/** Publishes what waits, as far as the quiet allows. */
+export function tell(work: StepWork): void {
+  const kept: string[] = [];
+  const waiting = work.waiting
+    .map((key) => ({ key, alarm: work.plan.alarms.get(key)!, row: work.alarm(key) }))
+    .sort((a, b) => rank(a.row) - rank(b.row));
+  for (const { key, alarm, row } of waiting) {
+    if (signature(row) === row.told) continue;
+    if (!publishAlarm(work, alarm, row)) kept.push(key);
+  }
+  const same = kept.length === work.waiting.length && kept.every((key, i) => key === work.waiting[i]);
+  if (!same) work.waiting = work.waiting.filter((key) => kept.includes(key));
+  for (const id of work.touched) publishState(work, id);
+}
+
+/** Dangers before alerts, what asks for acknowledgement before what tells of it, suppressions last. */
+function rank({ life, test }: AlarmRow): number {
+  if (test !== null) return 0;
+  if (life.state === 'suppressed-by-design') return 4;
+  if (life.state !== 'unacknowledged') return 3;
+  return life.level === 'danger' ? 1 : 2;
+}
+
+function publishAlarm(work: StepWork, alarm: AlarmDefinition, row: AlarmRow): boolean {
+  const where = alarm.kind === 'agent' ? 'agent' : alarm.machine.id;
+  const sent = work.quiet.sent[where] ?? [];
+  const raised = row.test?.id ?? row.raised;
+  const asks = row.test !== null || row.life.state === 'unacknowledged';
+  const announces = asks && !row.told.includes(` ${raised} `) && !row.told.endsWith(` ${raised}`);
+  if (sent.length >= MACHINE_MESSAGES || sent.filter((message) => message.alarm).length >= MACHINE_ALARMS)
+    return false;
+  if (announces && work.quiet.announced.length >= STATION_ANNOUNCED) return false;
+  const id = work.changeIds.get(alarm.key) ?? work.allocateId();
+  work.effects.push({
+    kind: 'publish',
+    class: 'alarm',
+    topic: alarm.topic,
+    payload: alarmPayload(row, id, work.t),
+  });
+  work.setAlarm(alarm.key, { ...row, told: signature(row) }, true);
+  work.quiet = {
+    sent: { ...work.quiet.sent, [where]: [...sent, { ageS: FRESH, alarm: true }] },
+    announced: announces ? [...work.quiet.announced, FRESH] : work.quiet.announced,
+  };
+  return true;
+}
+
+function publishState(work: StepWork, machineId: string): void {
+  const { machine } = work.plan.machines.get(machineId)!;
+  const row = work.machine(machineId);
+  const facts = machineFacts(work, machine);
+  const told = JSON.stringify(facts);
+  // Before the first reading there is nothing to say, least of all that it is well.
+  if (row.told === '' && facts.running === null && facts.severity === 0) return;
+  if (told === row.told && row.sinceToldS < STATE_AT_LEAST_S) return;
+  const sent = work.quiet.sent[machineId] ?? [];
+  if (sent.length >= MACHINE_MESSAGES) return;
+  const payload = machinePayload(facts, row, work.allocateId(), work.t);
+  work.effects.push({ kind: 'publish', class: 'state', topic: `${machineId}/state`, payload });
+  work.setMachine(machineId, { ...row, told, sinceToldS: 0 }, true);
+  const quiet: QuietRow = work.quiet;
+  work.quiet = { ...quiet, sent: { ...quiet.sent, [machineId]: [...sent, { ageS: FRESH, alarm: false }] } };
+}
+
+/** Every machine's state is looked at again, since one may have waited and the hour may be over. */
+export function tickStates(work: StepWork, elapsedS: number): void {
+  for (const id of work.plan.machines.keys()) {
+    const row = work.machine(id);
+    work.setMachine(id, { ...row, sinceToldS: row.sinceToldS + elapsedS }, false);
+    work.touched.add(id);
+  }
+}
