@@ -13,7 +13,7 @@ export interface RecordTransform {
   readonly samples: number;
   /** Length of each transform, a power of two. */
   readonly size: number;
-  /** Samples at both ends of a piece that the transform's wrap-around spoils. */
+  /** Samples at both ends of a piece that are dropped: the first half of them is faded, the rest is for the band's ringing. */
   readonly cutSamples: number;
   readonly pieces: readonly Piece[];
 }
@@ -87,10 +87,17 @@ export function recordTransform(x: Float64Array, options: TransformOptions): Rec
   const step = Math.floor((size - 2 * cutSamples) / grid) * grid;
   const block = new Float64Array(size);
   const pieces: Piece[] = [];
+  const fade = Math.floor(cutSamples / 2);
   for (let from = 0; ; from += step) {
     const length = Math.min(size, x.length - from);
     for (let i = 0; i < length; i++) block[i] = x[from + i]! - mean;
     block.fill(0, length);
+    // Ends that are dropped anyway are faded, so that a sharp band edge has no step to ring on.
+    for (let i = 0; i < fade; i++) {
+      const gain = 0.5 - 0.5 * Math.cos((Math.PI * (i + 0.5)) / fade);
+      block[i] = block[i]! * gain;
+      block[length - 1 - i] = block[length - 1 - i]! * gain;
+    }
     pieces.push({ from, length, bins: realFft(block).slice() });
     if (from + length >= x.length) break;
   }

@@ -13,7 +13,7 @@ export interface LowpassOptions {
   readonly passHz: number;
   /** Begin of the stop band, Hz, above `passHz` and at most half the rate. */
   readonly stopHz: number;
-  /** Least attenuation in the stop band, dB, 21 to 140; the pass band ripples by as little. */
+  /** Least attenuation in the stop band, dB, 21 to 140; the pass band ripples by about as little. */
   readonly attenuationDb: number;
 }
 
@@ -107,7 +107,7 @@ export function windowedLowpass(n: number, cutoffHz: number, rateHz: number, bet
  * @throws SignalRangeError where the band edges contradict each other, the attenuation lies outside 21 to 140 dB, or
  *   more than 16 383 taps would be needed.
  * @see Oppenheim and Schafer, Discrete-Time Signal Processing, Kaiser window design.
- * @example Rate 25 600, pass 2500, stop 3900 Hz, 80 dB: 95 taps, where the plain estimate gives 93 and 78.8 dB.
+ * @example Rate 25 600, pass 2500, stop 3900 Hz, 80 dB: 97 taps, where the plain estimate gives 93 and 78.8 dB.
  */
 export function designLowpass(options: LowpassOptions): Float64Array {
   const { rateHz, passHz, stopHz, attenuationDb } = options;
