@@ -6,11 +6,13 @@
 import type { Machine, Point } from '../config/station.ts';
 import { type BearingMultiples, type BearingRates, bearingMultiples } from '../machine/bearing.ts';
 import { synchronousHz } from '../machine/electrical.ts';
-import { chooseFactor, planDecimation } from '../signal/decimate.ts';
+import { chooseFactor, type DecimationPlan, planDecimation } from '../signal/decimate.ts';
 import type { WindowName } from '../signal/window.ts';
 import { ENVELOPE_EDGE_S, type EnvelopePlan, planEnvelope } from './plan-envelope.ts';
 import { hz, noteFrequencies, PlanNotes, RATE_OVER_FMAX, range } from './plan-notes.ts';
 
+/** The filter keeps this much more than Fmax clean: a node's clock may be several percent slow. */
+const CLOCK_SLACK = 1.05;
 /** Stop band of the anti-alias filter: 80 dB must hold, with something to spare. */
 export const ATTENUATION_DB = 82;
 /** Below 600 r/min the overall band starts at 2 Hz (ISO 10816-3 Annex A). */
@@ -82,6 +84,11 @@ export interface PointPlan {
   readonly caveats: readonly string[];
 }
 
+/** Speed to reckon with where none is measured: the nominal one, or the slowest; null: the settings tell none. */
+export function expectedShaftHz({ shaft }: Pick<PointPlan, 'shaft'>): number | null {
+  return shaft?.nominalHz ?? shaft?.lowHz ?? null;
+}
+
 /** Edges of the overall velocity: from 10 Hz, or from 2 Hz for a shaft below 600 r/min, to 1000 Hz or Fmax. */
 export function overallBandHz(shaftHz: number | null, fmaxHz: number): [number, number] {
   const low = shaftHz !== null && shaftHz < SLOW_HZ ? OVERALL_HZ.slow : OVERALL_HZ.usual;
@@ -103,7 +110,7 @@ export function planPoint(point: Point, machine: Machine, rateHz: number, mainsH
 
   const shaft = plannedShaft(machine, point.ratio);
   const spectrum = planSpectrum(point, rateHz, notes);
-  const overallHz = overallBandHz(shaft?.nominalHz ?? shaft?.lowHz ?? null, spectrum.fmaxHz);
+  const overallHz = overallBandHz(expectedShaftHz({ shaft }), spectrum.fmaxHz);
   if (overallHz[1] < OVERALL_HZ.high) {
     notes.warn(`overall velocity ends at Fmax, ${hz(overallHz[1])}, instead of 1000 Hz`);
   }
@@ -182,7 +189,7 @@ function planSpectrum(point: Point, rateHz: number, notes: PlanNotes): SpectrumP
   const lineHz = asked.fmaxHz / asked.lines;
   const decimatedHz = rateHz / factor;
   const blockSamples = Math.round(decimatedHz / lineHz);
-  const decimation = planDecimation({ rateHz, factor, fmaxHz, attenuationDb: ATTENUATION_DB });
+  const decimation = decimationOf(rateHz, factor, fmaxHz);
   return {
     factor,
     rateHz: decimatedHz,
@@ -210,6 +217,16 @@ function accelerationBandHz(point: Point, rateHz: number): [number, number] {
   const usable = point.sensor.usableHz;
   const carriedHz = rateHz / RATE_OVER_FMAX;
   return [usable?.[0] ?? OVERALL_HZ.slow, Math.min(usable?.[1] ?? carriedHz, carriedHz)];
+}
+
+/** The filter of a spectrum plan; made again where the record is measured, as it does not travel between threads. */
+export function decimationOf(rateHz: number, factor: number, fmaxHz: number): DecimationPlan {
+  return planDecimation({
+    rateHz,
+    factor,
+    fmaxHz: Math.min(fmaxHz * CLOCK_SLACK, rateHz / factor / 2.1),
+    attenuationDb: ATTENUATION_DB,
+  });
 }
 
 function ratesAt(multiples: BearingMultiples | null, shaftHz: number | null): BearingRates | null {

@@ -63,7 +63,8 @@ export interface Reading {
   rate: RateUsed;
   /** null: unknown. */
   running: boolean | null;
-  shaft: { hz: number | null; source: ShaftSpeedSource | null };
+  /** Of the shaft at the point; `confidence` 0 to 1 where it was found in the spectrum. */
+  shaft: { hz: number | null; source: ShaftSpeedSource | null; confidence?: number };
   /** `unit`, `overall` and one key a configured band. */
   velocity: { unit: 'mm/s'; overall: number | null } & Record<string, number | null | string>;
   displacement: { unit: 'µm'; rms: number | null; p2p: number | null };

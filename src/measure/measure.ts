@@ -1,0 +1,168 @@
+/** From a record of samples to a reading. */
+
+import { severityApplies, severityLimits, severityZone, type Zone } from '../machine/severity.ts';
+import { statistics } from '../signal/statistics.ts';
+import { type DecimatedRecord, decimateRecord } from './decimated.ts';
+import { measureEnvelope } from './envelope.ts';
+import { NO_ORDERS, orderFigures } from './orders.ts';
+import { expectedShaftHz, overallBandHz, type PointPlan } from './plan.ts';
+import type { Reading } from './reading.ts';
+import type { SampleRecord } from './record.ts';
+import { foundShaft, givenShaft, type ShaftFigures } from './shaft.ts';
+import { gPerCount, invalidities } from './validity.ts';
+import { displacementPeakToPeak, displacementRms, type Figure, velocityRms } from './velocity.ts';
+
+/** A rate less sure than this moves lines by more than the slip of a bearing lets pass. */
+const RATE_UNCERTAIN_PPM = 5000;
+
+/**
+ * Measures one record. Pure: the same record and plan give the same reading.
+ *
+ * Sizes follow the plan, frequencies the record's own measured rate. What cannot be measured is null with the reason
+ * in `why`: every figure, and quality `bad`, where the samples cannot be trusted (gap, over-range, flat line, distrust);
+ * single figures, and quality `uncertain`, where something else is missing.
+ */
+export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
+  const invalid = invalidities(record, plan.point.sensor.rangeG);
+  if (invalid.length > 0) return badReading(plan, record, invalid);
+
+  const rateHz = record.rate.hz;
+  const acceleration = accelerationG(record);
+  const decimated = decimateRecord(plan, acceleration, rateHz);
+  if (decimated === null) {
+    return badReading(plan, record, [`record too short: ${acceleration.length} samples give no spectrum`]);
+  }
+  const why: string[] = [...plan.caveats];
+  if (record.rate.ppm !== null && record.rate.ppm > RATE_UNCERTAIN_PPM) {
+    why.push(`rate uncertain: ${rateHz.toFixed(1)} Hz within ${(record.rate.ppm / 10_000).toFixed(1)} %`);
+  }
+  if (decimated.short !== null) why.push(decimated.short);
+  const take = (figure: Figure): number | null => {
+    if (figure.why !== null) why.push(figure.why);
+    return figure.value;
+  };
+
+  const given = givenShaft(plan, record);
+  const running = isRunning(plan, record, given, decimated);
+  // A machine at rest has no speed to be found, and none to be missed.
+  const shaft = given ?? (running === false ? NO_SHAFT : foundShaft(plan, decimated, acceleration, rateHz));
+  if (running !== false) why.push(...shaft.why);
+
+  const bandHz = overallBandHz(shaft.hz ?? expectedShaftHz(plan), decimated.fmaxHz);
+  const overall = take(velocityRms(decimated, bandHz, 'overall velocity'));
+  const displacement = overall === null ? null : displacementRms(decimated, bandHz).value;
+  const bands: Record<string, number | null> = {};
+  for (const { id, range } of plan.point.measure.bands) {
+    const unitHz = 'hz' in range ? 1 : shaft.hz;
+    const edges = 'hz' in range ? range.hz : range.orders;
+    bands[id] =
+      unitHz === null
+        ? null
+        : take(velocityRms(decimated, [edges[0] * unitHz, edges[1] * unitHz], `band ${id}`));
+  }
+  const { rms, peak, crest, kurtosis } = statistics(acceleration);
+  const envelope = measureEnvelope(plan, acceleration, rateHz, shaft.hz);
+  why.push(...envelope.why);
+  const phase = shaft.source === 'tachometer' && hasPhase(plan, record) ? shaft.tachometer : null;
+  return {
+    quality: why.length === 0 ? 'good' : 'uncertain',
+    why,
+    first_index: record.firstIndex,
+    rate: record.rate,
+    running,
+    shaft: {
+      hz: shaft.hz,
+      source: shaft.source,
+      ...(shaft.confidence === null ? {} : { confidence: shaft.confidence }),
+    },
+    velocity: { unit: 'mm/s', overall, ...bands },
+    displacement: {
+      unit: 'µm',
+      rms: displacement,
+      p2p: overall === null ? null : take(displacementPeakToPeak(decimated, bandHz)),
+    },
+    orders: shaft.hz === null ? NO_ORDERS : orderFigures(decimated, shaft.hz, phase),
+    acceleration: { unit: 'g', band_hz: [...plan.accelerationHz], rms, peak, crest, kurtosis },
+    envelope: envelope.reading,
+    zone: zoneFor(plan, running, shaft.hz, overall, displacement),
+  };
+}
+
+const NO_SHAFT: ShaftFigures = { hz: null, source: null, confidence: null, tachometer: null, why: [] };
+
+/** Acceleration in g, its mean removed. */
+function accelerationG(record: SampleRecord): Float64Array {
+  const { counts } = record;
+  let sum = 0;
+  for (const count of counts) sum += count;
+  const mean = sum / counts.length;
+  const scale = gPerCount(record);
+  const acceleration = new Float64Array(counts.length);
+  for (let i = 0; i < counts.length; i++) acceleration[i] = (counts[i]! - mean) * scale;
+  return acceleration;
+}
+
+function isRunning(
+  plan: PointPlan,
+  record: SampleRecord,
+  given: ShaftFigures | null,
+  decimated: DecimatedRecord,
+): boolean | null {
+  const rule = plan.machine.running;
+  switch (rule.kind) {
+    case 'velocity': {
+      const bandHz = overallBandHz(given?.hz ?? expectedShaftHz(plan), decimated.fmaxHz);
+      const overall = velocityRms(decimated, bandHz, 'overall velocity').value;
+      return overall === null ? null : overall > rule.aboveMmS;
+    }
+    case 'tachometer':
+      if (record.toldRunning !== null) return record.toldRunning;
+      if (record.tachometer !== null) return given?.tachometer != null;
+      return record.toldShaftHz === null ? null : record.toldShaftHz > 0;
+    case 'mqtt':
+      return record.toldRunning;
+  }
+}
+
+/** Phase needs one pulse a turn, and of the very shaft that the point is on. */
+function hasPhase(plan: PointPlan, record: SampleRecord): boolean {
+  return record.tachometer?.pulsesPerRev === 1 && plan.point.ratio === 1;
+}
+
+function zoneFor(
+  plan: PointPlan,
+  running: boolean | null,
+  shaftHz: number | null,
+  velocityMmS: number | null,
+  displacementUm: number | null,
+): Zone | null {
+  const { severity } = plan.point;
+  if (severity === null || running !== true || velocityMmS === null || displacementUm === null) return null;
+  if (severityApplies(plan.point, shaftHz ?? plan.shaft?.nominalHz ?? null) !== null) return null;
+  return severityZone(velocityMmS, displacementUm, severityLimits(severity));
+}
+
+function badReading(plan: PointPlan, record: SampleRecord, why: string[]): Reading {
+  const bands = Object.fromEntries(plan.point.measure.bands.map(({ id }) => [id, null]));
+  return {
+    quality: 'bad',
+    why,
+    first_index: record.firstIndex,
+    rate: record.rate,
+    running: plan.machine.running.kind === 'mqtt' ? record.toldRunning : null,
+    shaft: { hz: null, source: null },
+    velocity: { unit: 'mm/s', overall: null, ...bands },
+    displacement: { unit: 'µm', rms: null, p2p: null },
+    orders: NO_ORDERS,
+    acceleration: {
+      unit: 'g',
+      band_hz: [...plan.accelerationHz],
+      rms: null,
+      peak: null,
+      crest: null,
+      kurtosis: null,
+    },
+    envelope: null,
+    zone: null,
+  };
+}

@@ -1,0 +1,107 @@
+/** Shaft speed from the record itself: lines of the acceleration, and where they do not settle it, of its envelope. */
+
+import { synchronousHz } from '../machine/electrical.ts';
+import {
+  findShaftSpeed,
+  type SpeedFinding,
+  type SpeedLines,
+  type SpeedRange,
+} from '../machine/shaft-speed.ts';
+import { chooseFactor, decimate, planDecimation } from '../signal/decimate.ts';
+import { squaredEnvelope } from '../signal/envelope.ts';
+import { averagedSpectrum } from '../signal/spectrum.ts';
+import type { DecimatedRecord } from './decimated.ts';
+import { linesOverFloor } from './lines.ts';
+import { ATTENUATION_DB, type PointPlan } from './plan.ts';
+import { RATE_OVER_FMAX } from './plan-notes.ts';
+
+/** Above this the acceleration alone settles it. */
+const SETTLED = 0.5;
+const LEAST_LINE_DB = 8;
+/** Below this, drift of bias and leakage; no shaft that the tables know turns slower (120 r/min). */
+const LEAST_HZ = 1.5;
+/** An envelope shorter than this has no lines worth looking at. */
+const LEAST_ENVELOPE_S = 0.5;
+
+/** Finds the speed within what the settings of the plan allow. */
+export function searchShaft(
+  plan: PointPlan,
+  decimated: DecimatedRecord,
+  acceleration: Float64Array,
+  rateHz: number,
+): SpeedFinding {
+  const range = rangeOf(plan);
+  const fromAcceleration = speedLines(decimated.samples, decimated.rateHz, decimated.fmaxHz, plan);
+  const first = findShaftSpeed([fromAcceleration], range);
+  const bandHz = envelopeBandHz(plan, acceleration.length, rateHz);
+  if ((first.hz !== null && first.confidence > SETTLED) || bandHz === null) return first;
+  const fromEnvelope = envelopeLines(plan, acceleration, rateHz, bandHz, decimated.fmaxHz);
+  return findShaftSpeed([fromAcceleration, fromEnvelope], range);
+}
+
+/** How far the speed in the halves of a record lies apart; null where it is not sure in both. */
+export function speedDrift(
+  plan: PointPlan,
+  decimated: DecimatedRecord,
+): { share: number; text: string } | null {
+  const range = rangeOf(plan);
+  const middle = decimated.samples.length >> 1;
+  const [from, to] = [decimated.samples.subarray(0, middle), decimated.samples.subarray(middle)].map((half) =>
+    findShaftSpeed([speedLines(half, decimated.rateHz, decimated.fmaxHz, plan)], range),
+  );
+  if (from?.hz == null || to?.hz == null || Math.min(from.confidence, to.confidence) < SETTLED) return null;
+  return {
+    share: Math.abs(from.hz - to.hz) / from.hz,
+    text: `speed varies within the record: ${from.hz.toFixed(2)} then ${to.hz.toFixed(2)} Hz`,
+  };
+}
+
+function rangeOf(plan: PointPlan): SpeedRange {
+  const { poles, supply } = plan.machine.motor;
+  const shaft = plan.shaft;
+  if (shaft === null) throw new RangeError(`${plan.key}: no range of speed to look in`);
+  return {
+    lowHz: shaft.lowHz,
+    highHz: shaft.highHz,
+    synchronousHz:
+      supply === 'mains' && poles !== null ? synchronousHz(plan.mainsHz, poles) * plan.point.ratio : null,
+    mainsHz: plan.mainsHz,
+  };
+}
+
+/** The band of the plan, as far as a record at this rate and of this length carries it. */
+function envelopeBandHz(plan: PointPlan, samples: number, rateHz: number): [number, number] | null {
+  if (plan.envelope === null || samples < LEAST_ENVELOPE_S * rateHz) return null;
+  const [low, high] = plan.envelope.bandHz;
+  return [low, Math.min(high, rateHz / RATE_OVER_FMAX)];
+}
+
+function envelopeLines(
+  plan: PointPlan,
+  acceleration: Float64Array,
+  rateHz: number,
+  bandHz: readonly [number, number],
+  fmaxHz: number,
+): SpeedLines {
+  const topHz = Math.min(fmaxHz, bandHz[1] - bandHz[0]);
+  const envelope = squaredEnvelope(acceleration, { rateHz, bandHz, fmaxHz: topHz });
+  const factor = chooseFactor(envelope.rateHz, topHz);
+  const decimation = planDecimation({
+    rateHz: envelope.rateHz,
+    factor,
+    fmaxHz: topHz,
+    attenuationDb: ATTENUATION_DB,
+  });
+  return speedLines(decimate(decimation, envelope.values), envelope.rateHz / factor, topHz, plan);
+}
+
+function speedLines(samples: Float64Array, rateHz: number, fmaxHz: number, plan: PointPlan): SpeedLines {
+  // At least two averages, or a floor means little.
+  const blockSamples = Math.min(Math.round(rateHz / plan.spectrum.lineHz), Math.floor(samples.length / 1.5));
+  const spectrum = averagedSpectrum(samples, { rateHz, blockSamples, window: 'hann' });
+  return {
+    lines: linesOverFloor(spectrum, [LEAST_HZ, fmaxHz], LEAST_LINE_DB),
+    lineHz: spectrum.lineHz,
+    fmaxHz,
+  };
+}
