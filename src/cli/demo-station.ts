@@ -81,7 +81,8 @@ function machineSettings(machine: keyof typeof bearings, seconds: number): Machi
         part: 'outer',
         impactG: [
           [0.2 * seconds, 0],
-          [0.55 * seconds, 4],
+          [0.5 * seconds, 0.8],
+          [0.8 * seconds, 4],
         ],
       },
     ],
@@ -181,7 +182,8 @@ publish: {change_pct: 0, min_interval_s: 0, at_least_s: ${demoEveryS}}
 measure:
   every_s: ${demoEveryS}
   velocity: {fmax_hz: 1000, lines: 1600, averages: 4, window: hann}
+  envelope: {band_hz: [500, 10000]}
 links:
 ${links.join('')}machines:
-${machineText(soundMachine, 'Duty pump', 'node-1')}${machineText(worseningMachine, 'Standby pump', 'node-2')}`;
+${machineText(soundMachine, 'Duty pump', 'node-1')}${machineText(worseningMachine, 'Assist pump', 'node-2')}`;
 }

@@ -1,24 +1,15 @@
-import { writeSync } from 'node:fs';
 import type { Socket } from 'node:net';
+import type { Pty } from './pty.ts';
 
 /** Where a node's bytes go: takes what there is room for and says how many that was; the rest is lost. */
 export type Sink = (bytes: Uint8Array) => number;
 
-/**
- * A non-blocking descriptor of a pseudo-terminal or a serial device. No room means that the other side does not
- * read, and a UART has no way to wait for it. A hung-up line takes everything and delivers nothing, as a
- * transmitter cannot tell that its cable is out.
- */
-export function descriptorSink(descriptor: number): Sink {
+/** A pseudo-terminal. No room means that the other side does not read, and a UART has no way to wait for it. */
+export function ptySink(pty: Pty): Sink {
   return (bytes) => {
-    try {
-      return writeSync(descriptor, bytes);
-    } catch (error) {
-      const { code } = error as NodeJS.ErrnoException;
-      if (code === 'EAGAIN') return 0;
-      if (code === 'EIO') return bytes.length;
-      throw error;
-    }
+    const before = pty.droppedBytes;
+    pty.write(bytes);
+    return bytes.length - (pty.droppedBytes - before);
   };
 }
 

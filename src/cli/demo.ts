@@ -1,0 +1,164 @@
+/** `forebay demo`: simulated pumps on serial lines, the agent, its embedded broker and a client, in one terminal. */
+
+import { mkdtempSync, rmSync, writeFileSync } from 'node:fs';
+import { tmpdir } from 'node:os';
+import { join } from 'node:path';
+import { connect, type MqttClient } from 'mqtt';
+import { ForebayError } from '../config/errors.ts';
+import { SimulatedNode } from '../simulate/node.ts';
+import { DemoAgent } from './demo-agent.ts';
+import { DemoBoard } from './demo-board.ts';
+import { type DemoLines, freePort, openLines } from './demo-lines.ts';
+import { demoEveryS, demoNodes, demoSite, demoStationText } from './demo-station.ts';
+import { DemoView, summaryLines, type Traffic } from './demo-view.ts';
+
+export interface DemoOptions {
+  /** null: what shows all of it and still ends within a minute and a half. */
+  readonly seconds: number | null;
+  readonly out: Pick<NodeJS.WritableStream, 'write'> & { isTTY?: boolean; columns?: number };
+}
+
+const usualSeconds = 75;
+/** The first reading needs 8 s of samples, and three must agree before the bearing alarm. */
+const leastSeconds = 50;
+const mostSeconds = 3600;
+const refreshMs = { live: 1000, plain: 10_000 };
+
+/** @returns the exit status: 0 when what the demo promises was seen, else 1. */
+export async function demoCommand({ seconds, out }: DemoOptions): Promise<number> {
+  const lasts = seconds ?? usualSeconds;
+  if (!(lasts >= leastSeconds && lasts <= mostSeconds)) {
+    throw new ForebayError(
+      'command.usage',
+      `demo --seconds ${lasts}: ${leastSeconds} to ${mostSeconds} are possible; the pump needs time to fail`,
+    );
+  }
+  const interruption = listenForInterruption();
+  const directory = mkdtempSync(join(tmpdir(), 'forebay-demo-'));
+  try {
+    const lines = await openLines(demoNodes(lasts).length);
+    try {
+      return await show(lines, directory, lasts, new DemoView(out), interruption.happened);
+    } finally {
+      for (const line of lines.lines) line.close();
+    }
+  } finally {
+    rmSync(directory, { recursive: true, force: true });
+    interruption.done();
+  }
+}
+
+async function show(
+  { lines, said }: DemoLines,
+  directory: string,
+  lasts: number,
+  view: DemoView,
+  interrupted: Promise<'interrupted'>,
+): Promise<number> {
+  const port = await freePort();
+  const stationFile = join(directory, 'station.yaml');
+  const transports = lines.map(({ transport }) => transport);
+  writeFileSync(
+    stationFile,
+    demoStationText({ brokerPort: port, storageDirectory: join(directory, 'state'), transports }),
+  );
+  view.tell([
+    'Forebay demo: an invented station with two pumps, three sensors each. pump-1 is sound; the outer race of',
+    `pump-2's motor bearing begins to fail. It takes ${Math.round(lasts)} s and ends by itself.`,
+    `Nodes to agent: ${said}.`,
+    `Agent to broker: MQTT on 127.0.0.1:${port}; listen along: mosquitto_sub -p ${port} -v -t 'forebay/#'`,
+    `Quicker than the defaults: a reading every ${demoEveryS} s instead of 10, 1600 lines instead of 3200, all of them sent.`,
+  ]);
+
+  const nodes = demoNodes(lasts).map(({ settings, source }, k) => {
+    const line = lines[k];
+    if (line === undefined) throw new RangeError('demo: fewer lines than nodes');
+    return new SimulatedNode(settings, source(), line.sink);
+  });
+  const board = new DemoBoard(demoSite);
+  const agent = new DemoAgent(stationFile, join(directory, 'agent.log'));
+  const began = performance.now();
+  const elapsedS = () => (performance.now() - began) / 1000;
+  const traffic = (): Traffic => ({
+    seconds: elapsedS(),
+    ofSeconds: lasts,
+    rawBytes: nodes.reduce((sum, { counts }) => sum + counts.bytes, 0),
+  });
+  const client = listenTo(port, (topic, payload, packetBytes) => {
+    const told = board.accept(topic, payload, packetBytes, elapsedS());
+    if (told.length === 0) return;
+    view.tell(told.map((line) => `${elapsedS().toFixed(0).padStart(3)} s  ${line}`));
+    if (view.live) view.show(board, traffic());
+  });
+  const refresh = setInterval(
+    () => view.show(board, traffic()),
+    view.live ? refreshMs.live : refreshMs.plain,
+  );
+  let end: NodeJS.Timeout | undefined;
+  try {
+    for (const node of nodes) node.start();
+    const over = new Promise<'over'>((resolve) => {
+      end = setTimeout(() => resolve('over'), lasts * 1000);
+    });
+    const cause = await Promise.race([over, interrupted, agent.ended.then(() => 'agent ended' as const)]);
+    clearInterval(refresh);
+    view.show(board, traffic());
+    if (cause === 'interrupted') {
+      view.tell(['', 'Interrupted: nothing was judged.']);
+      return 1;
+    }
+    const lost = {
+      frames: nodes.reduce((sum, { counts }) => sum + counts.droppedFrames, 0),
+      samples: nodes.reduce((sum, { counts }) => sum + counts.lostSamples, 0),
+    };
+    view.tell(summaryLines(board, traffic(), lost));
+    const kept = cause === 'over' && board.missing().length === 0;
+    if (cause === 'agent ended') view.tell(['', 'The agent ended by itself.']);
+    if (!kept) view.tell(['Its last words:', ...agent.lastWords().map((line) => `  ${line}`)]);
+    return kept ? 0 : 1;
+  } finally {
+    clearTimeout(end);
+    clearInterval(refresh);
+    for (const node of nodes) node.stop();
+    client.end(true);
+    await agent.stop();
+  }
+}
+
+/** A client as any other: it sees what the broker gives, and counts whole packets. */
+function listenTo(
+  port: number,
+  onMessage: (topic: string, payload: string, packetBytes: number) => void,
+): MqttClient {
+  const client = connect(`mqtt://127.0.0.1:${port}`, {
+    protocolVersion: 4,
+    reconnectPeriod: 250,
+    connectTimeout: 2000,
+  });
+  // The broker comes up with the agent; until then each attempt is refused.
+  client.on('error', () => {});
+  client.on('connect', () => client.subscribe(`forebay/${demoSite}/#`, { qos: 1 }));
+  client.on('message', (topic, payload, packet) => {
+    const remaining = packet.length ?? payload.length + topic.length + 4;
+    const lengthBytes = remaining < 128 ? 1 : remaining < 16_384 ? 2 : 3;
+    onMessage(topic, payload.toString('utf8'), 1 + lengthBytes + remaining);
+  });
+  return client;
+}
+
+/** Ctrl-C and SIGTERM end the demo in order, so that nothing stays behind. */
+function listenForInterruption(): { happened: Promise<'interrupted'>; done(): void } {
+  let stop = () => {};
+  const happened = new Promise<'interrupted'>((resolve) => {
+    stop = () => resolve('interrupted');
+  });
+  process.on('SIGINT', stop);
+  process.on('SIGTERM', stop);
+  return {
+    happened,
+    done: () => {
+      process.off('SIGINT', stop);
+      process.off('SIGTERM', stop);
+    },
+  };
+}
