@@ -11,6 +11,8 @@ export interface Comb {
   readonly teeth: number;
   /** Sideband distances on either side of each tooth, per shaft revolution, not moved by the slip. */
   readonly sidebands: readonly number[];
+  /** Orders of lines that come with the comb but take no part in placing it. */
+  readonly companions?: readonly number[];
   /** The slip is sought within ± this fraction. */
   readonly slip: number;
 }
@@ -92,6 +94,7 @@ export function explain(set: LineSet, comb: Comb, shaftHz: number): Explanation 
         );
       }
     }
+    for (const order of comb.companions ?? []) strongestAt(order * shaftHz);
     let energy = 0;
     for (let i = 0; i < lines.length; i++) energy += weight[i]! * lines[i]!.depth ** 2;
     const merit = energy + 2 * teeth.slice(0, 3).reduce((sum, depth) => sum + depth ** 2, 0);

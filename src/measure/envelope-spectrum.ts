@@ -52,10 +52,10 @@ export function envelopeOfBand(
   return { bandHz: envelope.bandHz, values: decimate(plan, envelope.values), rateHz: plan.outRateHz, mean };
 }
 
-/** Averaged spectrum (Hann, half-overlapped) of a squared envelope with blocks of `blockS` seconds. */
+/** Averaged spectrum (Hann, half-overlapped) of a squared envelope: blocks of `blockS` seconds, at least two of them. */
 export function spectrumOfEnvelope(envelope: BandEnvelope, blockS: number, fmaxHz: number): EnvelopeSpectrum {
   const { rateHz, values } = envelope;
-  const blockSamples = Math.min(values.length, Math.round(blockS * rateHz));
+  const blockSamples = Math.min(Math.round(blockS * rateHz), Math.floor((values.length - 1) / 1.5));
   const spectrum = averagedSpectrum(values, { rateHz, blockSamples, window: 'hann' });
   const bins = Math.min(spectrum.meanSquare.length, Math.ceil(fmaxHz / spectrum.binHz) + 2);
   const amplitudes = lineAmplitudes(spectrum).subarray(0, bins);

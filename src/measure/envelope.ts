@@ -1,49 +1,37 @@
 /** The envelope part of a reading: levels at the bearing frequencies, and which bearing part they accuse. */
 
-import { type BearingVerdict, judgeBearing } from '../machine/defect-evidence.ts';
-import { type BandLines, knownSourceAt, withoutKnownSources } from '../machine/evidence-lines.ts';
+import { knownSourceAt } from '../machine/evidence-lines.ts';
 import { type RecordTransform, recordTransform } from '../signal/envelope.ts';
 import { kurtogram } from '../signal/kurtogram.ts';
 import { median } from '../signal/peaks.ts';
-import {
-  expectedHz,
-  type FoundLine,
-  findBearingLine,
-  type LineName,
-  lineNames,
-  lineTitles,
-} from './bearing-lines.ts';
-import { evidenceBands } from './envelope-bands.ts';
-import {
-  type BandEnvelope,
-  type EnvelopeSpectrum,
-  envelopeOfBand,
-  linesOf,
-  spectrumOfEnvelope,
-} from './envelope-spectrum.ts';
+import { expectedHz, type FoundLine, findBearingLine, lineNames, lineTitles } from './bearing-lines.ts';
+import { judgeRecord } from './envelope-judgement.ts';
+import { type EnvelopeSpectrum, envelopeOfBand, spectrumOfEnvelope } from './envelope-spectrum.ts';
 import type { PlannedBearing, PointPlan } from './plan.ts';
 import { ENVELOPE_EDGE_S, type EnvelopePlan } from './plan-envelope.ts';
 import { hz } from './plan-notes.ts';
 import type { EnvelopeReading } from './reading.ts';
 
-/** Blocks that a spectrum is averaged over at least; a record too short for that gets wider lines instead. */
-const LEAST_AVERAGES = 2;
-/** The spin of a rolling element smears its lines: they are sought with blocks this much shorter. */
-const COARSE = 4;
-/** Lines count from 9 dB over the floor (20·log10); averaged four times as often, from 6 dB. */
-const LINE_OVER_FLOOR = { fine: 10 ** (9 / 20), coarse: 10 ** (6 / 20) } as const;
-/** A bearing is judged on blocks of this many turns of the shaft where the record allows: lines 1/40 of an order apart. */
+/** The band filter needs most of what the plan leaves at each end, the decimation after it the rest. */
+const CUT_S = 0.8 * ENVELOPE_EDGE_S;
+/** A spectrum is averaged over two half-overlapped blocks at least; a shorter record gets wider lines instead. */
+const LEAST_BLOCKS = 1.5;
+/** Fewer lines than this tell nothing apart. */
+const LEAST_LINES = 100;
+/** A bearing is judged on blocks of this many turns where the record allows: lines 1/40 of an order apart. */
 const WANTED_TURNS = 40;
 /** With fewer, lines are so wide that a comb fits nearly anything. */
 const LEAST_TURNS = 30;
-/** Kurtogram: bands down to 1/16 of the spectrum, narrower ones follow single tones. */
+/** Two lines closer than the half width of a Hann main lobe look like one. */
+const TELL_APART_LINES = 2;
+/** Bands down to 1/16 of the spectrum: narrower ones follow single tones. */
 const KURTOGRAM_LEVELS = 4;
 
 export interface EnvelopeMeasurement {
-  /** null: the plan has no envelope, or the record cannot give one. */
+  /** null: the plan has no envelope, or the record is too short for one. */
   readonly reading: EnvelopeReading | null;
   readonly why: string[];
-  /** Whether `why` makes the reading uncertain; false: it only says why a figure is null. */
+  /** Whether `why` makes the reading uncertain; false: it only tells why a figure is null or doubtful. */
   readonly uncertain: boolean;
 }
 
@@ -53,7 +41,7 @@ export interface EnvelopeMeasurement {
  * @param accelerationG the whole record at the full rate, in g
  * @param rateHz the rate that the record was measured with
  * @param shaftHz speed of the shaft at the point; null: unknown, then no bearing line is looked for
- * @param otherHz fundamentals of other shafts nearby, whose lines are theirs and no bearing's
+ * @param otherHz speeds of other shafts nearby: lines at their multiples are theirs and no bearing's
  */
 export function measureEnvelope(
   plan: PointPlan,
@@ -64,31 +52,24 @@ export function measureEnvelope(
 ): EnvelopeMeasurement {
   const settings = plan.envelope;
   if (settings === null) return { reading: null, why: [], uncertain: false };
-  const whys = new Set<string>();
-  let uncertain = false;
-  const doubt = (reason: string): void => {
-    whys.add(reason);
-    uncertain = true;
-  };
+  const { fmaxHz } = settings;
+  const doubts: string[] = [];
 
-  const seconds = accelerationG.length / rateHz - 2 * ENVELOPE_EDGE_S;
-  const longestS = seconds / (1 + (LEAST_AVERAGES - 1) / 2);
+  const longestS = (accelerationG.length / rateHz - 2 * ENVELOPE_EDGE_S) / LEAST_BLOCKS;
   const blockS = Math.min(settings.blockS, longestS);
-  if (blockS * settings.fmaxHz < LEAST_LINES) {
-    doubt(`record too short: no envelope from ${accelerationG.length} samples`);
-    return { reading: null, why: [...whys], uncertain };
+  if (blockS * fmaxHz < LEAST_LINES) {
+    return { reading: null, why: ['record too short for an envelope'], uncertain: true };
   }
   if (blockS < settings.blockS) {
-    doubt(`record too short: envelope lines of ${hz(1 / blockS)} instead of ${hz(settings.lineHz)}`);
+    doubts.push(`record too short: envelope lines of ${hz(1 / blockS)} instead of ${hz(settings.lineHz)}`);
   }
-
-  const transform = recordTransform(accelerationG, { rateHz, cutS: ENVELOPE_EDGE_S });
-  const chosen = settings.auto ? impulsiveBand(transform, settings) : settings.bandHz;
-  const envelope = envelopeOfBand(transform, chosen, settings.fmaxHz);
-  const spectrum = spectrumOfEnvelope(envelope, blockS, settings.fmaxHz);
+  const transform = recordTransform(accelerationG, { rateHz, cutS: CUT_S });
+  const bandHz = settings.auto ? impulsiveBand(transform, settings) : settings.bandHz;
+  const envelope = envelopeOfBand(transform, bandHz, fmaxHz);
+  const spectrum = spectrumOfEnvelope(envelope, blockS, fmaxHz);
   const reading: EnvelopeReading = {
     unit: 'g²',
-    band_hz: [chosen[0], chosen[1]],
+    band_hz: [bandHz[0], bandHz[1]],
     mean: envelope.mean,
     floor: median(spectrum.amplitudes),
     defect: null,
@@ -97,89 +78,97 @@ export function measureEnvelope(
     bsf: null,
     ftf: null,
   };
-  const bearings = plan.bearings.filter((bearing) => bearing.multiples !== null);
-  if (bearings.length === 0) return { reading, why: [...whys], uncertain };
+  const bearings = plan.bearings.filter(({ multiples }) => multiples !== null);
+  if (bearings.length === 0) return { reading, why: doubts, uncertain: doubts.length > 0 };
+  for (const { id, multiples } of bearings) {
+    if (!multiples!.certain) doubts.push(`bearing ${id}: geometry unknown, its lines are rules of thumb`);
+  }
   if (shaftHz === null) {
-    doubt('speed unknown: no bearing line can be looked for');
-    return { reading, why: [...whys], uncertain };
+    doubts.push('speed unknown: no bearing line can be looked for');
+    return { reading, why: doubts, uncertain: true };
   }
 
   const foreignHz = [2 * plan.mainsHz, ...otherHz];
-  const sound = bearings.filter((bearing) => bearing.multiples!.certain);
-  for (const bearing of bearings) {
-    if (!sound.includes(bearing))
-      doubt(`bearing ${bearing.id}: geometry unknown, its lines are rules of thumb`);
-  }
-  let verdict: { bearing: PlannedBearing; found: BearingVerdict } | null = null;
   const judgedS = Math.max(blockS, Math.min(WANTED_TURNS / shaftHz, longestS));
+  let shown = bearings[0]!;
   if (judgedS * shaftHz < LEAST_TURNS) {
-    doubt(
-      `record too short to judge a bearing: blocks of ${Math.floor(judgedS * shaftHz)} turns, ${LEAST_TURNS} are needed`,
+    doubts.push(
+      `record too short to judge a bearing: ${Math.floor(judgedS * shaftHz)} turns a block, ${LEAST_TURNS} are needed`,
     );
-  } else if (sound.length > 0 && envelope.mean > 0) {
-    const bands = evidence(transform, settings, { chosen, envelope }, judgedS, shaftHz, foreignHz);
-    for (const bearing of sound) {
-      const found = judgeBearing(bands, bearing.multiples!, shaftHz);
-      if (found.defect !== null && found.score > (verdict?.found.score ?? 0)) verdict = { bearing, found };
-    }
+  } else {
+    const measured = { ...envelope, askedHz: bandHz };
+    const verdict = judgeRecord(
+      { transform, bandHz: settings.bandHz, measured, fmaxHz, blockS: judgedS, shaftHz, foreignHz },
+      bearings,
+    );
+    shown = verdict?.bearing ?? shown;
+    reading.defect = verdict?.accusation.part ?? null;
   }
-  const shown = verdict?.bearing ?? bearings[0]!;
-  reading.bearing = shown.id;
-  reading.defect = verdict?.found.defect ?? null;
-  const isHidden = (name: LineName, expected: number): boolean => {
-    const by = knownSourceAt(expected, shaftHz, foreignHz, spectrum.spectrum.lineHz);
-    if (by !== null)
-      whys.add(
-        `${lineTitles[name]} of ${shown.id} (${hz(expected)}) lies on ${hz(by)}, a line of another source`,
-      );
-    return by !== null;
-  };
-  let strongest: FoundLine | null = null;
-  const expected = expectedHz(shown.multiples!, shaftHz);
-  for (const name of lineNames) {
-    if (expected[name] > settings.fmaxHz || isHidden(name, expected[name])) continue;
-    const found = findBearingLine(spectrum, name, expected[name], envelope.mean);
-    reading[name] = found.line;
-    if ((found.line.line ?? 0) > (strongest?.line.line ?? 0)) strongest = found;
-  }
-  reading.floor = strongest?.floor ?? reading.floor;
-  return { reading, why: [...whys], uncertain };
+  const remarks = fillLines(reading, shown, { spectrum, mean: envelope.mean, shaftHz, foreignHz });
+  remarks.push(...tooClose(bearings, shaftHz, spectrum.spectrum.lineHz));
+  return { reading, why: [...doubts, ...remarks], uncertain: doubts.length > 0 };
 }
 
-/** Fewer lines than this tell nothing apart. */
-const LEAST_LINES = 100;
+/** Fills in the four lines of one bearing. @returns why one of them is null. */
+function fillLines(
+  reading: EnvelopeReading,
+  bearing: PlannedBearing,
+  from: { spectrum: EnvelopeSpectrum; mean: number; shaftHz: number; foreignHz: readonly number[] },
+): string[] {
+  const { spectrum, mean, shaftHz, foreignHz } = from;
+  const { lineHz } = spectrum.spectrum;
+  const remarks: string[] = [];
+  let strongest: FoundLine | null = null;
+  reading.bearing = bearing.id;
+  for (const [name, expected] of Object.entries(expectedHz(bearing.multiples!, shaftHz))) {
+    const line = name as keyof typeof lineTitles;
+    const title = `${lineTitles[line]} of ${bearing.id} (${hz(expected)})`;
+    const source = knownSourceAt(expected, shaftHz, foreignHz, lineHz);
+    if (expected > spectrum.fmaxHz) {
+      remarks.push(`${title} lies above the envelope's Fmax`);
+    } else if (source !== null) {
+      remarks.push(
+        `${title} lies on ${hz(source)}, a multiple of the shaft, of another shaft or of twice mains`,
+      );
+    } else {
+      const found = findBearingLine(spectrum, line, expected, mean);
+      reading[line] = found.line;
+      if ((found.line.line ?? 0) > (strongest?.line.line ?? 0)) strongest = found;
+    }
+  }
+  reading.floor = strongest?.floor ?? reading.floor;
+  return remarks;
+}
 
-/** The band within the limits of the plan where the signal is most impulsive. */
+/** Pairs of bearing frequencies that the lines cannot tell apart; the same type of bearing twice is no such pair. */
+function tooClose(bearings: readonly PlannedBearing[], shaftHz: number, lineHz: number): string[] {
+  const all = bearings.flatMap(({ id, multiples }) =>
+    lineNames.map((name) => ({
+      title: `${lineTitles[name]} of ${id}`,
+      hz: expectedHz(multiples!, shaftHz)[name],
+    })),
+  );
+  return all.flatMap((a, i) =>
+    all
+      .slice(i + 1)
+      .filter((b) => a.hz !== b.hz && Math.abs(a.hz - b.hz) < TELL_APART_LINES * lineHz)
+      .map(
+        (b) =>
+          `${a.title} (${hz(a.hz)}) and ${b.title} (${hz(b.hz)}) are too close for lines of ${hz(lineHz)}`,
+      ),
+  );
+}
+
+/** The band within the limits of the plan where the signal is most impulsive; the whole where none can be chosen. */
 function impulsiveBand(transform: RecordTransform, settings: EnvelopePlan): readonly [number, number] {
   const [minHz, maxHz] = settings.bandHz;
+  const { rateHz, samples } = transform;
+  // Bands of rate/32 always fit a range twice as wide, and a kurtosis wants some samples of each.
+  if (maxHz - minHz < rateHz / 16 || samples < 16_384) return settings.bandHz;
   const { table } = kurtogram(transform, { minHz, maxHz, maxLevel: KURTOGRAM_LEVELS });
   // A band narrower than the envelope's spectrum cannot show its lines.
   const wide = table.filter((band) => band.bandHz[1] - band.bandHz[0] >= settings.fmaxHz);
-  const best = wide.reduce((a, b) => (b.kurtosis > a.kurtosis ? b : a), wide[0]!);
-  return best?.bandHz ?? settings.bandHz;
-}
-
-/** The lines of all bands, cleared of known sources. The chosen band is measured already. */
-function evidence(
-  transform: RecordTransform,
-  settings: EnvelopePlan,
-  done: { chosen: readonly [number, number]; envelope: BandEnvelope },
-  blockS: number,
-  shaftHz: number,
-  foreignHz: readonly number[],
-): BandLines[] {
-  const bands = evidenceBands(settings.bandHz);
-  if (settings.auto) bands.push([done.chosen[0], done.chosen[1]]);
-  return bands.flatMap((bandHz): BandLines[] => {
-    const isDone = bandHz[0] === done.chosen[0] && bandHz[1] === done.chosen[1];
-    const envelope = isDone ? done.envelope : envelopeOfBand(transform, bandHz, settings.fmaxHz);
-    if (!(envelope.mean > 0)) return [];
-    const fine = spectrumOfEnvelope(envelope, blockS, settings.fmaxHz);
-    const coarse = spectrumOfEnvelope(envelope, blockS / COARSE, settings.fmaxHz);
-    const lines = (s: EnvelopeSpectrum, over: number) =>
-      withoutKnownSources(linesOf(s, envelope.mean, over), shaftHz, foreignHz);
-    return [
-      { bandHz, fine: lines(fine, LINE_OVER_FLOOR.fine), coarse: lines(coarse, LINE_OVER_FLOOR.coarse) },
-    ];
-  });
+  const first = wide[0];
+  if (first === undefined) return settings.bandHz;
+  return wide.reduce((a, b) => (b.kurtosis > a.kurtosis ? b : a), first).bandHz;
 }
