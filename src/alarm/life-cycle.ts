@@ -99,10 +99,12 @@ function off(from: LifeState, latching: boolean): LifeStep {
     case 'returned-unacknowledged':
       return same(from);
     case 'unacknowledged':
+      if (latching && from.condition === null) return same(from);
       return latching
         ? same({ ...from, condition: null })
         : told({ state: 'returned-unacknowledged', level: from.level });
     case 'acknowledged':
+      if (latching && from.condition === null) return same(from);
       return latching ? same({ ...from, condition: null }) : told(NORMAL);
     default:
       return from.condition === null ? same(from) : told({ ...from, condition: null });

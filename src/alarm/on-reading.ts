@@ -48,12 +48,11 @@ export function onReading(work: StepWork, input: ReadingInput): void {
   work.touched.add(machine.id);
   judgeSensor(work, plan, reading, elapsedS);
   if (plan.speaksForLink) judgeGaps(work, plan, reading, elapsedS);
-  if (!counts) {
-    if (row.uncountedS >= SUPPRESS_AFTER_S && before.uncountedS < SUPPRESS_AFTER_S)
-      suppressStopped(work, plan);
-    return;
-  }
+  if (!counts && row.uncountedS >= SUPPRESS_AFTER_S && before.uncountedS < SUPPRESS_AFTER_S)
+    suppressStopped(work, plan);
   for (const alarm of plan.rules) {
+    // The quality of readings is no matter of the machine's running.
+    if (!counts && alarm.rule.watch !== 'quality') continue;
     resume(work, alarm);
     judgeRule(work, alarm, reading, elapsedS, input.baseline ?? null);
   }
@@ -232,7 +231,7 @@ function judgeGaps(work: StepWork, { point }: PointPlan, reading: Reading, elaps
 /** An alarm that stands is left alone: a stop must neither clear nor raise it. */
 function suppressStopped(work: StepWork, plan: PointPlan): void {
   for (const alarm of plan.rules) {
-    if (work.alarm(alarm.key).life.state !== 'normal') continue;
+    if (alarm.rule.watch === 'quality' || work.alarm(alarm.key).life.state !== 'normal') continue;
     const options = { patch: { suppressedBy: 'stop' as const } };
     changeAlarm(
       work,

@@ -105,7 +105,8 @@ function pointAlarm(machine: Machine, point: Point, rule: Rule): PointAlarm {
 }
 
 function sensorAlarm(machine: Machine, point: Point, rule: Rule): SensorAlarm {
-  const timing = { ...rule, readings: rule.readings ?? PERSISTENT };
+  // Most of the last readings is patience enough; a delay on top would only leave the machine unwatched for longer.
+  const timing = { onDelayS: 0, offDelayS: rule.offDelayS, readings: PERSISTENT };
   const names = namesOf(machine.id, `${point.id}.${rule.id}`);
   return { kind: 'sensor', ...names, machine, point, timing, latched: rule.latched };
 }
