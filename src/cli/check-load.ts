@@ -3,7 +3,13 @@
 import type { ColumnChannel, LinkSettings, Station } from '../config/station.ts';
 import { ringBytes } from '../link/ring.ts';
 import type { PointPlan } from '../measure/plan.ts';
-import type { CheckWarning } from './check-report.ts';
+
+export interface CheckWarning {
+  readonly kind: 'warning';
+  /** A point, machine, link or rule. */
+  readonly where: string;
+  readonly text: string;
+}
 
 export interface CheckedLink {
   readonly kind: 'link';

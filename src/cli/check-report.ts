@@ -5,16 +5,9 @@ import { type BearingRates, bearingMultiples } from '../machine/bearing.ts';
 import { synchronousHz } from '../machine/electrical.ts';
 import { severityApplies, severityLimits } from '../machine/severity.ts';
 import { type PointPlan, planPoint } from '../measure/plan.ts';
-import { nominalRateHz } from './check-load.ts';
+import { type CheckWarning, nominalRateHz } from './check-load.ts';
 
-export interface CheckWarning {
-  readonly kind: 'warning';
-  /** A point, machine, link or rule. */
-  readonly where: string;
-  readonly text: string;
-}
-
-export interface CheckedLimit {
+interface CheckedLimit {
   readonly rule: string;
   readonly watch: string;
   readonly alert: number | string | null;

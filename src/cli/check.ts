@@ -6,8 +6,8 @@ import { loadStation } from '../config/load.ts';
 import { notAvailableYet } from '../config/not-available.ts';
 import type { Station } from '../config/station.ts';
 import { PlanError } from '../measure/plan.ts';
-import { reportLinks, reportUplink } from './check-load.ts';
-import { type CheckWarning, reportPoints } from './check-report.ts';
+import { type CheckWarning, reportLinks, reportUplink } from './check-load.ts';
+import { reportPoints } from './check-report.ts';
 import { linkText, pointText, uplinkText } from './check-text.ts';
 
 export interface CheckOptions {

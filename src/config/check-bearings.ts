@@ -30,7 +30,10 @@ function checkBearing(bearing: LooseBearing, path: KeyPath, report: Report): voi
   }
   if (bearing.elements === undefined) {
     const message = 'knows neither elements nor multiples, give the number of rolling elements at least';
-    report('config.missing-key', [...path, 'elements'], message);
+    report('config.missing-key', [...path, 'elements'], message, [
+      [...path, 'elements'],
+      [...path, 'multiples'],
+    ]);
   }
   const { element_mm: elementMm, pitch_mm: pitchMm } = bearing;
   if ((elementMm === undefined) !== (pitchMm === undefined)) {
@@ -38,7 +41,10 @@ function checkBearing(bearing: LooseBearing, path: KeyPath, report: Report): voi
     report('config.missing-key', [...path, absent!], `is missing, ${there} needs it beside it`);
   }
   if (bearing.contact_deg !== undefined && elementMm === undefined && pitchMm === undefined) {
-    report('config.missing-key', [...path, 'contact_deg'], 'needs element_mm and pitch_mm beside it');
+    report('config.missing-key', [...path, 'pitch_mm'], 'is missing, contact_deg needs it and element_mm', [
+      [...path, 'pitch_mm'],
+      [...path, 'element_mm'],
+    ]);
   }
   if (elementMm === undefined || pitchMm === undefined) return;
   if (elementMm >= pitchMm) {

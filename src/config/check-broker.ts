@@ -40,14 +40,10 @@ export function checkBroker(file: LooseStationFile, report: Report): void {
   if ((broker.cert_file === undefined) !== (broker.key_file === undefined)) {
     const [there, absent] =
       broker.cert_file === undefined ? ['key_file', 'cert_file'] : ['cert_file', 'key_file'];
-    report('config.missing-key', ['broker', there!], `needs ${absent} beside it, for mutual TLS give both`);
+    report('config.missing-key', ['broker', absent!], `is missing, ${there} needs it beside it`);
   }
   if (broker.password_file !== undefined && broker.username === undefined) {
-    report(
-      'config.missing-key',
-      ['broker', 'password_file'],
-      'needs username beside it, MQTT 3.1.1 asks for it',
-    );
+    report('config.missing-key', ['broker', 'username'], 'is missing, password_file needs it beside it');
   }
 }
 

@@ -41,7 +41,12 @@ export function checkOneOf<Key extends string>(
     report('config.exclusive-keys', [...path, key], `excludes ${present[0]}, keep one of the two`);
   }
   if (present.length === 0 && needed) {
-    report('config.exclusive-keys', path, `has none of ${keys.join(', ')}, exactly one is needed`);
+    report(
+      'config.exclusive-keys',
+      path,
+      `has none of ${keys.join(', ')}, exactly one is needed`,
+      keys.map((key) => [...path, key]),
+    );
   }
   return present[0] ?? null;
 }

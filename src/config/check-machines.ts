@@ -49,9 +49,10 @@ function checkPoint(
     const message = 'is a logic channel, a point needs one in g or m/s2';
     report('config.reference', [...path, 'channel'], message);
   }
-  const bearingIds = (machine.bearings ?? []).flatMap((bearing) => bearing?.id ?? []);
+  const bearings = machine.bearings ?? [];
+  const bearingIds = bearings.flatMap((bearing) => bearing?.id ?? []);
   for (const [index, id] of [point.bearing ?? []].flat().entries()) {
-    if (id === undefined || bearingIds.includes(id)) continue;
+    if (id === undefined || bearingIds.includes(id) || bearingIds.length < bearings.length) continue;
     const at = Array.isArray(point.bearing) ? [...path, 'bearing', index] : [...path, 'bearing'];
     report('config.reference', at, `this machine has no bearing ${id}${suggestion(id, bearingIds)}`);
   }
@@ -155,6 +156,8 @@ function checkRunning(machine: LooseMachine, path: KeyPath, report: Report): voi
   checkOneOf(running, ['above_mm_s', 'tachometer', 'mqtt'], [...path, 'running'], true, report);
   if (running.tachometer && machine.shaft?.tachometer === undefined) {
     const message = 'needs shaft.tachometer, which names the channel';
-    report('config.reference', [...path, 'running', 'tachometer'], message);
+    report('config.reference', [...path, 'running', 'tachometer'], message, [
+      [...path, 'shaft', 'tachometer'],
+    ]);
   }
 }

@@ -16,8 +16,11 @@ export function checkRules(file: LooseStationFile, report: Report): void {
   const reserved = { sensor: 'the built-in rule for sensor health, which is always in force' };
   checkIds(file.alarms, ['alarms'], 'rule', reserved, report);
   const bands = bandsByPoint(file);
+  const everyPointNamed = (file.machines ?? [undefined]).every(
+    (machine) => machine?.id !== undefined && machine.points?.every((point) => point?.id !== undefined),
+  );
   for (const [index, rule] of (file.alarms ?? []).entries()) {
-    if (rule) checkRule(rule, ['alarms', index], bands, report);
+    if (rule) checkRule(rule, ['alarms', index], bands, everyPointNamed, report);
   }
 }
 
@@ -33,11 +36,18 @@ function bandsByPoint(file: LooseStationFile): BandsByPoint {
   return bands;
 }
 
-function checkRule(rule: LooseRule, path: KeyPath, bands: BandsByPoint, report: Report): void {
+function checkRule(
+  rule: LooseRule,
+  path: KeyPath,
+  bands: BandsByPoint,
+  everyPointNamed: boolean,
+  report: Report,
+): void {
   const test = checkOneOf(rule, tests, path, true, report);
   const keys = [...bands.keys()];
   for (const [index, key] of (rule.points ?? []).entries()) {
-    if (key === undefined || bands.has(key)) continue;
+    // A machine or point whose own id is wrong is reported there, and not once more at each rule.
+    if (key === undefined || bands.has(key) || !everyPointNamed) continue;
     report(
       'config.reference',
       [...path, 'points', index],
@@ -130,7 +140,8 @@ function checkOrder(
   report: Report,
 ): void {
   if (alert === undefined && danger === undefined) {
-    report('config.missing-key', path, 'has neither alert nor danger, give one at least');
+    const about = [dangerKey, dangerKey.replace('danger', 'alert')].map((key) => [...path, key]);
+    report('config.missing-key', path, 'has neither alert nor danger, give one at least', about);
     return;
   }
   if (alert === undefined || danger === undefined) return;

@@ -24,8 +24,16 @@ export interface PlacedIssue {
   readonly message: string;
 }
 
-/** Takes the mistakes that a check finds. */
-export type Report = (code: ConfigIssue['code'], path: KeyPath, message: string) => void;
+/**
+ * Takes the mistakes that a check finds. `about`: where what is missing would stand; where the schema has found
+ * a mistake there already, it is wrong and not missing.
+ */
+export type Report = (
+  code: ConfigIssue['code'],
+  path: KeyPath,
+  message: string,
+  about?: readonly KeyPath[],
+) => void;
 
 /** In file order, each once. */
 export function placeIssues(
@@ -61,15 +69,16 @@ export function suggestion(word: string, known: readonly string[]): string {
   return `, known: ${shown}${known.length > 12 ? ', …' : ''}`;
 }
 
-/** The known word within a third of the length in edits, or one that begins alike; null: none is near. */
-function nearest(word: string, known: readonly string[]): string | null {
+/** The known word within two fifths of the length in edits, or one that begins alike; null: none is near. */
+export function nearest(word: string, known: readonly string[]): string | null {
   let best: string | null = null;
-  let bestDistance = Math.max(2, Math.floor(word.length / 3)) + 1;
+  let bestDistance = Math.max(1, Math.round(0.4 * word.length)) + 1;
   for (const candidate of known) {
     const distance = editDistance(word.slice(0, 64), candidate.slice(0, 64));
     if (distance < bestDistance) [best, bestDistance] = [candidate, distance];
   }
-  return best ?? known.find((candidate) => word.length >= 3 && candidate.startsWith(`${word}_`)) ?? null;
+  const alike = (a: string, b: string) => a.length >= 3 && b.startsWith(a);
+  return best ?? known.find((candidate) => alike(word, candidate) || alike(candidate, word)) ?? null;
 }
 
 /** Levenshtein distance. */

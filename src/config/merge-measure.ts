@@ -1,7 +1,8 @@
 /** Measuring settings of the station, a machine and a point, laid over each other key by key. */
 
 import type { z } from 'zod';
-import { type Loose, stationMeasure } from './schema.ts';
+import type { Loose } from './schema.ts';
+import { stationMeasure } from './schema-measure.ts';
 
 export type MeasureInFile = z.output<typeof stationMeasure>;
 

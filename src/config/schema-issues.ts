@@ -1,11 +1,11 @@
 /** What the schema finds, in words; and the data without what it found, for the checks that go on. */
 
 import type { z } from 'zod';
-import { type ConfigIssue, suggestion } from './issues.ts';
+import { type ConfigIssue, nearest, suggestion } from './issues.ts';
 import { type LooseStationFile, stationSchema } from './schema.ts';
 import type { KeyPath } from './yaml-text.ts';
 
-type SchemaIssue = z.core.$ZodIssue;
+export type SchemaIssue = z.core.$ZodIssue;
 
 export function wordIssues(issues: readonly SchemaIssue[], data: unknown): ConfigIssue[] {
   return issues.flatMap((issue) => wordIssue(issue, data, []));
@@ -57,20 +57,59 @@ function missing(path: KeyPath): ConfigIssue {
 }
 
 function unknownKey(path: KeyPath, key: string, data: unknown): ConfigIssue {
-  const secret = /pass(word|phrase)?$|secret|token/i.test(key) && !key.endsWith('_file');
-  if (secret) {
+  if (isSecret(key)) {
     const message =
       'a secret is never written in this file, name a file that holds it by broker.password_file';
     return { code: 'config.secret', path, message, key: true };
   }
-  const present = Object.keys((valueAt(data, path.slice(0, -1)) ?? {}) as object);
-  const known = keysAt(path.slice(0, -1)).filter((name) => !present.includes(name));
+  const known = absentKeys(path.slice(0, -1), data);
   return {
     code: 'config.unknown-key',
     path,
     message: `is not a known key${suggestion(key, known)}`,
     key: true,
   };
+}
+
+/** A key that is not known, and the one that was meant. */
+export interface Misspelling {
+  readonly parent: KeyPath;
+  readonly key: string;
+  readonly meant: string;
+}
+
+/** The unknown keys that are near a known one which is not there. */
+export function misspellings(issues: readonly SchemaIssue[], data: unknown): Misspelling[] {
+  return issues.flatMap((issue) => {
+    if (issue.code !== 'unrecognized_keys') return [];
+    const parent = issue.path as KeyPath;
+    const known = absentKeys(parent, data);
+    return issue.keys.flatMap((key) => {
+      const meant = isSecret(key) ? null : nearest(key, known);
+      return meant === null ? [] : [{ parent, key, meant }];
+    });
+  });
+}
+
+/** A copy in which each misspelt key has its right name, so that what stands under it is checked too. */
+export function respelled(data: unknown, wrong: readonly Misspelling[]): unknown {
+  const copy = structuredClone(data);
+  for (const { parent, key, meant } of wrong) {
+    const map = valueAt(copy, parent) as Record<string, unknown>;
+    if (meant in map) continue;
+    map[meant] = map[key];
+    delete map[key];
+  }
+  return copy;
+}
+
+/** A path of the respelled data as it stands in the text. */
+export function asWritten(path: KeyPath, wrong: readonly Misspelling[]): KeyPath {
+  const at = (misspelling: Misspelling) => [...misspelling.parent, misspelling.meant].join('\0');
+  return path.map((step, index) => {
+    const here = path.slice(0, index + 1).join('\0');
+    return wrong.find((misspelling) => at(misspelling) === here)?.key ?? step;
+  });
 }
 
 /** Takes out of `data` what the issues say is wrong. What is left has the right types. */
@@ -153,7 +192,13 @@ function descriptionAt(path: KeyPath): string {
   return kind === undefined ? step.description : `${kind} (${step.description})`;
 }
 
-function keysAt(path: KeyPath): string[] {
+function isSecret(key: string): boolean {
+  return /pass(word|phrase)?$|secret|token/i.test(key) && !key.endsWith('_file');
+}
+
+/** Keys that may stand at a path and do not. */
+function absentKeys(path: KeyPath, data: unknown): string[] {
+  const present = (valueAt(data, path) ?? {}) as object;
   const def = schemaAt(path).schema._zod.def as unknown as { shape?: Record<string, unknown> };
-  return Object.keys(def.shape ?? {});
+  return Object.keys(def.shape ?? {}).filter((key) => !Object.hasOwn(present, key));
 }

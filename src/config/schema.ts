@@ -5,11 +5,12 @@
  */
 
 import { z } from 'zod';
-
-export const idPattern = /^[a-z0-9-]{1,32}$/;
+import { ascending, id, int, num, path, text } from './schema-fields.ts';
+import { machineSchema } from './schema-machines.ts';
+import { stationMeasure } from './schema-measure.ts';
 
 /** The verbs of `ask/<verb>`. */
-export const askVerbs = [
+const askVerbs = [
   'readings',
   'acknowledge',
   'shelve',
@@ -29,36 +30,6 @@ export const askVerbs = [
 
 /** Parts that `envelope.defect` may name. */
 export const defectNames = ['outer', 'inner', 'rolling-element', 'cage', 'cage-rate'] as const;
-
-const id = (description: string) =>
-  z
-    .string()
-    .regex(idPattern)
-    .meta({ description: `${description}, 1 to 32 of a-z, 0-9 and -` });
-const num = (min: number, max: number, description: string) =>
-  z
-    .number()
-    .min(min)
-    .max(max)
-    .meta({ description: `${description}, ${min} to ${max}` });
-const int = (min: number, max: number, description: string) =>
-  z
-    .int()
-    .min(min)
-    .max(max)
-    .meta({ description: `${description}, whole, ${min} to ${max}` });
-const text = (max: number, description: string) => z.string().min(1).max(max).meta({ description });
-const path = (description: string) => text(4000, description);
-const ascending = (min: number, max: number, description: string) =>
-  z
-    .tuple([z.number().min(min).max(max), z.number().min(min).max(max)])
-    .refine(([low, high]) => low < high, { error: 'the first must be below the second' })
-    .meta({ description: `${description}: [lower, upper], within ${min} to ${max}` });
-const mqttTopic = (description: string) =>
-  z
-    .string()
-    .regex(/^[^+#\0]{1,500}$/)
-    .meta({ description: `${description}, without + and #` });
 
 const site = z
   .strictObject({
@@ -115,73 +86,6 @@ const publish = z
     at_least_s: num(1, 604_800, 'A reading is sent at least this often, s').default(7200),
   })
   .meta({ description: 'When a reading is worth sending; a zone or defect that changes always is' });
-
-const bandFields = {
-  id: id('Name of the band, its key in the reading'),
-  hz: ascending(0.1, 50_000, 'Edges in Hz').optional(),
-  orders: ascending(0.05, 1000, 'Edges in multiples of shaft speed').optional(),
-};
-const everyS = num(0.5, 3600, 'A record starts every so often, s');
-const velocityFields = {
-  fmax_hz: num(1, 20_000, 'Upper edge of the velocity spectrum, Hz'),
-  lines: int(25, 51_200, 'Lines of the velocity spectrum; the line spacing is fmax_hz / lines'),
-  averages: int(1, 1000, 'Half-overlapped blocks to average, at least'),
-  window: z
-    .enum(['rectangular', 'hann', 'flat-top'])
-    .meta({ description: 'Window, rectangular, hann or flat-top' }),
-};
-const envelopeFields = {
-  band_hz: z
-    .union([z.literal('auto'), ascending(1, 500_000, 'Edges in Hz')])
-    .meta({ description: 'Band that is demodulated, [lower, upper] in Hz, or auto (by spectral kurtosis)' }),
-  fmax_hz: z.union([z.literal('auto'), z.number().min(1).max(20_000)]).meta({
-    description:
-      'Upper edge of the envelope spectrum, 1 to 20000 Hz, or auto (the larger of 500 and 3.5 × BPFI)',
-  }),
-  lines: int(25, 51_200, 'Lines of the envelope spectrum'),
-  averages: int(1, 1000, 'Half-overlapped blocks to average, at least'),
-};
-const bands = z
-  .array(z.strictObject(bandFields))
-  .max(16)
-  .meta({ description: 'Banded velocity RMS beside `overall`, each with hz or orders; at most 16' });
-
-/** Measuring settings of the station, with the defaults. */
-export const stationMeasure = z
-  .strictObject({
-    every_s: everyS.default(10),
-    velocity: z
-      .strictObject({
-        fmax_hz: velocityFields.fmax_hz.default(1000),
-        lines: velocityFields.lines.default(3200),
-        averages: velocityFields.averages.default(4),
-        window: velocityFields.window.default('hann'),
-      })
-      .prefault({}),
-    bands: bands.default([
-      { id: 'low', hz: [2, 10] },
-      { id: 'running-speed', orders: [0.8, 1.2] },
-      { id: 'harmonics', orders: [1.8, 10.2] },
-    ]),
-    envelope: z
-      .strictObject({
-        band_hz: envelopeFields.band_hz.default([500, 16_000]),
-        fmax_hz: envelopeFields.fmax_hz.default('auto'),
-        lines: envelopeFields.lines.default(1600),
-        averages: envelopeFields.averages.default(4),
-      })
-      .prefault({}),
-  })
-  .meta({ description: 'How to measure; defaults for every point' });
-
-const measureOverride = z
-  .strictObject({
-    every_s: everyS.optional(),
-    velocity: z.strictObject(velocityFields).partial().optional(),
-    bands: bands.optional(),
-    envelope: z.strictObject(envelopeFields).partial().optional(),
-  })
-  .meta({ description: 'Overrides key by key; bands are replaced as a whole' });
 
 const sensor = z
   .strictObject({
@@ -251,137 +155,6 @@ const link = z.strictObject({
   sensors: z.record(z.string().min(1).max(255), sensor).default({}).meta({ description: 'By channel name' }),
 });
 
-const severity = z
-  .union([
-    z.literal('none'),
-    z.strictObject({
-      table: z
-        .enum(['iso-10816-7', 'iso-20816-3', 'iso-10816-3'])
-        .optional()
-        .meta({ description: 'Published table, iso-10816-7 (pumps), iso-20816-3 or iso-10816-3' }),
-      category: z.enum(['I', 'II']).optional().meta({ description: 'Category of iso-10816-7, I or II' }),
-      rated_kw: num(0.01, 1_000_000, 'Rated power, kW').optional(),
-      group: z.literal([1, 2]).optional().meta({ description: 'Group of iso-20816-3, 1 or 2' }),
-      support: z
-        .enum(['rigid', 'flexible'])
-        .optional()
-        .meta({ description: 'Support of iso-20816-3, rigid or flexible' }),
-      limits_mm_s: z
-        .tuple([z.number().gt(0).max(1000), z.number().gt(0).max(1000), z.number().gt(0).max(1000)])
-        .refine(([a, b, c]) => a < b && b < c, { error: 'the three must rise: A/B, B/C, C/D' })
-        .optional()
-        .meta({ description: 'Own zone limits instead of a table: [A/B, B/C, C/D], mm/s RMS, above 0' }),
-    }),
-  ])
-  .meta({ description: 'Severity zones: a table, own limits_mm_s, or none' });
-
-const shaft = z
-  .strictObject({
-    rpm: num(1, 100_000, 'Nominal speed, r/min').optional(),
-    tolerance_pct: num(0.1, 50, 'The spectrum is searched this far about rpm, %').optional(),
-    rpm_range: ascending(1, 100_000, 'The spectrum is searched in this range, r/min').optional(),
-    tachometer: z
-      .strictObject({
-        link: id('Link of the tachometer'),
-        channel: text(255, 'Its channel'),
-        pulses_per_rev: int(1, 10_000, 'Pulses per revolution').default(1),
-      })
-      .optional()
-      .meta({ description: 'A pulse channel of a node' }),
-    mqtt: mqttTopic('Topic whose payload is the speed in r/min').optional(),
-  })
-  .meta({ description: 'Where shaft speed comes from: rpm, rpm_range, tachometer or mqtt' });
-
-const running = z
-  .strictObject({
-    above_mm_s: num(
-      0.001,
-      1000,
-      'The machine runs while velocity overall is above this, mm/s RMS',
-    ).optional(),
-    tachometer: z.literal(true).optional().meta({ description: 'true: it runs while the tachometer turns' }),
-    mqtt: mqttTopic('Topic whose payload says whether it runs').optional(),
-  })
-  .default({ above_mm_s: 0.5 })
-  .meta({ description: 'How it is known that the machine runs: above_mm_s, tachometer or mqtt' });
-
-const bearing = z.strictObject({
-  id: id('Name of the bearing'),
-  elements: int(3, 500, 'Rolling elements in one row').optional(),
-  element_mm: num(0.1, 2000, 'Diameter of a rolling element, mm').optional(),
-  pitch_mm: num(0.5, 10_000, 'Pitch circle diameter, mm').optional(),
-  contact_deg: z
-    .number()
-    .min(0)
-    .lt(90)
-    .optional()
-    .meta({ description: 'Contact angle, degrees, 0 to below 90' }),
-  multiples: z
-    .strictObject({
-      ftf: z.number().gt(0).lt(1).meta({ description: 'Cage rate per shaft revolution, between 0 and 1' }),
-      bsf: num(0.1, 500, 'Spins of an element per shaft revolution'),
-      bpfo: num(0.5, 500, 'Outer race passes per shaft revolution'),
-      bpfi: num(0.5, 500, 'Inner race passes per shaft revolution'),
-    })
-    .optional()
-    .meta({ description: 'Frequencies per shaft revolution, instead of geometry' }),
-});
-
-const point = z.strictObject({
-  id: id('Name of the point'),
-  link: id('Link that it is measured through'),
-  channel: text(255, 'Channel of that link'),
-  direction: z
-    .enum(['horizontal', 'vertical', 'axial', 'inline', 'cross'])
-    .default('horizontal')
-    .meta({ description: 'horizontal, vertical, axial, inline or cross (to the discharge)' }),
-  part: z
-    .enum(['motor', 'pump', 'gear', 'fan'])
-    .default('motor')
-    .meta({ description: 'motor, pump, gear or fan' }),
-  end: z.enum(['de', 'nde']).optional().meta({ description: 'Drive end (de) or non-drive end (nde)' }),
-  at: z
-    .enum(['bearing', 'foot', 'frame', 'pipe'])
-    .default('bearing')
-    .meta({ description: 'bearing, foot, frame or pipe' }),
-  bearing: z
-    .union([z.string().regex(idPattern), z.array(z.string().regex(idPattern)).max(8)])
-    .optional()
-    .meta({ description: 'Bearing of the machine that is heard here: one id or a list of up to 8' }),
-  thrust: z.boolean().default(false).meta({ description: 'true where the axial load is carried' }),
-  ratio: num(0.001, 1000, 'Shaft speed here over that of the machine').default(1),
-  severity: severity.optional(),
-  measure: measureOverride.optional(),
-});
-
-const machine = z.strictObject({
-  id: id('Name of the machine'),
-  name: text(200, 'For people; left out, the id').optional(),
-  mounting: z
-    .enum(['horizontal', 'vertical', 'submersible'])
-    .default('horizontal')
-    .meta({ description: 'horizontal, vertical or submersible' }),
-  severity: severity.default('none'),
-  shaft: shaft.optional(),
-  running,
-  start_delay_s: num(0, 86_400, 'After a start, before readings count, s').default(20),
-  usual_run_s: num(1, 31_536_000, 'How long it usually runs at a time, s; `check` compares').optional(),
-  motor: z
-    .strictObject({
-      poles: int(2, 96, 'Poles of the motor, even').optional(),
-      supply: z
-        .enum(['mains', 'inverter'])
-        .default('mains')
-        .meta({ description: 'What feeds it, mains or inverter' }),
-    })
-    .optional()
-    .meta({ description: 'The motor; left out, nothing electrical is judged' }),
-  vanes: int(1, 100, 'Vanes of the impeller').optional(),
-  bearings: z.array(bearing).max(32).default([]).meta({ description: 'Bearings, at most 32' }),
-  points: z.array(point).min(1).max(64).meta({ description: 'Measuring points, 1 to 64' }),
-  measure: measureOverride.optional(),
-});
-
 const levels = (fields: z.ZodNumber, description: string) =>
   z.strictObject({ alert: fields.optional(), danger: fields.optional() }).optional().meta({ description });
 
@@ -436,7 +209,7 @@ export const stationSchema = z
     publish: publish.prefault({}),
     measure: stationMeasure.prefault({}),
     links: z.array(link).min(1).max(32).meta({ description: 'Links to sensor nodes, 1 to 32' }),
-    machines: z.array(machine).min(1).max(64).meta({ description: 'Machines, 1 to 64' }),
+    machines: z.array(machineSchema).min(1).max(64).meta({ description: 'Machines, 1 to 64' }),
     alarms: z
       .array(rule)
       .max(64)

@@ -13,7 +13,7 @@ import {
 } from 'yaml';
 import type { ConfigIssue } from './issues.ts';
 
-export const maxFileBytes = 65_536;
+const maxFileBytes = 65_536;
 const maxDepth = 40;
 const maxAliases = 100;
 
