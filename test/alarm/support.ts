@@ -194,9 +194,9 @@ export class Bench {
   }
 
   /** One interval later: a reading of each key. */
-  read(shown: Shown | Record<string, Shown>, elapsedS = 10): readonly AlarmEffect[] {
+  read(shown: Shown | Record<string, Shown>, elapsedS: number | null = 10): readonly AlarmEffect[] {
     const all = isShown(shown) ? { 'pump-1/de-h': shown } : shown;
-    const effects = [...this.tick(elapsedS)];
+    const effects = [...this.tick(elapsedS ?? 10)];
     for (const [pointKey, one] of Object.entries(all)) {
       const severity = this.plan.points.get(pointKey)!.point.severity;
       const reading = makeReading({ severity, ...one });
