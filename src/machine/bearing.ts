@@ -30,10 +30,11 @@ export interface BearingMultiples extends BearingRates {
  */
 const RULE_OF_THUMB_RATIO = 0.2;
 
-function ratesOf(elements: number, ratio: number): BearingRates {
+/** @param pitchOverElement D/d; @param ratio (d/D)·cos φ. */
+function ratesOf(elements: number, pitchOverElement: number, ratio: number): BearingRates {
   return {
     ftf: (1 - ratio) / 2,
-    bsf: (1 - ratio * ratio) / (2 * ratio),
+    bsf: (pitchOverElement / 2) * (1 - ratio * ratio),
     bpfo: (elements * (1 - ratio)) / 2,
     bpfi: (elements * (1 + ratio)) / 2,
   };
@@ -56,7 +57,7 @@ function requireElements(elements: number): void {
  *
  * Valid for a fixed outer ring and rolling without slip; 1 to 2 % of slip is normal in service (Smith and Randall
  * 2015, MSSP 64-65, p. 102). Source of the formulas: the same paper; r = (d/D)·cos φ, FTF = (1−r)/2,
- * BPFO = n·(1−r)/2, BPFI = n·(1+r)/2, BSF = (1−r²)/(2r).
+ * BPFO = n·(1−r)/2, BPFI = n·(1+r)/2, BSF = (D/2d)·(1−r²).
  *
  * Worked: 9 elements of 0.3126 in on a pitch circle of 1.537 in, 0°: BPFO 3.5848, BPFI 5.4152, FTF 0.3983,
  * BSF 2.3567.
@@ -68,7 +69,8 @@ export function bearingMultiples(bearing: BearingKnowledge): BearingMultiples | 
   }
   if (bearing.elements === null) return null;
   requireElements(bearing.elements);
-  if (bearing.geometry === null) return { ...ratesOf(bearing.elements, RULE_OF_THUMB_RATIO), certain: false };
+  if (bearing.geometry === null)
+    return { ...ratesOf(bearing.elements, 1 / RULE_OF_THUMB_RATIO, RULE_OF_THUMB_RATIO), certain: false };
 
   const { elementMm, pitchMm, contactDeg } = bearing.geometry;
   if (!(contactDeg >= 0 && contactDeg < 90)) {
@@ -81,5 +83,5 @@ export function bearingMultiples(bearing: BearingKnowledge): BearingMultiples | 
     );
   }
   const ratio = (elementMm / pitchMm) * Math.cos((contactDeg * Math.PI) / 180);
-  return { ...ratesOf(bearing.elements, ratio), certain: true };
+  return { ...ratesOf(bearing.elements, pitchMm / elementMm, ratio), certain: true };
 }
