@@ -46,6 +46,7 @@ export class DemoBoard {
   /** By `machine/point.rule`; those of links as `agent/link.rule`. */
   readonly alarms = new Map<string, AlarmRow>();
   readonly findings = new Map<string, string>();
+  agentOnline = false;
   messages = 0;
   bytes = 0;
   #defectsHeard = new Map<string, string>();
@@ -68,7 +69,11 @@ export class DemoBoard {
     if (third === 'reading') return this.#reading(`${machine}/${second}`, body as ReadingHeard);
     if (second === 'alarm') return this.#alarm(`${machine}/${third}`, body as AlarmHeard, atS);
     if (second === 'finding') return this.#finding(machine, body as FindingHeard);
-    if (machine === 'agent' && second === '') return [`agent ${(body as { state?: string }).state ?? '?'}`];
+    if (machine === 'agent' && second === '') {
+      const { state = '?' } = body as { state?: string };
+      this.agentOnline = state === 'online';
+      return [`agent ${state}`];
+    }
     return [];
   }
 
@@ -121,6 +126,7 @@ export class DemoBoard {
     if (before === undefined && !raisedStates.has(alarm.state ?? '')) return [];
     this.alarms.set(key, { ...alarm, atS });
     if (before?.state === alarm.state && before?.level === alarm.level) return [];
+    if (alarm.state === 'normal') return [`alarm ${key} is back to normal`];
     const lines = [`ALARM ${key} ${alarm.level ?? ''}, ${alarm.state ?? '?'}: ${alarm.reason ?? ''}`];
     if (before === undefined && alarm.check) lines.push(`      check: ${alarm.check}`);
     return lines;

@@ -22,7 +22,9 @@ const usualSeconds = 75;
 /** The first reading needs 8 s of samples, and three must agree before the bearing alarm. */
 const leastSeconds = 50;
 const mostSeconds = 3600;
-const refreshMs = { live: 1000, plain: 10_000 };
+const mostStartMs = 15_000;
+const liveRefreshMs = 1000;
+const plainRefreshMs = 10_000;
 
 /** @returns the exit status: 0 when what the demo promises was seen, else 1. */
 export async function demoCommand({ seconds, out }: DemoOptions): Promise<number> {
@@ -77,48 +79,62 @@ async function show(
   });
   const board = new DemoBoard(demoSite);
   const agent = new DemoAgent(stationFile, join(directory, 'agent.log'));
-  const began = performance.now();
+  let began = performance.now();
   const elapsedS = () => (performance.now() - began) / 1000;
   const traffic = (): Traffic => ({
     seconds: elapsedS(),
     ofSeconds: lasts,
     rawBytes: nodes.reduce((sum, { counts }) => sum + counts.bytes, 0),
   });
+  let online = () => {};
+  const ready = new Promise<'ready'>((resolve) => {
+    online = () => resolve('ready');
+  });
   const client = listenTo(port, (topic, payload, packetBytes) => {
     const told = board.accept(topic, payload, packetBytes, elapsedS());
+    if (board.agentOnline) online();
     if (told.length === 0) return;
     view.tell(told.map((line) => `${elapsedS().toFixed(0).padStart(3)} s  ${line}`));
     if (view.live) view.show(board, traffic());
   });
-  const refresh = setInterval(
-    () => view.show(board, traffic()),
-    view.live ? refreshMs.live : refreshMs.plain,
-  );
-  let end: NodeJS.Timeout | undefined;
+  const timers = new Set<NodeJS.Timeout>();
+  const wait = <Word extends string>(ms: number, word: Word) =>
+    new Promise<Word>((resolve) => timers.add(setTimeout(() => resolve(word), ms)));
+  const ended = agent.ended.then(() => 'agent ended' as const);
+  const failed = (why: string): number => {
+    view.tell(['', why, 'The end of its log:', ...agent.lastWords().map((line) => `  ${line}`)]);
+    return 1;
+  };
   try {
-    for (const node of nodes) node.start();
-    const over = new Promise<'over'>((resolve) => {
-      end = setTimeout(() => resolve('over'), lasts * 1000);
-    });
-    const cause = await Promise.race([over, interrupted, agent.ended.then(() => 'agent ended' as const)]);
-    clearInterval(refresh);
-    view.show(board, traffic());
+    // The nodes speak once somebody listens, so that what the line loses is not the agent's start.
+    let cause: 'ready' | 'late' | 'over' | 'interrupted' | 'agent ended' = await Promise.race([
+      ready,
+      wait(mostStartMs, 'late'),
+      interrupted,
+      ended,
+    ]);
+    if (cause === 'late') return failed(`The agent was not online within ${mostStartMs / 1000} s.`);
+    if (cause === 'ready') {
+      began = performance.now();
+      for (const node of nodes) node.start();
+      const refreshMs = view.live ? liveRefreshMs : plainRefreshMs;
+      timers.add(setInterval(() => view.show(board, traffic()), refreshMs));
+      cause = await Promise.race([wait(lasts * 1000, 'over'), interrupted, ended]);
+    }
+    if (cause === 'agent ended') return failed('The agent ended by itself.');
     if (cause === 'interrupted') {
       view.tell(['', 'Interrupted: nothing was judged.']);
       return 1;
     }
+    view.show(board, traffic());
     const lost = {
       frames: nodes.reduce((sum, { counts }) => sum + counts.droppedFrames, 0),
       samples: nodes.reduce((sum, { counts }) => sum + counts.lostSamples, 0),
     };
     view.tell(summaryLines(board, traffic(), lost));
-    const kept = cause === 'over' && board.missing().length === 0;
-    if (cause === 'agent ended') view.tell(['', 'The agent ended by itself.']);
-    if (!kept) view.tell(['Its last words:', ...agent.lastWords().map((line) => `  ${line}`)]);
-    return kept ? 0 : 1;
+    return board.missing().length === 0 ? 0 : failed('For whoever looks into it:');
   } finally {
-    clearTimeout(end);
-    clearInterval(refresh);
+    for (const timer of timers) clearTimeout(timer);
     for (const node of nodes) node.stop();
     client.end(true);
     await agent.stop();

@@ -124,6 +124,10 @@ describe("the demo's board", () => {
       /pump-2\/motor-de-h.bearing alert, ack/,
     );
     expect(board.accept(topic('pump-2/alarm/motor-de-v.zone'), alarm('normal'), 1, 48)).toEqual([]);
+    expect(board.accept(topic(key), alarm('normal'), 1, 48)).toEqual([
+      'alarm pump-2/motor-de-h.bearing is back to normal',
+    ]);
+    expect(tableLines(board).join('\n')).not.toContain('bearing alert');
     const finding = JSON.stringify({
       findings: [{ fault: 'bearing', likelihood: 'likely', points: ['motor-de-h'] }],
     });
