@@ -128,7 +128,9 @@ function checkPoint(station: Station, machine: Machine, point: Point, plan: Poin
     judged_after_start_s:
       recordS === null || delays.length === 0
         ? null
-        : machine.startDelayS + recordS + Math.min(...delays.map((rule) => rule.onDelayS)),
+        : machine.startDelayS +
+          recordS +
+          Math.min(...delays.map((rule) => wholeSteps(rule.onDelayS, everyS))),
   };
 }
 
@@ -260,6 +262,11 @@ function idleRules(station: Station, points: readonly CheckedPoint[]): CheckWarn
       'no point that it watches has zones: give the machines a severity, or it will never be raised';
     return [{ kind: 'warning', where: `rule ${rule.id}`, text }];
   });
+}
+
+/** A delay ends with a reading, and they come every so often. */
+function wholeSteps(delayS: number, everyS: number): number {
+  return Math.ceil(delayS / everyS) * everyS;
 }
 
 /** Four significant digits for a person. */
