@@ -22,7 +22,7 @@ import type { Transport } from './transport.ts';
 const TICK_MS = 500;
 /** Bytes per second are averaged over so many ticks. */
 const SPEED_TICKS = 10;
-/** Longer than two DESCRIBEs are apart: on a shared line the right node may speak second. */
+/** Longer than two DESCRIBEs are apart: on a shared line just opened, the right node may speak second. */
 const FOREIGN_AFTER_MS = 2500;
 /** Bytes that are no frames for this long: open the port anew, another program may have changed its settings. */
 const REOPEN_AFTER_MS = 10_000;
@@ -82,7 +82,6 @@ export class Link {
   #lastFrameMs = 0;
   #lastFrames = 0;
   #lastSamplesMs = Number.NEGATIVE_INFINITY;
-  #foreignSinceMs: number | null = null;
   #samplesCame = false;
   #cancelTick: () => void = () => undefined;
 
@@ -240,7 +239,8 @@ export class Link {
     this.#epoch++;
     this.#description = description;
     this.#rate = new RateEstimator(description.nominalRateHz);
-    this.#overRange = new Map(description.channels.map(({ name }) => [name, this.#overRange.get(name) ?? 0]));
+    const limited = description.channels.filter(({ countRange }) => countRange !== null);
+    this.#overRange = new Map(limited.map(({ name }) => [name, this.#overRange.get(name) ?? 0]));
     this.#ring.beginEpoch(this.#epoch, firstIndex);
     this.#host.onEpoch({ epoch: this.#epoch, firstIndex, description, memory: this.#ring.memory, because });
   }
@@ -282,8 +282,6 @@ export class Link {
 
   #judged(state: SupervisorState, now: number): Omit<LinkCondition, 'sinceMs'> {
     const standing = this.#node?.standing;
-    if (standing?.kind !== 'foreign') this.#foreignSinceMs = null;
-    else this.#foreignSinceMs ??= now;
     switch (state.kind) {
       case 'stopped':
         return { kind: 'stopped', why: '' };
@@ -297,9 +295,11 @@ export class Link {
       case 'open':
         break;
     }
-    if (this.#foreignSinceMs !== null && standing?.kind === 'foreign') {
-      if (now - this.#foreignSinceMs >= FOREIGN_AFTER_MS) return { kind: 'foreign-node', why: standing.why };
-      return { kind: 'waiting', why: 'another node speaks' };
+    if (standing?.kind === 'foreign') {
+      const early = now - this.#openedMs < FOREIGN_AFTER_MS;
+      return early
+        ? { kind: 'waiting', why: 'another node speaks' }
+        : { kind: 'foreign-node', why: standing.why };
     }
     if (this.#tooLarge !== null) return { kind: 'too-large', why: this.#tooLarge };
     if (now - this.#lastSamplesMs < SILENT_AFTER_MS) return { kind: 'receiving', why: '' };
