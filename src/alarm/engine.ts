@@ -84,7 +84,8 @@ export function restoreAlarms(plan: AlarmPlan, rows: Readonly<Record<string, Sto
       (of === 'machine' && plan.machines.has(key));
     if (!known || v !== ROW_VERSION) {
       effects.push({ kind: 'row', key: rowKey, row: null, urgent: true });
-      if (of === 'alarm') effects.push({ kind: 'withdraw', topic: key.replace('/', '/alarm/') });
+      if (stored.of === 'alarm' && (stored.facts !== null || stored.test !== null))
+        effects.push({ kind: 'withdraw', topic: key.replace('/', '/alarm/') });
       if (of === 'machine' && !known) {
         effects.push(
           { kind: 'withdraw', topic: `${key}/state` },

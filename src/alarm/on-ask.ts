@@ -24,6 +24,7 @@ type AlarmAsk = Exclude<AskInput, ServiceAsk>;
 function alarmAsk(work: StepWork, ask: AlarmAsk): string | null {
   const alarm = work.plan.alarms.get(ask.alarm);
   if (alarm === undefined) return refusal.unknownAlarm(ask.alarm);
+  work.asked.add(alarm.key);
   if (ask.kind !== 'test' && ask.by.trim() === '') return refusal.by;
   switch (ask.kind) {
     case 'acknowledge':

@@ -1,7 +1,7 @@
 /**
  * The quiet that keeps alarms believed. Of a machine at most 6 messages are sent in any minute, its state topic among
  * them, and of a station at most 10 newly unacknowledged alarms in any 10 minutes. What does not fit waits, the worst
- * first, and is told as it then stands; nothing waits twice, so what waits is bounded by the number of topics. The
+ * first, and is told as it then stands; what a person asked for does not wait; nothing waits twice, so what waits is bounded by the number of topics. The
  * journal has every change all the same.
  *
  * Ages advance with ticks. What was sent since the last tick is taken to be as young as that tick can make it.
@@ -15,8 +15,9 @@ import type { StepWork } from './work.ts';
 
 const MACHINE_WINDOW_S = 60;
 const MACHINE_MESSAGES = 6;
-/** One of them is kept for the state topic, so that the lamp follows in a flood. */
+/** One of them is kept for the state topic, so that the lamp follows in a flood, and two more from mere detail. */
 const MACHINE_ALARMS = MACHINE_MESSAGES - 1;
+const MACHINE_DETAILS = MACHINE_MESSAGES - 3;
 /** More than 10 in 10 minutes is a flood to one operator (ISA-18.2 and IEC 62682, as reproduced). */
 const STATION_WINDOW_S = 600;
 const STATION_ANNOUNCED = 10;
@@ -52,23 +53,34 @@ export function tell(work: StepWork): void {
   for (const id of work.touched) publishState(work, id);
 }
 
-/** Dangers before alerts, what asks for acknowledgement before what tells of it, suppressions last. */
-function rank({ life, test }: AlarmRow): number {
+const DETAIL = 4;
+
+/** Dangers before alerts, what asks for acknowledgement before what only tells, details of a group last. */
+function rank(row: AlarmRow): number {
+  const { life, test } = row;
   if (test !== null) return 0;
-  if (life.state === 'suppressed-by-design') return 4;
+  if (life.state === 'suppressed-by-design') return DETAIL;
   if (life.state !== 'unacknowledged') return 3;
+  if (!announces(row)) return row.told.startsWith(`${life.state} ${life.level} `) ? DETAIL : 3;
   return life.level === 'danger' ? 1 : 2;
+}
+
+/** Whether telling it asks for an acknowledgement that was not asked for before. */
+function announces(row: AlarmRow): boolean {
+  if (row.test === null && row.life.state !== 'unacknowledged') return false;
+  return !row.told.split(' ').includes(row.test?.id ?? row.raised ?? '');
 }
 
 function publishAlarm(work: StepWork, alarm: AlarmDefinition, row: AlarmRow): boolean {
   const where = alarm.kind === 'agent' ? 'agent' : alarm.machine.id;
   const sent = work.quiet.sent[where] ?? [];
-  const raised = row.test?.id ?? row.raised;
-  const asks = row.test !== null || row.life.state === 'unacknowledged';
-  const announces = asks && !row.told.includes(` ${raised} `) && !row.told.endsWith(` ${raised}`);
-  if (sent.length >= MACHINE_MESSAGES || sent.filter((message) => message.alarm).length >= MACHINE_ALARMS)
-    return false;
-  if (announces && work.quiet.announced.length >= STATION_ANNOUNCED) return false;
+  const asks = announces(row);
+  const alarms = sent.filter((message) => message.alarm).length;
+  const full =
+    sent.length >= MACHINE_MESSAGES || alarms >= (rank(row) === DETAIL ? MACHINE_DETAILS : MACHINE_ALARMS);
+  const flooded = asks && work.quiet.announced.length >= STATION_ANNOUNCED;
+  // Whoever asked for it sees what came of it at once: an answer to a person is no flood.
+  if ((full || flooded) && !work.asked.has(alarm.key)) return false;
   const id = work.changeIds.get(alarm.key) ?? work.allocateId();
   work.effects.push({
     kind: 'publish',
@@ -79,7 +91,7 @@ function publishAlarm(work: StepWork, alarm: AlarmDefinition, row: AlarmRow): bo
   work.setAlarm(alarm.key, { ...row, told: signature(row) }, true);
   work.quiet = {
     sent: { ...work.quiet.sent, [where]: [...sent, { ageS: FRESH, alarm: true }] },
-    announced: announces ? [...work.quiet.announced, FRESH] : work.quiet.announced,
+    announced: asks ? [...work.quiet.announced, FRESH] : work.quiet.announced,
   };
   return true;
 }

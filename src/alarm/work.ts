@@ -20,6 +20,8 @@ export class StepWork {
   readonly touched = new Set<string>();
   /** Id of the change of an alarm in this step, so that what is published at once carries the journal's id. */
   readonly changeIds = new Map<string, string>();
+  /** Alarms that a person acted on in this step. */
+  readonly asked = new Set<string>();
   waiting: readonly string[];
   quiet: QuietRow;
   readonly #alarms = new Map<string, AlarmRow>();
@@ -70,9 +72,9 @@ export class StepWork {
 
   finish(): { state: EngineState; effects: readonly AlarmEffect[] } {
     const state: EngineState = {
-      alarms: this.#merge('alarm', this.#alarms, this.before.alarms),
-      points: this.#merge('point', this.#points, this.before.points),
-      machines: this.#merge('machine', this.#machines, this.before.machines),
+      alarms: this.#merge('alarm', this.#alarms, this.before.alarms, NEW_ALARM),
+      points: this.#merge('point', this.#points, this.before.points, NEW_POINT),
+      machines: this.#merge('machine', this.#machines, this.before.machines, NEW_MACHINE),
       quiet: this.quiet,
       waiting: this.waiting,
     };
@@ -87,8 +89,9 @@ export class StepWork {
     of: 'alarm' | 'point' | 'machine',
     changed: ReadonlyMap<string, T>,
     before: Readonly<Record<string, T>>,
+    blank: T,
   ): Readonly<Record<string, T>> {
-    const fresh = [...changed].filter(([key, row]) => !sameRow(before[key], row));
+    const fresh = [...changed].filter(([key, row]) => !sameRow(before[key] ?? blank, row));
     if (fresh.length === 0) return before;
     for (const [key, row] of fresh) {
       const rowKey = `${of}:${key}`;
@@ -100,7 +103,6 @@ export class StepWork {
 }
 
 /** Shallow: a field that did not change is the same object. */
-function sameRow<T extends object>(a: T | undefined, b: T): boolean {
-  if (a === undefined) return false;
+function sameRow<T extends object>(a: T, b: T): boolean {
   return (Object.keys(b) as (keyof T)[]).every((key) => Object.is(a[key], b[key]));
 }

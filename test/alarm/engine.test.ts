@@ -14,8 +14,6 @@ import {
   zoneRule,
 } from './support.ts';
 
-const ZONE = 'pump-1/alarm/de-h.zone';
-
 describe('delays, in sample time', () => {
   test('an on-delay is met at the first reading at least that long after the first one over the limit', () => {
     const bench = new Bench(onePoint());
@@ -367,5 +365,5 @@ test('evidence is asked for at the first reading over the limit, and kept or dro
 
 test('a point that the station does not have is refused', () => {
   const bench = new Bench(onePoint());
-  expect(() => bench.read({ 'pump-9/x': { mmS: 1 } })).toThrow();
+  expect(() => bench.read({ 'pump-9/x': { mmS: 1 } })).toThrow(/no point pump-9\/x/);
 });

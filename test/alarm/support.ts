@@ -197,12 +197,14 @@ export class Bench {
   read(shown: Shown | Record<string, Shown>, elapsedS: number | null = 10): readonly AlarmEffect[] {
     const all = isShown(shown) ? { 'pump-1/de-h': shown } : shown;
     const effects = [...this.tick(elapsedS ?? 10)];
-    for (const [pointKey, one] of Object.entries(all)) {
-      const severity = this.plan.points.get(pointKey)!.point.severity;
-      const reading = makeReading({ severity, ...one });
-      effects.push(...this.put({ kind: 'reading', pointKey, reading, t: this.t, elapsedS }));
-    }
+    for (const [pointKey, one] of Object.entries(all)) effects.push(...this.readOne(pointKey, one, elapsedS));
     return effects;
+  }
+
+  readOne(pointKey: string, shown: Shown, elapsedS: number | null): readonly AlarmEffect[] {
+    const severity = this.plan.points.get(pointKey)?.point.severity ?? null;
+    const reading = makeReading({ severity, ...shown });
+    return this.put({ kind: 'reading', pointKey, reading, t: this.t, elapsedS });
   }
 
   lifeOf(key: string): string {
