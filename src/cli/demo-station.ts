@@ -54,11 +54,11 @@ function machineSettings(machine: keyof typeof bearings, seconds: number): Machi
       seed: 20_260_301,
       sources: {
         unbalanceMmS: 1.1,
-        misalignmentMmS: 0.15,
+        misalignmentMmS: 0.25,
         harmonicsMmS: 0.2,
         vanePassMmS: 0.35,
         electricalMmS: 0.15,
-        flowRmsG: 0.03,
+        flowRmsG: 0.02,
       },
       resonance: { hz: 210, damping: 0.04, participation: 0.1 },
     };
@@ -72,7 +72,7 @@ function machineSettings(machine: keyof typeof bearings, seconds: number): Machi
       harmonicsMmS: 0.25,
       vanePassMmS: 0.4,
       electricalMmS: 0.2,
-      flowRmsG: 0.035,
+      flowRmsG: 0.025,
     },
     resonance: { hz: 180, damping: 0.04, participation: 0.1 },
     defects: [
@@ -146,6 +146,7 @@ function machineText(machine: keyof typeof bearings, name: string, link: string)
     mounting: horizontal
     severity: {table: iso-10816-7, category: I, rated_kw: 37}
     shaft: {rpm: ${ratedRpm[machine]}, tolerance_pct: 1.3}
+    running: {above_mm_s: 0.2}
     start_delay_s: 2
     motor: {poles: 4, supply: mains}
     vanes: ${vanes}

@@ -58,7 +58,7 @@ function loosenessComponents(random: Random): Component[] {
 function components(vanes: number, random: Random): Record<keyof ShaftSources, readonly Component[]> {
   return {
     // The heavy spot passes the vertical a quarter turn after the horizontal.
-    unbalanceMmS: [component(1, [1, 0.85, 0.12], [30, 120, 30])],
+    unbalanceMmS: [component(1, [1, 0.85, 0.25], [30, 120, 30])],
     misalignmentMmS: [
       component(1, [0.4, 0.4, 0.7], [70, 160, 250]),
       component(2, [1, 0.9, 1.1], [10, 20, 190]),
@@ -66,7 +66,7 @@ function components(vanes: number, random: Random): Record<keyof ShaftSources, r
     ],
     loosenessMmS: loosenessComponents(random),
     harmonicsMmS: [
-      component(2, [1, 0.8, 0.5], [200, 250, 80]),
+      component(2, [1, 0.8, 0.5], [40, 60, 210]),
       component(3, [0.5, 0.6, 0.3], [20, 100, 170]),
       component(4, [0.3, 0.2, 0.2], [300, 40, 90]),
     ],
