@@ -79,5 +79,5 @@ function isUneven(counts: Int32Array, places: readonly number[]): boolean {
     least = Math.min(least, curvature);
     most = Math.max(most, curvature);
   }
-  return most - least > Math.max(SMOOTH_DROP, most / 4);
+  return most - least > Math.max(SMOOTH_DROP, most / 16);
 }

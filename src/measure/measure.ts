@@ -9,6 +9,7 @@ import { expectedShaftHz, overallBandHz, type PointPlan } from './plan.ts';
 import type { Reading } from './reading.ts';
 import type { SampleRecord } from './record.ts';
 import { foundShaft, givenShaft, type ShaftFigures } from './shaft.ts';
+import { tachometerSpeed } from './tachometer.ts';
 import { gPerCount, invalidities } from './validity.ts';
 import { displacementPeakToPeak, displacementRms, type Figure, velocityRms } from './velocity.ts';
 
@@ -61,11 +62,18 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
         : take(velocityRms(decimated, [edges[0] * unitHz, edges[1] * unitHz], `band ${id}`));
   }
   const { rms, peak, crest, kurtosis } = statistics(acceleration);
-  const envelope = measureEnvelope(plan, acceleration, rateHz, shaft.hz);
-  why.push(...envelope.why);
+  const p2p = overall === null ? null : take(displacementPeakToPeak(decimated, bandHz));
+  const { ratio } = plan.point;
+  const otherHz = shaft.hz === null || ratio === 1 ? [] : [shaft.hz / ratio];
+  const envelope = measureEnvelope(plan, acceleration, rateHz, shaft.hz, otherHz);
+  // Without a speed it says so too: once is enough, and of a machine at rest it is no news.
+  const known = running === false || shaft.why.length > 0;
+  const envelopeWhy = envelope.why.filter((text) => !(known && text.startsWith('speed unknown')));
+  const uncertain = why.length > 0 || (envelope.uncertain && envelopeWhy.length > 0);
+  why.push(...envelopeWhy);
   const phase = shaft.source === 'tachometer' && hasPhase(plan, record) ? shaft.tachometer : null;
   return {
-    quality: why.length === 0 ? 'good' : 'uncertain',
+    quality: uncertain ? 'uncertain' : 'good',
     why,
     first_index: record.firstIndex,
     rate: record.rate,
@@ -79,7 +87,7 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
     displacement: {
       unit: 'µm',
       rms: displacement,
-      p2p: overall === null ? null : take(displacementPeakToPeak(decimated, bandHz)),
+      p2p,
     },
     orders: shaft.hz === null ? NO_ORDERS : orderFigures(decimated, shaft.hz, phase),
     acceleration: { unit: 'g', band_hz: [...plan.accelerationHz], rms, peak, crest, kurtosis },
@@ -117,7 +125,10 @@ function isRunning(
     }
     case 'tachometer':
       if (record.toldRunning !== null) return record.toldRunning;
-      if (record.tachometer !== null) return given?.tachometer != null;
+      if (record.tachometer !== null) {
+        const { counts, pulsesPerRev } = record.tachometer;
+        return tachometerSpeed(counts, pulsesPerRev, record.rate.hz) !== null;
+      }
       return record.toldShaftHz === null ? null : record.toldShaftHz > 0;
     case 'mqtt':
       return record.toldRunning;

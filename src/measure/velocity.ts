@@ -1,6 +1,7 @@
 /** Velocity and displacement figures of a spectrum: overall, the configured bands. */
 
 import { displacementWaveform, displacementWeights, velocityWeights } from '../signal/integrate.ts';
+import { SignalRangeError } from '../signal/range-error.ts';
 import { bandMeanSquare, type Spectrum } from '../signal/spectrum.ts';
 import { mainLobeHalfWidthBins } from '../signal/window.ts';
 import type { DecimatedRecord } from './decimated.ts';
@@ -25,26 +26,26 @@ export function velocityRms(
 ): Figure {
   const out = outOfReach(record, bandHz, name);
   if (out !== null) return { value: null, why: out };
-  const weight = velocityWeights(record.spectrum, 'g');
-  return { value: Math.sqrt(bandMeanSquare(record.spectrum, bandHz, { weight })), why: null };
+  return { value: bandRms(record.spectrum, bandHz, velocityWeights(record.spectrum, 'g')), why: null };
 }
 
 /** RMS displacement of a band, µm; limits as those of the velocity. */
 export function displacementRms(record: DecimatedRecord, bandHz: readonly [number, number]): Figure {
   const out = outOfReach(record, bandHz, 'displacement');
   if (out !== null) return { value: null, why: out };
-  const weight = displacementWeights(record.spectrum, 'g');
-  return { value: Math.sqrt(bandMeanSquare(record.spectrum, bandHz, { weight })), why: null };
+  return { value: bandRms(record.spectrum, bandHz, displacementWeights(record.spectrum, 'g')), why: null };
 }
 
 /** Peak to peak displacement of a band over the record, µm, from the time signal. */
 export function displacementPeakToPeak(record: DecimatedRecord, bandHz: readonly [number, number]): Figure {
   const { samples, rateHz } = record;
-  // Three periods of the lower edge fade in and out; as many again must be left.
-  if (samples.length <= Math.ceil((3 * rateHz) / bandHz[0]) * 4) {
+  let waveform: Float64Array;
+  try {
+    waveform = displacementWaveform(samples, { rateHz, bandHz, unit: 'g' });
+  } catch (error) {
+    if (!(error instanceof SignalRangeError)) throw error;
     return { value: null, why: `record too short: no displacement over time from ${hz(bandHz[0])}` };
   }
-  const waveform = displacementWaveform(samples, { rateHz, bandHz, unit: 'g' });
   let low = Number.POSITIVE_INFINITY;
   let high = Number.NEGATIVE_INFINITY;
   for (const value of waveform) {
@@ -52,6 +53,12 @@ export function displacementPeakToPeak(record: DecimatedRecord, bandHz: readonly
     if (value > high) high = value;
   }
   return { value: high - low, why: null };
+}
+
+function bandRms(spectrum: Spectrum, [low, high]: readonly [number, number], weight: Float64Array): number {
+  // Where padding put bins between the lines, a line on the edge has 1 % of its power in a bin just beyond the reach.
+  const outwardHz = spectrum.binHz < spectrum.lineHz ? spectrum.binHz : 0;
+  return Math.sqrt(bandMeanSquare(spectrum, [low - outwardHz, high + outwardHz], { weight }));
 }
 
 function outOfReach(record: DecimatedRecord, bandHz: readonly [number, number], name: string): string | null {
