@@ -19,7 +19,7 @@ const MAX_CHANNELS = 8;
 export type SampleUnit = 'g' | 'm/s2' | 'logic';
 export type SampleFormat = 'i16' | 'i24';
 
-export interface DescribedChannel {
+interface DescribedChannel {
   readonly name: string;
   readonly unit: SampleUnit;
   readonly unitsPerCount: number;
@@ -58,7 +58,7 @@ export interface HealthFrame {
   readonly lostSamples: number;
 }
 
-export type FrameError = 'short' | 'crc' | 'version' | 'unknown-kind' | 'length' | 'describe';
+type FrameError = 'short' | 'crc' | 'version' | 'unknown-kind' | 'length' | 'describe';
 
 export type Frame =
   | DescribeFrame

@@ -30,8 +30,13 @@ export class Pty {
     this.#master = master;
   }
 
-  /** Writes what there is room for (some 20 kB unread) and drops the rest; nothing once closed. */
+  /** Writes what there is room for (some 20 kB unread) and drops the rest. */
   write(bytes: Uint8Array): void {
+    this.droppedBytes += bytes.length - this.offer(bytes);
+  }
+
+  /** Writes what there is room for, and returns how many bytes that were; none once closed. */
+  offer(bytes: Uint8Array): number {
     let from = 0;
     while (this.#master !== null && from < bytes.length) {
       try {
@@ -41,7 +46,7 @@ export class Pty {
         break;
       }
     }
-    this.droppedBytes += bytes.length - from;
+    return from;
   }
 
   /** Hangs up: to the reader an unplugged device. */

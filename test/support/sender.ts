@@ -3,7 +3,7 @@
  * that a misreading of that page does not cancel out.
  */
 
-export interface SentChannel {
+interface SentChannel {
   name: string;
   unit: 'g' | 'm/s2' | 'logic';
   /** Physical units per count. */
