@@ -37,7 +37,10 @@ export interface FoundLine {
   readonly floor: number | null;
 }
 
-/** The line nearest to what is expected: the strongest maximum within the slip that is normal. */
+/**
+ * The level at an expected place: that of the strongest maximum within the slip that is normal, or where there is none, the
+ * highest the spectrum reaches there.
+ */
 export function findBearingLine(
   s: EnvelopeSpectrum,
   name: LineName,
@@ -46,48 +49,54 @@ export function findBearingLine(
 ): FoundLine {
   const { spectrum } = s;
   const reachHz = Math.max(SLIP[name] * expected, 0.75 * spectrum.lineHz);
-  const bin = strongestMaximum(s, expected, reachHz);
+  const bins = binsWithin(s, expected, reachHz);
+  const peak = strongest(s, localMaxima(s.amplitudes, bins));
+  const bin = peak ?? strongest(s, everyBin(bins));
   if (bin === null || !(mean > 0)) {
-    return {
-      line: {
-        expected_hz: expected,
-        hz: null,
-        line: null,
-        over_floor_db: null,
-        modulation: null,
-        harmonics: 0,
-      },
-      floor: null,
-    };
+    const none = { hz: null, line: null, over_floor_db: null, modulation: null, harmonics: 0 };
+    return { line: { expected_hz: expected, ...none }, floor: null };
   }
-  const { hz, amplitude } = lineAmplitude(spectrum, bin);
+  const { hz, amplitude } =
+    peak === null ? { hz: null, amplitude: s.amplitudes[bin]! } : lineAmplitude(spectrum, bin);
   const floor = s.floor[bin]!;
-  const overFloorDb = 10 * Math.log10(amplitude / floor);
-  let harmonics = overFloorDb >= HARMONIC_OVER_FLOOR_DB ? 1 : 0;
-  for (let h = 2; harmonics > 0 && h * hz < s.fmaxHz; h++) {
-    const at = strongestMaximum(s, h * hz, 0.75 * spectrum.lineHz);
-    if (at !== null && 10 * Math.log10(s.amplitudes[at]! / s.floor[at]!) >= HARMONIC_OVER_FLOOR_DB)
-      harmonics++;
-  }
   return {
     line: {
       expected_hz: expected,
       hz,
       line: amplitude,
-      over_floor_db: floor > 0 ? overFloorDb : null,
+      over_floor_db: floor > 0 && amplitude > 0 ? 10 * Math.log10(amplitude / floor) : null,
       modulation: amplitude / mean,
-      harmonics,
+      harmonics: hz === null ? 0 : harmonicsOf(s, hz, amplitude / floor),
     },
     floor,
   };
 }
 
-function strongestMaximum(s: EnvelopeSpectrum, hz: number, reachHz: number): number | null {
+/** Multiples of a line that stand above the floor, itself included; 0 where it does not. */
+function harmonicsOf(s: EnvelopeSpectrum, hz: number, overFloor: number): number {
+  const least = 10 ** (HARMONIC_OVER_FLOOR_DB / 10);
+  if (!(overFloor >= least)) return 0;
+  let count = 1;
+  for (let multiple = 2 * hz; multiple < s.fmaxHz; multiple += hz) {
+    const at = strongest(s, localMaxima(s.amplitudes, binsWithin(s, multiple, 0.75 * s.spectrum.lineHz)));
+    if (at !== null && s.amplitudes[at]! >= least * s.floor[at]!) count++;
+  }
+  return count;
+}
+
+function binsWithin(s: EnvelopeSpectrum, hz: number, reachHz: number): { from: number; to: number } {
   const { binHz } = s.spectrum;
-  const bins = localMaxima(s.amplitudes, {
+  return {
     from: Math.max(1, Math.ceil((hz - reachHz) / binHz)),
-    to: Math.floor((hz + reachHz) / binHz),
-  });
+    to: Math.min(s.amplitudes.length - 2, Math.floor((hz + reachHz) / binHz)),
+  };
+}
+
+function everyBin({ from, to }: { from: number; to: number }): number[] {
+  return Array.from({ length: Math.max(0, to - from + 1) }, (_, i) => from + i);
+}
+
+function strongest(s: EnvelopeSpectrum, bins: readonly number[]): number | null {
   let best: number | null = null;
   for (const bin of bins) if (best === null || s.amplitudes[bin]! > s.amplitudes[best]!) best = bin;
   return best;
