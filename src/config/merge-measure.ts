@@ -25,6 +25,5 @@ function overlay<T extends object>(
   below: T,
   above: { [Key in keyof T]?: T[Key] | undefined } | undefined,
 ): T {
-  const given = Object.entries(above ?? {}).filter(([, value]) => value !== undefined);
-  return { ...below, ...Object.fromEntries(given) };
+  return { ...below, ...(above as Partial<T> | undefined) };
 }
