@@ -12,6 +12,8 @@ const RESTART_AFTER_MS = 500;
 
 export interface MeasuringHost {
   workerLost(reason: string): void;
+  /** A worker that was lost has been replaced and measures again. */
+  workerBack(): void;
 }
 
 interface Waiting {
@@ -32,6 +34,7 @@ export class MeasuringRoom {
   #worker: Worker | null = null;
   #restart: NodeJS.Timeout | null = null;
   #stopped = false;
+  #lostSince = false;
 
   constructor(setup: MeasuringSetup, host: MeasuringHost) {
     this.#setup = setup;
@@ -85,6 +88,7 @@ export class MeasuringRoom {
     if (this.#stopped || this.#worker !== worker) return;
     this.#worker = null;
     this.workerRestarts++;
+    this.#lostSince = true;
     const current = this.#current;
     this.#current = null;
     this.#giveUp(current, 'the measuring worker died');
@@ -105,6 +109,10 @@ export class MeasuringRoom {
     const current = this.#current;
     if (!current || current.id !== outcome.id) return;
     this.#current = null;
+    if (this.#lostSince) {
+      this.#lostSince = false;
+      this.#host.workerBack();
+    }
     if ('missed' in outcome) this.#giveUp(current, outcome.missed);
     else current.resolve(outcome);
     this.#next();

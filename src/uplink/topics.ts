@@ -3,6 +3,8 @@
 export interface Topics {
   readonly agent: string;
   readonly health: string;
+  /** The full topic of one that is named from the site on. */
+  below(name: string): string;
   /** What the agent subscribes to. */
   readonly asks: string;
   reading(pointKey: string): string;
@@ -24,6 +26,7 @@ export function topicsOf(site: string): Topics {
   return {
     agent: `${root}agent`,
     health: `${root}health`,
+    below: (name) => `${root}${name}`,
     asks: `${askRoot}+`,
     reading: (pointKey) => `${root}${pointKey}/reading`,
     alarm: (machine, subject, rule) => `${root}${machine}/alarm/${subject}.${rule}`,

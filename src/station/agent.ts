@@ -1,0 +1,322 @@
+/** The agent: store, uplink, links, measuring and judging of one station, started, watched and stopped together. */
+
+import { mkdirSync } from 'node:fs';
+import { monitorEventLoopDelay } from 'node:perf_hooks';
+import type { AlarmInput, StoredRow } from '../alarm/effects.ts';
+import { restoreAlarms } from '../alarm/engine.ts';
+import { planAlarms } from '../alarm/plan.ts';
+import type { Point, Station } from '../config/station.ts';
+import type { Reading } from '../measure/reading.ts';
+import { storeLimits } from '../store/limits.ts';
+import type { OpenReport } from '../store/types.ts';
+import { WorkerStore } from '../store/worker-store.ts';
+import { MessageIds } from '../uplink/message-ids.ts';
+import { emptyingMessage, outboxMessage } from '../uplink/payload.ts';
+import { emptyForgotten } from '../uplink/retained.ts';
+import { topicsOf } from '../uplink/topics.ts';
+import { Uplink } from '../uplink/uplink.ts';
+import { clockState, type StationClock, systemClock } from './clock.ts';
+import { healthBody } from './health.ts';
+import { Judging } from './judging.ts';
+import { LiveJudge } from './live-judge.ts';
+import type { Log } from './log.ts';
+import { MeasuringRoom } from './measuring-room.ts';
+import { ownTopics } from './own-topics.ts';
+import { ReadingPost } from './reading-post.ts';
+import { answerAsks } from './station-asks.ts';
+import { StationLinks } from './station-links.ts';
+import { ToldValues, toldTopics } from './told.ts';
+import { trendWatches } from './trend-watches.ts';
+
+const TICK_MS = 1000;
+const HEALTH_EVERY_S = 6 * 3600;
+const CLOCK_CHECK_S = 600;
+/** A stop is done, or given up, within this. */
+const STOP_MS = 4500;
+
+export interface AgentOptions {
+  version: string;
+  log: Log;
+  clock?: StationClock;
+}
+
+export class Agent {
+  readonly #station: Station;
+  readonly #options: AgentOptions;
+  readonly #clock: StationClock;
+  readonly #log: Log;
+  readonly #store: WorkerStore;
+  readonly #room: MeasuringRoom;
+  readonly #links: StationLinks;
+  readonly #told: ToldValues;
+  readonly #loopDelay = monitorEventLoopDelay({ resolution: 10 });
+  #parts: { uplink: Uplink; ids: MessageIds; judge: LiveJudge; judging: Judging; post: ReadingPost } | null =
+    null;
+  #openedS = 0;
+  #runSAtOpen = 0;
+  #clockSays: 'synchronised' | 'free' = 'free';
+  #timer: NodeJS.Timeout | null = null;
+  #tickS = 0;
+  #healthS = 0;
+  #clockS = 0;
+  #storeTrouble = false;
+  #cpu = { usage: process.cpuUsage(), atS: 0 };
+
+  constructor(station: Station, options: AgentOptions) {
+    this.#station = station;
+    this.#options = options;
+    this.#clock = options.clock ?? systemClock;
+    this.#log = options.log;
+    const { directory, maxMb } = station.storage;
+    this.#store = new WorkerStore({
+      directory,
+      maxMb,
+      limits: storeLimits(maxMb),
+      onDown: (error) => void this.#reopenStore(error),
+    });
+    this.#told = new ToldValues(toldTopics(station.machines), () => this.#clock.monotonicS());
+    const points = station.machines.flatMap((machine) => machine.points.map((point) => ({ point, machine })));
+    this.#room = new MeasuringRoom(
+      { points, mainsHz: station.site.mainsHz },
+      {
+        workerLost: (reason) => this.#gateway('measuring', true, reason),
+        workerBack: () => this.#gateway('measuring', false, null),
+      },
+    );
+    this.#links = new StationLinks(station, this.#room, this.#told, {
+      wallMs: () => this.#clock.wallMs(),
+      reading: (point, reading, wallMs, elapsedS) => this.#reading(point, reading, wallMs, elapsedS),
+      condition: (link, conditions, why) => {
+        if (why !== null) this.#log.warn(`link ${link} is not receiving`, { conditions, why });
+        void this.#parts?.judge.take({ kind: 'link', link, conditions, detail: why, t: this.#now() });
+      },
+    });
+  }
+
+  /** The port of the embedded broker; null: the broker is another's. */
+  get embeddedPort(): number | null {
+    return this.#parts?.uplink.embeddedPort ?? null;
+  }
+
+  /** @throws ForebayError where the storage is locked or unwritable or the embedded broker's port is busy. */
+  async start(): Promise<void> {
+    mkdirSync(this.#station.storage.directory, { recursive: true });
+    const report = await this.#store.open();
+    this.#opened(report);
+    this.#clockSays = await clockState();
+    const parts = await this.#assemble(report);
+    this.#parts = parts;
+    if (report.setAside) {
+      const { reason, path } = report.setAside;
+      this.#log.warn('the database was broken and has been set aside', { reason, path });
+      this.#gateway('database', true, `${reason}; it was set aside as ${path} and a fresh one begun`);
+    } else this.#gateway('database', false, null);
+    await parts.uplink.start();
+    this.#links.start();
+    this.#loopDelay.enable();
+    this.#tickS = this.#clock.monotonicS();
+    this.#cpu = { usage: process.cpuUsage(), atS: this.#tickS };
+    // The first health follows once the links have had time to speak.
+    this.#healthS = this.#tickS - HEALTH_EVERY_S + 30;
+    this.#timer = setInterval(() => this.#tick(), TICK_MS);
+    this.#log.info('running', { site: this.#station.site.id, config: this.#station.configHash });
+  }
+
+  async stop(): Promise<void> {
+    if (this.#timer) clearInterval(this.#timer);
+    await this.#links.stop();
+    this.#logLinks();
+    await this.#room.stop();
+    await this.#parts?.judge.stop();
+    await this.#parts?.uplink.stop(STOP_MS);
+    await this.#store.close();
+    this.#loopDelay.disable();
+    this.#log.info('stopped');
+  }
+
+  async #assemble(report: OpenReport) {
+    const station = this.#station;
+    const store = this.#store;
+    const topics = topicsOf(station.site.id);
+    const ids = new MessageIds(report.storeId, report.nextN);
+    const plan = planAlarms(station);
+    const rows = Object.entries(await store.alarmStates()).map(([key, json]) => [
+      key,
+      JSON.parse(json) as StoredRow,
+    ]);
+    const restored = restoreAlarms(plan, Object.fromEntries(rows));
+    const judging = new Judging(plan, restored.state, () => ids.idOf(ids.take()));
+    const kick = () => uplink.kick();
+    const judge = new LiveJudge(judging, {
+      commit: (commit) => store.commit({ ...commit, nextN: ids.nextN }),
+      topic: topics.below,
+      emptying: (name, topic) => emptyingMessage(ids, name, topic),
+      committed: () => {
+        kick();
+        this.#storeWorks();
+      },
+      evidence: () => undefined,
+      commitFailed: (error) => this.#storeFailed(error),
+      monotonicS: () => this.#clock.monotonicS(),
+    });
+    const post = new ReadingPost(station.publish, trendWatches(station), {
+      commit: (commit) => store.commit(commit),
+      committed: kick,
+      message: (pointKey, body) => outboxMessage(ids, 'reading', topics.reading(pointKey), body),
+      monotonicS: () => this.#clock.monotonicS(),
+      lost: (error) => this.#storeFailed(error),
+    });
+    const uplink = new Uplink(
+      {
+        site: station.site.id,
+        broker: station.broker,
+        asks: station.asks,
+        commandTopics: this.#told.topics,
+      },
+      {
+        store,
+        ids,
+        runS: () => this.#runSAtOpen + this.#clock.monotonicS() - this.#openedS,
+        now: () => this.#now(),
+        agent: () => ({ version: this.#options.version, config: station.configHash, clock: this.#clockSays }),
+        command: (topic, text) => this.#told.hear(topic, text),
+        log: (level, message, details) => {
+          if (level === 'info') this.#log.info(message, details);
+          else this.#log.warn(message, details);
+        },
+      },
+    );
+    await judge.restore(restored.effects);
+    await emptyForgotten(store, ids, ownTopics(station, plan, topics));
+    answerAsks(uplink, { judge, post, store, ids, plan, now: () => this.#now() });
+    return { uplink, ids, judge, judging, post };
+  }
+
+  #opened(report: OpenReport): void {
+    this.#runSAtOpen = report.runS;
+    this.#openedS = this.#clock.monotonicS();
+  }
+
+  #reading(point: Point, reading: Reading, wallMs: number, elapsedS: number | null): void {
+    const parts = this.#parts;
+    if (!parts) return;
+    const t = new Date(wallMs).toISOString();
+    void parts.judge.take({ kind: 'reading', pointKey: point.key, reading, t, elapsedS });
+    const findings = parts.judging.noteReading(point.key, reading);
+    if (findings) void parts.judge.take({ kind: 'findings', ...findings, t });
+    void parts.post.take(point.key, t, reading);
+  }
+
+  #tick(): void {
+    const nowS = this.#clock.monotonicS();
+    void this.#parts?.judge.take({ kind: 'tick', elapsedS: nowS - this.#tickS, t: this.#now() });
+    this.#tickS = nowS;
+    if (nowS - this.#healthS >= HEALTH_EVERY_S) {
+      this.#healthS = nowS;
+      this.#sendHealth().catch((error) => this.#storeFailed(error));
+    }
+    if (nowS - this.#clockS >= CLOCK_CHECK_S) {
+      this.#clockS = nowS;
+      void this.#checkClock();
+    }
+  }
+
+  async #checkClock(): Promise<void> {
+    const says = await clockState();
+    if (says === this.#clockSays) return;
+    this.#clockSays = says;
+    await this.#parts?.uplink.agentChanged();
+  }
+
+  async #sendHealth(): Promise<void> {
+    const parts = this.#parts;
+    if (!parts) return;
+    const message = outboxMessage(
+      parts.ids,
+      'health',
+      topicsOf(this.#station.site.id).health,
+      healthBody({
+        t: this.#now(),
+        links: this.#links.health(),
+        store: await this.#store.counters(),
+        uplink: parts.uplink.status(),
+        measuring: {
+          waiting: this.#room.waiting,
+          missed: this.#room.missed,
+          skipped: this.#links.skipped,
+          worker_restarts: this.#room.workerRestarts,
+          readings_lost: parts.post.lost,
+          alarm_inputs_dropped: parts.judge.dropped,
+          told_unreadable: this.#told.unreadable,
+        },
+        eventLoopP99Ms: this.#loopP99(),
+        directory: this.#station.storage.directory,
+        cpuPct: this.#cpuPct(),
+      }),
+    );
+    await this.#store.commit({ outbox: [message] });
+    parts.uplink.kick();
+  }
+
+  #loopP99(): number {
+    const p99 = this.#loopDelay.percentile(99) / 1e6;
+    this.#loopDelay.reset();
+    return Number(p99.toPrecision(3));
+  }
+
+  #cpuPct(): number | null {
+    const usage = process.cpuUsage(this.#cpu.usage);
+    const elapsedS = this.#clock.monotonicS() - this.#cpu.atS;
+    this.#cpu = { usage: process.cpuUsage(), atS: this.#clock.monotonicS() };
+    if (elapsedS <= 0) return null;
+    return Number(((usage.user + usage.system) / (elapsedS * 1e4)).toPrecision(3));
+  }
+
+  #gateway(
+    condition: Extract<AlarmInput, { kind: 'gateway' }>['condition'],
+    holds: boolean,
+    detail: string | null,
+  ): void {
+    void this.#parts?.judge.take({ kind: 'gateway', condition, holds, detail, t: this.#now() });
+    // Something in `health` went wrong: it is told soon, with what follows from it.
+    if (holds) this.#healthS = Math.min(this.#healthS, this.#clock.monotonicS() - HEALTH_EVERY_S + 5);
+  }
+
+  #storeFailed(error: unknown): void {
+    this.#log.warn('the database did not take a commit', { err: error });
+    if (this.#storeTrouble) return;
+    this.#storeTrouble = true;
+    this.#gateway('disk', true, error instanceof Error ? error.message : String(error));
+  }
+
+  #storeWorks(): void {
+    if (!this.#storeTrouble) return;
+    this.#storeTrouble = false;
+    this.#gateway('disk', false, null);
+  }
+
+  /** The store worker died: what was under way failed and is tried again by whoever asked. */
+  async #reopenStore(error: Error): Promise<void> {
+    this.#log.error('the store worker ended', error);
+    for (;;) {
+      try {
+        this.#opened(await this.#store.open());
+        return;
+      } catch (again) {
+        this.#storeFailed(again);
+        await new Promise((resolve) => setTimeout(resolve, 1000));
+      }
+    }
+  }
+
+  #logLinks(): void {
+    for (const [link, health] of Object.entries(this.#links.health())) {
+      const { frames, errors, gaps, missingSamples, head } = health;
+      this.#log.info('link', { link, frames, errors, gaps, missing_samples: missingSamples, head });
+    }
+  }
+
+  #now(): string {
+    return new Date(this.#clock.wallMs()).toISOString();
+  }
+}

@@ -1,0 +1,81 @@
+/**
+ * From readings to alarm and finding effects: what the running agent and a replay share. Nothing here waits or stores;
+ * the caller commits the effects of a step and then keeps its state.
+ */
+
+import type { AlarmEffect, AlarmInput, AllocateId } from '../alarm/effects.ts';
+import { stepAlarms } from '../alarm/engine.ts';
+import type { AlarmPlan } from '../alarm/plan.ts';
+import type { EngineState } from '../alarm/state.ts';
+import type { Finding } from '../machine/findings.ts';
+import type { Reading } from '../measure/reading.ts';
+
+export class Judging {
+  readonly #plan: AlarmPlan;
+  readonly #allocateId: AllocateId;
+  #state: EngineState;
+  /** Latest reading of each point. */
+  readonly #latest = new Map<string, Reading>();
+  /** Points of a machine that have reported since its faults were last looked for. */
+  readonly #rounds = new Map<string, Set<string>>();
+
+  constructor(plan: AlarmPlan, state: EngineState, allocateId: AllocateId) {
+    this.#plan = plan;
+    this.#state = state;
+    this.#allocateId = allocateId;
+  }
+
+  get plan(): AlarmPlan {
+    return this.#plan;
+  }
+
+  get state(): EngineState {
+    return this.#state;
+  }
+
+  latest(pointKey: string): Reading | null {
+    return this.#latest.get(pointKey) ?? null;
+  }
+
+  /** What an input changes. The state advances at `keep`, so that a step whose commit fails never happened. */
+  step(input: AlarmInput): { effects: readonly AlarmEffect[]; keep(): void } {
+    const { state, effects } = stepAlarms(this.#plan, this.#state, input, this.#allocateId);
+    return {
+      effects,
+      keep: () => {
+        this.#state = state;
+      },
+    };
+  }
+
+  /**
+   * Takes note of a reading and gives the findings of its machine where a round of its points is complete: each has
+   * reported, or one reports for the second time.
+   */
+  noteReading(
+    pointKey: string,
+    reading: Reading,
+  ): { machineId: string; findings: readonly Finding[] } | null {
+    const entry = this.#plan.points.get(pointKey);
+    if (!entry) throw new RangeError(`no point ${pointKey} in this station`);
+    const { machine } = entry;
+    const round = this.#rounds.get(machine.id) ?? new Set<string>();
+    this.#rounds.set(machine.id, round);
+    let findings: readonly Finding[] | null = null;
+    if (round.has(pointKey)) {
+      findings = this.#evaluate(machine.id);
+      round.clear();
+    }
+    this.#latest.set(pointKey, reading);
+    round.add(pointKey);
+    if (round.size === machine.points.length) {
+      findings = this.#evaluate(machine.id);
+      round.clear();
+    }
+    return findings && { machineId: machine.id, findings };
+  }
+
+  #evaluate(machineId: string): readonly Finding[] {
+    return this.#plan.machines.has(machineId) ? [] : [];
+  }
+}

@@ -1,0 +1,162 @@
+/**
+ * Alarm inputs one after the other: step, commit, and only then does the new state count. While the database cannot
+ * be written the step is tried again with the same effects and the rest waits, within bounds.
+ */
+
+import type { AlarmEffect, AlarmInput } from '../alarm/effects.ts';
+import type { Commit, JournalEntry, MessageClass, OutboxMessage } from '../store/types.ts';
+import { journalEntryOf, numberOf } from './journal-entry.ts';
+import type { Judging } from './judging.ts';
+
+export interface JudgeHost {
+  /** Durable when it resolves. */
+  commit(commit: Commit): Promise<void>;
+  /** Full topic of one below `forebay/<site>/`. */
+  topic(name: string): string;
+  /** A message that empties a retained topic. */
+  emptying(name: MessageClass, topic: string): OutboxMessage;
+  /** Rows for the broker are in the outbox. */
+  committed(): void;
+  evidence(effect: Extract<AlarmEffect, { kind: 'evidence' }>): void;
+  commitFailed(error: unknown): void;
+  monotonicS(): number;
+}
+
+export type AskOutcome = Pick<Extract<AlarmEffect, { kind: 'answer' }>, 'ok'> & { error?: string };
+
+interface Waiting {
+  input: AlarmInput;
+  resolve(effects: readonly AlarmEffect[]): void;
+}
+
+/** Inputs that may wait while the database cannot be written: an hour of ten points at ten seconds. */
+const MAX_WAITING = 3600;
+const RETRY_MS = 1000;
+/** Rows that nothing hangs on (hours run, timers) are written this often at most: cards wear out. */
+const IDLE_ROWS_S = 60;
+
+export class LiveJudge {
+  /** Inputs given up because too many waited; an ask is refused, a reading is lost to the alarms. */
+  dropped = 0;
+  readonly #judging: Judging;
+  readonly #host: JudgeHost;
+  readonly #queue: Waiting[] = [];
+  readonly #idleRows = new Map<string, string | null>();
+  #idleSinceS: number | null = null;
+  #running: Promise<void> | null = null;
+  #stopped = false;
+
+  constructor(judging: Judging, host: JudgeHost) {
+    this.#judging = judging;
+    this.#host = host;
+  }
+
+  get waiting(): number {
+    return this.#queue.length;
+  }
+
+  /** Resolves with the effects once they are durable; with none where the input was given up. */
+  take(input: AlarmInput): Promise<readonly AlarmEffect[]> {
+    const last = this.#queue.at(-1);
+    if (input.kind === 'tick' && last?.input.kind === 'tick') {
+      last.input = { ...input, elapsedS: input.elapsedS + last.input.elapsedS };
+      return Promise.resolve([]);
+    }
+    return new Promise((resolve) => {
+      this.#queue.push({ input, resolve });
+      if (this.#queue.length > MAX_WAITING) {
+        this.dropped++;
+        this.#queue.shift()?.resolve([]);
+      }
+      this.#running ??= this.#run();
+    });
+  }
+
+  /** Commits what effects the restored state asks for. */
+  async restore(effects: readonly AlarmEffect[]): Promise<void> {
+    await this.#commit(effects);
+  }
+
+  /** Judges what waits and writes the idle rows; gives up where the database does not take them. */
+  async stop(): Promise<void> {
+    this.#stopped = true;
+    await this.#running;
+    if (this.#idleRows.size > 0)
+      await this.#host.commit({ alarmStates: this.#takeIdleRows() }).catch(() => undefined);
+  }
+
+  async #run(): Promise<void> {
+    for (let next = this.#queue.shift(); next; next = this.#queue.shift()) {
+      const { effects, keep } = this.#judging.step(next.input);
+      const durable = await this.#commit(effects);
+      if (durable) keep();
+      next.resolve(durable ? effects : []);
+      for (const effect of effects) if (effect.kind === 'evidence') this.#host.evidence(effect);
+    }
+    this.#running = null;
+  }
+
+  /** Until it is durable, or the agent stops. */
+  async #commit(effects: readonly AlarmEffect[]): Promise<boolean> {
+    const commit = this.#commitOf(effects);
+    if (commit === null) return true;
+    for (;;) {
+      try {
+        await this.#host.commit(commit);
+        this.#host.committed();
+        return true;
+      } catch (error) {
+        this.#host.commitFailed(error);
+        if (this.#stopped) return false;
+        await new Promise((resolve) => setTimeout(resolve, RETRY_MS));
+      }
+    }
+  }
+
+  /** null: nothing that cannot wait. */
+  #commitOf(effects: readonly AlarmEffect[]): Commit | null {
+    const journal: JournalEntry[] = [];
+    const outbox: OutboxMessage[] = [];
+    let urgent = false;
+    for (const effect of effects) {
+      switch (effect.kind) {
+        case 'row':
+          this.#idleRows.set(effect.key, effect.row && JSON.stringify(effect.row));
+          urgent ||= effect.urgent;
+          break;
+        case 'journal':
+          journal.push(journalEntryOf(effect.entry));
+          break;
+        case 'publish':
+          outbox.push({
+            n: numberOf(effect.payload.id),
+            class: effect.class,
+            topic: this.#host.topic(effect.topic),
+            payload: Buffer.from(JSON.stringify(effect.payload)),
+            qos: 1,
+            retain: true,
+          });
+          break;
+        case 'withdraw':
+          outbox.push(this.#host.emptying('alarm', this.#host.topic(effect.topic)));
+          break;
+      }
+    }
+    if (!urgent && journal.length === 0 && outbox.length === 0 && !this.#idleDue()) return null;
+    return { alarmStates: this.#takeIdleRows(), journal, outbox };
+  }
+
+  #idleDue(): boolean {
+    if (this.#idleRows.size === 0) return false;
+    const now = this.#host.monotonicS();
+    this.#idleSinceS ??= now;
+    return now - this.#idleSinceS >= IDLE_ROWS_S;
+  }
+
+  #takeIdleRows(): { key: string; json: string | null }[] {
+    const rows = [...this.#idleRows].map(([key, json]) => ({ key, json }));
+    this.#idleRows.clear();
+    this.#idleSinceS = null;
+    return rows;
+  }
+}

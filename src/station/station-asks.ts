@@ -1,0 +1,118 @@
+/** What the station answers to asks. Each handler does one thing or refuses; sizes are bounded here. */
+
+import type { AskInput } from '../alarm/effects.ts';
+import type { AlarmPlan } from '../alarm/plan.ts';
+import type { JournalEntry, Store, TrendPoint } from '../store/types.ts';
+import { AskRefused } from '../uplink/asks.ts';
+import type { MessageIds } from '../uplink/message-ids.ts';
+import { rounded } from '../uplink/payload.ts';
+import type { Uplink } from '../uplink/uplink.ts';
+import { journalLine, numberOf } from './journal-entry.ts';
+import type { LiveJudge } from './live-judge.ts';
+import type { ReadingPost } from './reading-post.ts';
+
+export interface AskSources {
+  judge: Pick<LiveJudge, 'take'>;
+  post: Pick<ReadingPost, 'latest'>;
+  store: Pick<Store, 'journal' | 'trend' | 'commit'>;
+  ids: MessageIds;
+  plan: AlarmPlan;
+  now(): string;
+}
+
+/** An answer crosses a thin link; more is asked for piece by piece. */
+const MAX_ANSWER_BYTES = 48_000;
+const MAX_JOURNAL = 200;
+const USUAL_TREND_POINTS = 100;
+
+export function answerAsks(uplink: Pick<Uplink, 'handle'>, sources: AskSources): void {
+  const operate = async (input: AskInput): Promise<Record<string, unknown>> => {
+    const effects = await sources.judge.take(input);
+    const answer = effects.find((effect) => effect.kind === 'answer');
+    if (!answer) throw new AskRefused('the alarms cannot be written at present; try again');
+    if (!answer.ok) throw new AskRefused(answer.error);
+    return {};
+  };
+  const t = () => sources.now();
+
+  uplink.handle('readings', () => ({ readings: fitting(sources.post.latest()) }));
+  uplink.handle('acknowledge', ({ alarm, raised, by }) =>
+    operate({ kind: 'acknowledge', alarm, by, t: t(), ...(raised === undefined ? {} : { raised }) }),
+  );
+  uplink.handle('shelve', ({ alarm, by, minutes }) =>
+    operate({ kind: 'shelve', alarm, by, minutes, t: t() }),
+  );
+  uplink.handle('unshelve', ({ alarm, by }) => operate({ kind: 'unshelve', alarm, by, t: t() }));
+  uplink.handle('reset', ({ alarm, by }) => operate({ kind: 'reset', alarm, by, t: t() }));
+  uplink.handle('test', ({ alarm, level }) => operate({ kind: 'test', alarm, level, t: t() }));
+  for (const kind of ['out-of-service', 'in-service'] as const) {
+    uplink.handle(kind, ({ alarm, point, machine, by, why }) =>
+      operate({ kind, target: alarm ?? point ?? machine ?? '', by, why, t: t() }),
+    );
+  }
+  uplink.handle('note', async ({ machine, by, text }) => {
+    if (!sources.plan.machines.has(machine)) throw new AskRefused(`there is no machine ${machine}`);
+    const n = sources.ids.take();
+    const json = JSON.stringify({ id: sources.ids.idOf(n), by, text });
+    await sources.store.commit({ journal: [{ n, kind: 'note', key: machine, t: t(), json }] });
+    return { noted: sources.ids.idOf(n) };
+  });
+  uplink.handle('journal', async ({ since }) => journalAnswer(await journalSince(sources, since)));
+  uplink.handle('trend', async ({ point, watch, from, to, points }) => {
+    if (!sources.plan.points.has(point)) throw new AskRefused(`there is no point ${point}`);
+    const [fromMs, toMs] = [Date.parse(from), Date.parse(to)];
+    if (!(fromMs < toMs)) throw new AskRefused('`from` must be before `to`');
+    const trend = await sources.store.trend({
+      point,
+      watch,
+      fromMs,
+      toMs,
+      points: points ?? USUAL_TREND_POINTS,
+    });
+    return { point, watch, trend: trend.map(trendLine) };
+  });
+}
+
+function trendLine({ wallMs, mean, min, max, count }: TrendPoint): Record<string, unknown> {
+  return {
+    t: new Date(wallMs).toISOString(),
+    mean: rounded(mean),
+    min: rounded(min),
+    max: rounded(max),
+    count,
+  };
+}
+
+/** Entries after an id or from a time on; without either, the newest. */
+function journalSince({ store, ids }: AskSources, since: string | undefined): Promise<JournalEntry[]> {
+  if (since === undefined) return store.journal({ limit: MAX_JOURNAL });
+  if (since.startsWith(`${ids.storeId}-`))
+    return store.journal({ afterN: numberOf(since), limit: MAX_JOURNAL });
+  const ms = Date.parse(since);
+  if (Number.isNaN(ms)) throw new AskRefused('`since` is neither a time nor an id of this station');
+  return store.journal({ sinceT: new Date(ms).toISOString(), limit: MAX_JOURNAL });
+}
+
+/** As many of the newest entries as fit, oldest first; `more` says that older ones were left out. */
+function journalAnswer(entries: readonly JournalEntry[]): Record<string, unknown> {
+  const lines: Record<string, unknown>[] = [];
+  let bytes = 0;
+  for (const entry of entries.toReversed()) {
+    const line = journalLine(entry);
+    bytes += JSON.stringify(line).length;
+    if (bytes > MAX_ANSWER_BYTES) break;
+    lines.unshift(line);
+  }
+  return { journal: lines, more: lines.length < entries.length || entries.length === MAX_JOURNAL };
+}
+
+/** Readings as they fit; points that do not are named, to be taken from their retained topics. */
+function fitting(readings: Record<string, Record<string, unknown>>): Record<string, unknown> {
+  const out: Record<string, unknown> = {};
+  let bytes = 0;
+  for (const [key, reading] of Object.entries(readings)) {
+    bytes += JSON.stringify(reading).length;
+    out[key] = bytes > MAX_ANSWER_BYTES ? 'too large for one answer: see the retained topic' : reading;
+  }
+  return out;
+}

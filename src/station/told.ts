@@ -1,0 +1,104 @@
+/**
+ * What other systems tell of a machine over MQTT: its speed, and whether it runs. A payload is a plain number or word,
+ * or JSON: `1480`, `{"rpm": 1480}`, `{"hz": 24.67}` for a speed; `1`, `on`, `true`, `{"running": true}` for running.
+ * What was told long ago is unknown again, and so is what cannot be read.
+ */
+
+/** A teller that repeats itself each minute may miss four times. */
+const FRESH_S = 300;
+const MAX_PAYLOAD_BYTES = 256;
+
+interface Told {
+  atS: number;
+  payload: string;
+}
+
+export class ToldValues {
+  readonly #topics: ReadonlySet<string>;
+  readonly #monotonicS: () => number;
+  readonly #told = new Map<string, Told>();
+  /** Payloads that could not be read as what they should be. */
+  unreadable = 0;
+
+  /** @param topics the only ones listened to. */
+  constructor(topics: Iterable<string>, monotonicS: () => number) {
+    this.#topics = new Set(topics);
+    this.#monotonicS = monotonicS;
+  }
+
+  get topics(): readonly string[] {
+    return [...this.#topics];
+  }
+
+  hear(topic: string, payload: string): void {
+    if (!this.#topics.has(topic)) return;
+    if (payload.length > MAX_PAYLOAD_BYTES) {
+      this.unreadable++;
+      this.#told.delete(topic);
+      return;
+    }
+    this.#told.set(topic, { atS: this.#monotonicS(), payload: payload.trim() });
+  }
+
+  /** Speed in Hz; null: not told, told too long ago, or not readable. */
+  shaftHz(topic: string): number | null {
+    return this.#read(topic, speedOf);
+  }
+
+  running(topic: string): boolean | null {
+    return this.#read(topic, runningOf);
+  }
+
+  #read<T>(topic: string, parse: (value: unknown) => T | null): T | null {
+    const told = this.#told.get(topic);
+    if (!told || this.#monotonicS() - told.atS > FRESH_S) return null;
+    const value = parse(parsed(told.payload));
+    if (value === null) this.unreadable++;
+    return value;
+  }
+}
+
+function parsed(text: string): unknown {
+  try {
+    return JSON.parse(text);
+  } catch {
+    return text;
+  }
+}
+
+function field(value: unknown, key: string): unknown {
+  return typeof value === 'object' && value !== null ? (value as Record<string, unknown>)[key] : undefined;
+}
+
+function positive(value: unknown): number | null {
+  return typeof value === 'number' && Number.isFinite(value) && value >= 0 ? value : null;
+}
+
+function speedOf(value: unknown): number | null {
+  const hz = positive(field(value, 'hz'));
+  if (hz !== null) return hz;
+  const rpm = positive(value) ?? positive(field(value, 'rpm'));
+  return rpm === null ? null : rpm / 60;
+}
+
+function runningOf(value: unknown): boolean | null {
+  const said = field(value, 'running') ?? value;
+  if (said === true || said === 1) return true;
+  if (said === false || said === 0) return false;
+  if (typeof said !== 'string') return null;
+  const word = said.toLowerCase();
+  if (['on', 'true', 'running', 'run'].includes(word)) return true;
+  return ['off', 'false', 'stopped', 'stop'].includes(word) ? false : null;
+}
+
+/** The topics that a station listens to beside its asks. */
+export function toldTopics(
+  machines: readonly {
+    shaft: { kind: string; topic?: string } | null;
+    running: { kind: string; topic?: string };
+  }[],
+): string[] {
+  return machines.flatMap(({ shaft, running }) =>
+    [shaft?.topic, running.topic].filter((topic) => topic !== undefined),
+  );
+}
