@@ -38,6 +38,10 @@ const delays: [string, Line['delayMs']][] = [
   ['up to 16 ms, all alike', (random) => 16 * random.uniform()],
   ['exponential delays of 3 ms', (random) => 3 * random.exponential()],
   ['stalls of 200 ms', (random) => random.exponential() + (random.uniform() < 0.01 ? 200 : 0)],
+  [
+    'a stretch of 3 s that is late throughout',
+    (random, t) => random.exponential() + (t > 15_000 && t < 18_000 ? 60 : 0),
+  ],
   ['a stall of 4 s', (random, t) => random.exponential() + (t > 6000 && t < 10_000 ? 10_000 - t : 0)],
 ];
 
