@@ -1,7 +1,7 @@
 /** What goes into a step of the alarm engine, and what comes out. */
 
 import type { Level } from '../config/station.ts';
-import type { Finding } from '../machine/findings.ts';
+import type { Finding } from '../machine/finding-evidence.ts';
 import type { Reading } from '../measure/reading.ts';
 import type { Baseline } from './baseline.ts';
 import type { AlarmPayload, FindingPayload, MachineStatePayload } from './payload.ts';

@@ -1,6 +1,6 @@
 /** Likely faults told only when they persist: one odd evaluation must not make a message. */
 
-import type { Finding } from '../machine/findings.ts';
+import type { Finding } from '../machine/finding-evidence.ts';
 import type { AlarmInput } from './effects.ts';
 import type { FindingsRow } from './state.ts';
 import type { StepWork } from './work.ts';

@@ -66,8 +66,9 @@ export function judge(rule: Rule, point: Point, reading: Reading, baseline: Base
 }
 
 /**
- * A multiple of the learned value; for velocities at least a quarter of B/C above it, so that a small figure may
- * double in peace, and at most what the table allows (ISO 10816-3 5.4.1, 5.4.2).
+ * A multiple of the learned value; for velocities at least a quarter of B/C above it (danger: half of B/C; common
+ * practice, no source), so that a small figure may double in peace, and at most what the table allows
+ * (ISO 10816-3 5.4.1, 5.4.2).
  *
  * Worked: group 2 rigid (B/C 2.8 mm/s), learned 0.3 mm/s, factor 2: 0.6 would do, but 0.3 + 0.7 = 1.0 mm/s it is.
  */
@@ -82,7 +83,8 @@ export function baselineLimit(
   if (!watch.startsWith('velocity.') || point.severity === null) return multiple;
   const table = severityLimits(point.severity);
   const highest = level === 'alert' ? table.alarmMaxMmS : table.tripMaxMmS;
-  return Math.min(Math.max(multiple, median + 0.25 * table.velocityMmS[1]), highest);
+  const leastRise = (level === 'alert' ? 0.25 : 0.5) * table.velocityMmS[1];
+  return Math.min(Math.max(multiple, median + leastRise), highest);
 }
 
 function judgeLimits(

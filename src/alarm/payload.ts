@@ -1,7 +1,7 @@
 /** The payloads of topics.md that this room makes: alarm, machine state, finding. Exactly those keys. */
 
 import type { Level } from '../config/station.ts';
-import type { Finding } from '../machine/findings.ts';
+import type { Finding } from '../machine/finding-evidence.ts';
 import type { Zone } from '../machine/severity.ts';
 import type { LifeState } from './life-cycle.ts';
 import type { AlarmRow } from './state.ts';

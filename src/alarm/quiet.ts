@@ -43,7 +43,9 @@ export function tell(work: StepWork): void {
   const kept: string[] = [];
   const waiting = work.waiting
     .map((key) => ({ key, alarm: work.plan.alarms.get(key)!, row: work.alarm(key) }))
-    .sort((a, b) => rank(a.row) - rank(b.row));
+    .sort(
+      (a, b) => rank(a.row) - rank(b.row) || compare(sinceOf(a.row), sinceOf(b.row)) || compare(a.key, b.key),
+    );
   for (const { key, alarm, row } of waiting) {
     if (signature(row) === row.told) continue;
     if (!publishAlarm(work, alarm, row)) kept.push(key);
@@ -51,6 +53,15 @@ export function tell(work: StepWork): void {
   const same = kept.length === work.waiting.length && kept.every((key, i) => key === work.waiting[i]);
   if (!same) work.waiting = work.waiting.filter((key) => kept.includes(key));
   for (const id of work.touched) publishState(work, id);
+}
+
+/** The label orders what waits, no more: after a restart as before it. */
+function sinceOf({ test, facts }: AlarmRow): string {
+  return test?.t ?? facts?.t ?? '';
+}
+
+function compare(a: string, b: string): number {
+  return a < b ? -1 : Number(a > b);
 }
 
 const DETAIL = 4;

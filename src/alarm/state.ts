@@ -4,7 +4,7 @@
  */
 
 import type { Level } from '../config/station.ts';
-import type { Finding } from '../machine/findings.ts';
+import type { Finding } from '../machine/finding-evidence.ts';
 import type { Zone } from '../machine/severity.ts';
 import { type ConditionState, NO_CONDITION } from './condition.ts';
 import { type LifeState, NORMAL } from './life-cycle.ts';
@@ -85,7 +85,7 @@ export interface EngineState {
   readonly points: Readonly<Record<string, PointRow>>;
   readonly machines: Readonly<Record<string, MachineRow>>;
   readonly quiet: QuietRow;
-  /** Alarms with something untold, oldest first. Derived from the rows at a restart. */
+  /** Alarms with something untold. Derived from the rows at a restart. */
   readonly waiting: readonly string[];
 }
 

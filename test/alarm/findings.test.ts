@@ -1,0 +1,70 @@
+import { expect, test } from 'vitest';
+import { machineEvidence } from '../../src/alarm/evidence.ts';
+import type { Finding } from '../../src/machine/finding-evidence.ts';
+import { findingsFor } from '../../src/machine/findings.ts';
+import type { Reading } from '../../src/measure/reading.ts';
+import { Bench, makeReading, onePoint, statesIn } from './support.ts';
+
+const unbalance: Finding = {
+  fault: 'unbalance',
+  likelihood: 'possible',
+  points: ['de-h'],
+  evidence: ['1x is 90 % of the overall velocity'],
+  check: 'have it balanced',
+};
+
+function publish(bench: Bench, findings: readonly Finding[]) {
+  const effects = bench.put({ kind: 'findings', machineId: 'pump-1', findings, t: bench.t });
+  return effects.flatMap((e) => (e.kind === 'publish' && e.class === 'finding' ? [e.payload] : []));
+}
+
+test('a finding is told when it shows in three of five evaluations, and gone when in none', () => {
+  const bench = new Bench(onePoint());
+  bench.read({ mmS: 1 });
+  expect([publish(bench, [unbalance]), publish(bench, []), publish(bench, [unbalance])]).toEqual([
+    [],
+    [],
+    [],
+  ]);
+  const [told] = publish(bench, [unbalance]);
+  expect(Object.keys(told!)).toEqual(['id', 't', 'findings']);
+  expect(told!.findings).toEqual([unbalance]);
+  expect(statesIn(bench.effects).at(-1)!.finding).toBe('unbalance');
+  for (let i = 0; i < 4; i++) expect(publish(bench, [])).toEqual([]);
+  expect(publish(bench, [])[0]!.findings).toEqual([]);
+  expect(statesIn(bench.effects).at(-1)!.finding).toBeNull();
+});
+
+test('flickering between possible and likely is one message', () => {
+  const bench = new Bench(onePoint());
+  const told = Array.from({ length: 40 }, (_, i) =>
+    publish(bench, [{ ...unbalance, likelihood: i % 2 === 0 ? 'likely' : 'possible' }]),
+  ).flat();
+  expect(told.map(({ findings }) => findings[0]!.likelihood)).toEqual(['possible', 'likely']);
+});
+
+function reading(mmS: number, first: number): Reading {
+  const made = makeReading({ mmS });
+  const orders = { 1: { mm_s: first, deg: null }, 2: { mm_s: 0.2, deg: null }, 3: { mm_s: 0.1, deg: null } };
+  return { ...made, orders, velocity: { ...made.velocity, low: 0.2, harmonics: 0.3 } };
+}
+
+test('from readings to a finding: zone C speaks, zone B does not, a standing alarm does', () => {
+  const bench = new Bench(onePoint());
+  const named = (one: Reading) =>
+    findingsFor(machineEvidence(bench.plan, 'pump-1', new Map([['pump-1/de-h', one]]), bench.state)).map(
+      (f) => f.fault,
+    );
+  expect(named(reading(5, 4.8))).toEqual(['unbalance']);
+  expect(named(reading(3.8, 3.7))).toEqual([]);
+  for (let i = 0; i < 4; i++) bench.read({ mmS: 5 });
+  expect(named(reading(3.8, 3.7))).toEqual(['unbalance']);
+  expect(named({ ...reading(5, 4.8), running: false })).toEqual([]);
+});
+
+test('an accused bearing comes through with its line', () => {
+  const bench = new Bench(onePoint());
+  const readings = new Map([['pump-1/de-h', makeReading({ mmS: 1, defect: 'outer' })]]);
+  const { points } = machineEvidence(bench.plan, 'pump-1', readings, bench.state);
+  expect(points[0]!.bearing).toMatchObject({ defect: 'outer', hz: 88, overFloorDb: 3 });
+});
