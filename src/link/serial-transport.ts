@@ -14,7 +14,7 @@ import { stat } from 'node:fs/promises';
 import type { OnReadOpts, SocketConstructorOpts } from 'node:net';
 import { ReadStream } from 'node:tty';
 import { promisify } from 'node:util';
-import { SerialPort } from 'serialport';
+import type { SerialPort } from 'serialport';
 import { listSerialPorts } from './list-ports.ts';
 import { codeOf, OpenError, type Transport, type TransportHandlers, textOf } from './transport.ts';
 
@@ -24,6 +24,16 @@ const BAUD_TOLERANCE = 0.02;
 
 const openDescriptor = promisify(open);
 const closeDescriptor = promisify(close);
+
+/** Loaded when first needed: a station without serial links runs where there is no binding for the processor. */
+async function loadBinding(): Promise<typeof SerialPort.binding> {
+  try {
+    return (await import('serialport')).SerialPort.binding;
+  } catch (error) {
+    const fix = 'Install the package again on this machine, or use a serial device server over TCP.';
+    throw new OpenError('unfit', `no serial ports on this machine: ${textOf(error)}`, fix, { cause: error });
+  }
+}
 
 export class SerialTransport implements Transport {
   readonly #path: string;
@@ -41,7 +51,8 @@ export class SerialTransport implements Transport {
   async open(handlers: TransportHandlers): Promise<void> {
     await this.#checkDevice();
     try {
-      this.#binding = await SerialPort.binding.open({
+      const binding = await loadBinding();
+      this.#binding = await binding.open({
         path: this.#path,
         baudRate: this.#baud,
         lock: true,

@@ -175,6 +175,7 @@ describe('a serial line', () => {
     await until('told', () => conditions.some(({ kind }) => kind === 'unplugged'), 2000);
     await until('refused', () => link.condition.kind === 'refused', 2000);
     expect(link.condition.why).toContain(`${path} is not there`);
+    expect(link.condition.why).toMatch(/\((present: \/dev\/|no serial device is present)/);
     sender.stop();
     // Processor time of this process, not the clock: a reader that spins takes most of it.
     const before = process.cpuUsage();
