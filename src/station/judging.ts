@@ -5,9 +5,11 @@
 
 import type { AlarmEffect, AlarmInput, AllocateId } from '../alarm/effects.ts';
 import { stepAlarms } from '../alarm/engine.ts';
+import { machineEvidence } from '../alarm/evidence.ts';
 import type { AlarmPlan } from '../alarm/plan.ts';
 import type { EngineState } from '../alarm/state.ts';
-import type { Finding } from '../machine/findings.ts';
+import type { Finding } from '../machine/finding-evidence.ts';
+import { findingsFor } from '../machine/findings.ts';
 import type { Reading } from '../measure/reading.ts';
 
 export class Judging {
@@ -76,6 +78,6 @@ export class Judging {
   }
 
   #evaluate(machineId: string): readonly Finding[] {
-    return this.#plan.machines.has(machineId) ? [] : [];
+    return findingsFor(machineEvidence(this.#plan, machineId, this.#latest, this.#state));
   }
 }
