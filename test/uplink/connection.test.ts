@@ -6,6 +6,7 @@ import { ConnectionLoop } from '../../src/uplink/connection-loop.ts';
 import { parseBrokerUrl } from '../../src/uplink/dial.ts';
 import { connack, startAedes, startAnswering } from '../support/broker.ts';
 import { Rig, remoteBroker, until } from '../support/broker-rig.ts';
+import { startWebSocketDoor } from '../support/broker-websocket.ts';
 import { haveMosquitto, Mosquitto } from '../support/mosquitto.ts';
 import { FaultyLink } from '../support/proxy.ts';
 
@@ -32,8 +33,7 @@ async function answering(answer: Parameters<typeof startAnswering>[0]) {
 }
 
 describe('the protocol version that is left open', () => {
-  it('is 5 where the broker speaks it', async () => {
-    if (!haveMosquitto) return expect(haveMosquitto).toBe(false);
+  it.runIf(haveMosquitto)('is 5 where the broker speaks it', async () => {
     const broker = await Mosquitto.start();
     cleanups.push(() => broker.stop());
     const rig = await started(broker.port);
@@ -111,6 +111,22 @@ describe('a connection', () => {
     const broker = await answering(() => flood);
     const rig = await started(broker.port);
     await until(() => rig.said(/larger than agreed/), 'the cut');
+  });
+
+  it('is carried by a WebSocket as well, and its bytes are counted', async () => {
+    const broker = await startAedes();
+    cleanups.push(() => broker.stop());
+    const door = await startWebSocketDoor(broker.port);
+    cleanups.push(() => door.stop());
+    const rig = await started(door.port, { url: `ws://127.0.0.1:${door.port}/mqtt` });
+    await rig.online();
+    await rig.alarm(1);
+    await rig.empty();
+    const books = Object.fromEntries(rig.uplink.status().bytesToday.map((line) => [line.class, line]));
+    expect(rig.uplink.status().protocol).toBe('3.1.1');
+    // The HTTP upgrade alone is over a hundred bytes each way.
+    expect(books.link!.sentBytes).toBeGreaterThan(150);
+    expect(books.link!.receivedBytes).toBeGreaterThan(150);
   });
 
   it('comes back after a time in which the link was refused', async () => {
