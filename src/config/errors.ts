@@ -21,10 +21,6 @@ export const errorCatalogue = {
   'file.unreadable': 'Check the path and that this user may read it.',
   'recording.malformed':
     'Export the recording again as PCM WAV, 16 to 32 bit, and check that it was copied whole.',
-  'link.device-missing':
-    'Check the cable and the path of the device; `ls /dev/serial/by-id` lists what is plugged in.',
-  'link.device-denied': 'Add the user of the agent to the group that owns the device, usually dialout.',
-  'link.port-busy': 'Stop the other program that has this port open.',
   'command.usage': 'See `forebay help`.',
   'store.locked': 'Stop the other agent, or give this one a `storage.directory` of its own.',
   'store.unwritable':

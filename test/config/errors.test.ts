@@ -1,4 +1,4 @@
-import { readFileSync } from 'node:fs';
+import { readdirSync, readFileSync } from 'node:fs';
 import { describe, expect, it } from 'vitest';
 import { errorCatalogue, ForebayError } from '../../src/config/errors.ts';
 
@@ -8,6 +8,15 @@ const documented = [...page.matchAll(/^\| `([a-z-]+\.[a-z-]+)` +\|/gm)].map((mat
 describe('the catalogue of errors', () => {
   it('has each code of the page, and the page each code, once', () => {
     expect(documented.toSorted()).toEqual(Object.keys(errorCatalogue).toSorted());
+  });
+
+  it('has no code that nothing reports', () => {
+    const folder = new URL('../../src/', import.meta.url);
+    const code = readdirSync(folder, { recursive: true, encoding: 'utf8' })
+      .filter((name) => name.endsWith('.ts') && name !== 'config/errors.ts')
+      .map((name) => readFileSync(new URL(name, folder), 'utf8'))
+      .join('\n');
+    expect(Object.keys(errorCatalogue).filter((key) => !code.includes(`'${key}'`))).toEqual([]);
   });
 
   it('gives an error its fix', () => {

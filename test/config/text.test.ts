@@ -94,4 +94,15 @@ describe('the text of a station file', () => {
       { seed: 20_260_302, numRuns: 300 },
     );
   });
+
+  it('never throws, whatever stands in the place of a value', () => {
+    const values = ['null', '[2, 1]', '{a: 1}', '[{}]'];
+    for (const match of goodText.matchAll(/: ([^,{}[\]\n]+)/g)) {
+      const at = match.index + 2;
+      for (const value of values) {
+        const text = goodText.slice(0, at) + value + goodText.slice(at + match[1]!.length);
+        expect(() => errorsOf(text), text).not.toThrow();
+      }
+    }
+  });
 });
