@@ -46,7 +46,6 @@ export class DemoBoard {
   /** By `machine/point.rule`; those of links as `agent/link.rule`. */
   readonly alarms = new Map<string, AlarmRow>();
   readonly findings = new Map<string, string>();
-  agentOnline = false;
   messages = 0;
   bytes = 0;
   #defectsHeard = new Map<string, string>();
@@ -69,11 +68,7 @@ export class DemoBoard {
     if (third === 'reading') return this.#reading(`${machine}/${second}`, body as ReadingHeard);
     if (second === 'alarm') return this.#alarm(`${machine}/${third}`, body as AlarmHeard, atS);
     if (second === 'finding') return this.#finding(machine, body as FindingHeard);
-    if (machine === 'agent' && second === '') {
-      const { state = '?' } = body as { state?: string };
-      this.agentOnline = state === 'online';
-      return [`agent ${state}`];
-    }
+    if (machine === 'agent' && second === '') return [`agent ${(body as { state?: string }).state ?? '?'}`];
     return [];
   }
 

@@ -8,7 +8,7 @@ import { SimulatedMachine } from '../../src/simulate/machine.ts';
 import { SimulatedNode } from '../../src/simulate/node.ts';
 import { openPty } from '../../src/simulate/pty.ts';
 import { Converter } from '../../src/simulate/sensor.ts';
-import { ptySink, socketSink } from '../../src/simulate/sinks.ts';
+import { bufferedSink, ptySink, socketSink } from '../../src/simulate/sinks.ts';
 
 function source() {
   return new Converter(
@@ -124,6 +124,35 @@ describe('a node on a pseudo-terminal', () => {
       await device.close();
       pty.close();
     }
+  });
+});
+
+describe('a node with memory before its line', () => {
+  const bytes = (from: number, n: number) => Uint8Array.from({ length: n }, (_, k) => from + k);
+
+  it('keeps what the line does not take, in order, and sends it first', () => {
+    const line: number[] = [];
+    let room = 0;
+    const sink = bufferedSink((frame) => {
+      const taken = Math.min(room, frame.length);
+      line.push(...frame.subarray(0, taken));
+      room -= taken;
+      return taken;
+    }, 20);
+    expect(sink(bytes(0, 8))).toBe(8);
+    const reused = bytes(8, 8);
+    expect(sink(reused)).toBe(8);
+    reused.fill(255);
+    room = 3;
+    expect(sink(bytes(16, 7))).toBe(7);
+    expect(line).toEqual([0, 1, 2]);
+    // 20 bytes wait: a frame more does not fit and goes as a whole.
+    expect(sink(bytes(90, 1))).toBe(0);
+    room = 22;
+    expect(sink(bytes(23, 4))).toBe(4);
+    room = 100;
+    expect(sink(bytes(27, 1))).toBe(1);
+    expect(line).toEqual(Array.from({ length: 28 }, (_, k) => k));
   });
 });
 
