@@ -48,7 +48,8 @@ export class DemoBoard {
   readonly findings = new Map<string, string>();
   messages = 0;
   bytes = 0;
-  #defectsHeard = new Map<string, string>();
+  readonly #defectsHeard = new Map<string, string>();
+  readonly #checksTold = new Set<string>();
   readonly #prefix: string;
 
   constructor(site: string) {
@@ -119,11 +120,16 @@ export class DemoBoard {
   #alarm(key: string, alarm: AlarmHeard, atS: number): string[] {
     const before = this.alarms.get(key);
     if (before === undefined && !raisedStates.has(alarm.state ?? '')) return [];
-    this.alarms.set(key, { ...alarm, atS });
+    // A change that ends it says that it is over; the reason to remember is why it was raised.
+    const reason = alarm.state === 'unacknowledged' ? alarm.reason : before?.reason;
+    this.alarms.set(key, { ...alarm, ...(reason === undefined ? {} : { reason }), atS });
     if (before?.state === alarm.state && before?.level === alarm.level) return [];
     if (alarm.state === 'normal') return [`alarm ${key} is back to normal`];
     const lines = [`ALARM ${key} ${alarm.level ?? ''}, ${alarm.state ?? '?'}: ${alarm.reason ?? ''}`];
-    if (before === undefined && alarm.check) lines.push(`      check: ${alarm.check}`);
+    if (alarm.check && !this.#checksTold.has(alarm.check)) {
+      this.#checksTold.add(alarm.check);
+      lines.push(`      check: ${alarm.check}`);
+    }
     return lines;
   }
 

@@ -1,6 +1,7 @@
 /** What the demo writes: a table that refreshes on a terminal, plain lines elsewhere. */
 
 import type { DemoBoard } from './demo-board.ts';
+import { soundMachine, worseningMachine } from './demo-station.ts';
 
 export interface Traffic {
   readonly seconds: number;
@@ -92,10 +93,36 @@ export class DemoView {
     this.#drawn = this.live ? lines.length : 0;
   }
 
+  /** What is drawn stays, and what follows goes below it. */
+  settle(): void {
+    this.#drawn = 0;
+  }
+
   #erase(): void {
     if (this.#drawn > 0) this.#screen.write(`\u001b[${this.#drawn}A\u001b[J`);
     this.#drawn = 0;
   }
+}
+
+/** A machine in a line: its figures at the end, and the alarms that it has. */
+function machineLine(board: DemoBoard, machine: string): string {
+  const readings = [...board.points]
+    .filter(([key]) => key.startsWith(`${machine}/`))
+    .map(([, row]) => row.reading);
+  const most = (values: (number | null | undefined)[]) => {
+    const numbers = values.filter((value) => typeof value === 'number');
+    return numbers.length > 0 ? Math.max(...numbers) : null;
+  };
+  const velocity = figure(most(readings.map((reading) => reading.velocity?.overall)), 2);
+  const zones = [
+    ...new Set(readings.map(({ zone }) => zone).filter((zone) => typeof zone === 'string')),
+  ].sort();
+  const overFloor = figure(most(readings.map((reading) => reading.envelope?.bpfo?.over_floor_db)), 1);
+  const alarms = board.alarmsOf(machine).length;
+  return (
+    `  ${machine}: at most ${velocity} mm/s, zone ${zones.at(-1) ?? nothing}; outer race line ${overFloor} dB over its ` +
+    `floor; ${alarms === 0 ? 'no alarm' : `${alarms} alarm${alarms > 1 ? 's' : ''}`}`
+  );
 }
 
 /** What was found, what it cost, where to go from here. */
@@ -107,7 +134,7 @@ export function summaryLines(
   const missing = board.missing();
   const raised = [...board.alarms].map(
     ([key, { state, level, reason, atS }]) =>
-      `  ${key}, ${level}, now ${state} (last change at ${Math.round(atS)} s): ${reason ?? ''}`,
+      `  ${key}, ${level}, now ${state} (changed at ${Math.round(atS)} s): ${reason ?? ''}`,
   );
   const findings = [...board.findings]
     .filter(([, text]) => text !== '')
@@ -115,7 +142,12 @@ export function summaryLines(
   return [
     '',
     'What was found',
-    ...(raised.length > 0 ? raised : ['  no alarm']),
+    machineLine(board, soundMachine),
+    machineLine(board, worseningMachine),
+    ...(missing.length === 0
+      ? ['  The velocity hardly moved: a bearing shows in the envelope long before.']
+      : []),
+    ...raised,
     ...(findings.length > 0 ? ['  likely faults:', ...findings.map((line) => `  ${line}`)] : []),
     '',
     'What it cost',

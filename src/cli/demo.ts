@@ -126,6 +126,7 @@ async function show(
       return 1;
     }
     view.show(board, traffic());
+    view.settle();
     const lost = {
       frames: nodes.reduce((sum, { counts }) => sum + counts.droppedFrames, 0),
       samples: nodes.reduce((sum, { counts }) => sum + counts.lostSamples, 0),

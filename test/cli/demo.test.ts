@@ -116,6 +116,22 @@ describe("the demo's board", () => {
     expect(alarmed.missing().length).toBe(1);
   });
 
+  it('remembers why an alarm was raised when it is over', () => {
+    const board = promised();
+    const over = JSON.stringify({
+      state: 'returned-unacknowledged',
+      level: 'alert',
+      reason: 'the condition is over',
+    });
+    board.accept(topic('pump-2/alarm/motor-de-h.bearing'), over, 1, 60);
+    expect(board.alarmsOf('pump-2')).toEqual([
+      [
+        'pump-2/motor-de-h.bearing',
+        { state: 'returned-unacknowledged', level: 'alert', reason: 'outer in 3 of 5', atS: 60 },
+      ],
+    ]);
+  });
+
   it('tells alarms and findings once, when they change', () => {
     const board = promised();
     const key = 'pump-2/alarm/motor-de-h.bearing';
@@ -177,16 +193,24 @@ describe("the demo's view", () => {
       view.show(promised(), traffic);
       view.tell(['an event']);
       view.show(promised(), traffic);
+      view.settle();
+      view.tell(['the end']);
     }
     expect(written.plain).not.toContain('\u001b');
     // The table's eight lines and one blank are taken back before the event is written.
     expect(written.live).toContain('\u001b[9A\u001b[Jan event\n');
+    // What was settled stays: the end is written below it.
+    expect(written.live.endsWith('\nthe end\n')).toBe(true);
     expect(Math.max(...written.live.split('\n').map((line) => line.length))).toBeLessThanOrEqual(60 + 8);
   });
 
   it('closes with what was found, what it cost, where to look next and the caution', () => {
     const text = summaryLines(promised(), traffic, { frames: 0, samples: 0 }).join('\n');
     expect(text).toMatch(/pump-2\/motor-de-h\.bearing, alert, now unacknowledged/);
+    expect(text).toMatch(
+      /pump-1: at most 1\.23 mm\/s, zone A; outer race line 2\.0 dB over its floor; no alarm/,
+    );
+    expect(text).toMatch(/pump-2: .*line 17\.2 dB over its floor; 1 alarm/);
     expect(text).toMatch(/4\.2 kB published/);
     expect(text).toMatch(/no trip may depend on it/);
     expect(text).toMatch(/The demo showed what it promises/);
