@@ -67,7 +67,7 @@ export interface ComplexBand {
  * @param options Rate, and what is cut at both ends.
  * @returns See `RecordTransform`.
  * @throws SignalRangeError if the record is not longer than what is cut.
- * @example 10 s at 40 960 Hz: 7 pieces of 65 536 samples.
+ * @example 10 s at 40 960 Hz: 15 pieces of 32 768 samples.
  */
 export function recordTransform(x: Float64Array, options: TransformOptions): RecordTransform {
   const { rateHz, cutS = 0.05 } = options;

@@ -1,10 +1,4 @@
-import { requireCount, SignalRangeError } from './range-error.ts';
-
-export interface Peak {
-  /** Position between the indices. */
-  readonly index: number;
-  readonly value: number;
-}
+import { requireCount } from './range-error.ts';
 
 /**
  * Local maxima: above the left neighbour and not below the right one, so a flat top counts once, at its left end.
@@ -25,31 +19,6 @@ export function localMaxima(
     if (values[i]! > values[i - 1]! && values[i]! >= values[i + 1]!) found.push(i);
   }
   return found;
-}
-
-/**
- * Top of the parabola through the logarithms of a maximum and its neighbours: exact for a Gaussian, within 0.02 of a bin
- * for a Hann line. For the amplitude of a line use `lineAmplitude`, which knows the window.
- *
- * @param values Positive around the maximum.
- * @param index A local maximum with a neighbour at both sides.
- * @returns Place and height; the maximum itself where a neighbour is not above 0.
- * @throws SignalRangeError if there is no neighbour at both sides.
- * @see Jacobsen and Kootsookos 2007 (from memory), fast interpolation of spectral peaks.
- * @example exp(−(i − 3.2)²) about i = 3 gives 3.2 and 1.
- */
-export function interpolatePeak(values: Float64Array, index: number): Peak {
-  if (!(index >= 1 && index < values.length - 1)) {
-    throw new SignalRangeError('index', index, `needs a neighbour at both sides: 1 to ${values.length - 2}`);
-  }
-  const [left, centre, right] = [values[index - 1]!, values[index]!, values[index + 1]!];
-  if (!(left > 0 && centre > 0 && right > 0)) return { index, value: centre };
-  const a = Math.log(left / centre);
-  const b = Math.log(right / centre);
-  const curvature = a + b;
-  if (!(curvature < 0)) return { index, value: centre };
-  const offset = Math.max(-0.5, Math.min(0.5, (a - b) / (2 * curvature)));
-  return { index: index + offset, value: centre * Math.exp(-((a - b) * offset) / 4) };
 }
 
 /**

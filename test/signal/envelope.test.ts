@@ -129,6 +129,13 @@ describe('squared envelope', () => {
     expect(line.amplitude).toBeCloseTo(0.8, 3);
   });
 
+  it('cuts 10 s at 40 960 Hz into 15 pieces of 32 768 samples, and a short record into one', () => {
+    const { pieces, size } = recordTransform(noise(10 * rateHz, 1), { rateHz });
+    expect([pieces.length, size]).toEqual([15, 32_768]);
+    const short = recordTransform(noise(9000, 1), { rateHz });
+    expect([short.pieces.length, short.size]).toEqual([1, 16_384]);
+  });
+
   it('states the band it used and where its first value stands', () => {
     const envelope = squaredEnvelope(noise(40_000, 1), {
       rateHz,

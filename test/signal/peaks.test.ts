@@ -1,6 +1,6 @@
 import fc from 'fast-check';
 import { expect, it } from 'vitest';
-import { interpolatePeak, localMaxima, median, runningMedian } from '../../src/signal/peaks.ts';
+import { localMaxima, median, runningMedian } from '../../src/signal/peaks.ts';
 import { SignalRangeError } from '../../src/signal/range-error.ts';
 import { noise } from './support.ts';
 
@@ -16,20 +16,6 @@ it('finds local maxima, a flat top once, the ends never', () => {
   const values = Float64Array.of(0, 1, 0, 1, 0, 1, 0);
   expect(localMaxima(values, { from: 2, to: 4 })).toEqual([3]);
   expect(localMaxima(new Float64Array(2))).toEqual([]);
-});
-
-it('interpolates a Gaussian exactly', () => {
-  const values = Float64Array.from({ length: 7 }, (_, i) => Math.exp(-((i - 3.2) ** 2)));
-  const peak = interpolatePeak(values, 3);
-  expect(peak.index).toBeCloseTo(3.2, 12);
-  expect(peak.value).toBeCloseTo(1, 12);
-});
-
-it('keeps the maximum where logarithms or curvature fail', () => {
-  expect(interpolatePeak(Float64Array.of(0, 2, 1), 1)).toEqual({ index: 1, value: 2 });
-  expect(interpolatePeak(Float64Array.of(2, 2, 2), 1)).toEqual({ index: 1, value: 2 });
-  expect(() => interpolatePeak(Float64Array.of(1, 2, 1), 0)).toThrow(SignalRangeError);
-  expect(() => interpolatePeak(Float64Array.of(1, 2, 1), 2)).toThrow(SignalRangeError);
 });
 
 it('slides a median as the definition does', () => {
