@@ -36,13 +36,15 @@ const HARMONICS = 12;
 /** A line this far over the floor counts nothing, or all (both of a line's height and of its certainty). */
 const NOTHING_DB = 8;
 const ALL_DB = 30;
+/** Unbalance shows as a first harmonic alone, far over all else: it counts once more up to this height. */
+const DOMINANT_DB = 60;
 /** A tooth meets lines within this many line spacings. */
 const TOOTH_LINES = 0.75;
 /** Scores in lines of full height at the first harmonic: the least, and what leaves nothing to wish for. */
 const LEAST_SCORE = 0.3;
 const FULL_SCORE = 1.5;
 /** How near the next best may come, and one that is a whole multiple or part of the best and meets some of its lines. */
-const NEXT_BEST_SHARE = 0.75;
+const NEXT_BEST_SHARE = 0.8;
 const RELATED_SHARE = 0.9;
 /** Even an idling motor slips by more than this (an unloaded one in the open recordings: 0.04 %). */
 const LEAST_SLIP = 0.0002;
@@ -88,8 +90,8 @@ export function findShaftSpeed(spectra: readonly SpeedLines[], range: SpeedRange
     ({ hz, score }) => score > best.score * (areRelated(hz, best.hz) ? RELATED_SHARE : NEXT_BEST_SHARE),
   );
   if (rival !== undefined) return unknown(`${best.hz.toFixed(2)} Hz and ${rival.hz.toFixed(2)} Hz compete`);
-  const share = (next?.score ?? 0) / best.score;
-  return { hz: best.hz, confidence: (1 - share) * Math.min(1, best.score / FULL_SCORE), reason: null };
+  const nextShare = (next?.score ?? 0) / best.score;
+  return { hz: best.hz, confidence: (1 - nextShare) * Math.min(1, best.score / FULL_SCORE), reason: null };
 }
 
 function unknown(reason: string): SpeedFinding {
@@ -104,6 +106,8 @@ function areRelated(a: number, b: number): boolean {
 interface Comb {
   readonly hz: Float64Array;
   readonly height: Float64Array;
+  /** What a line counts beyond its height as the first harmonic, from 0 to 1. */
+  readonly dominance: Float64Array;
   readonly reachHz: number;
   readonly topHz: number;
 }
@@ -116,12 +120,16 @@ function prepare({ lines, lineHz, fmaxHz }: SpeedLines, { highHz, mainsHz }: Spe
     .sort((a, b) => a.hz - b.hz);
   return {
     hz: Float64Array.from(usable, (line) => line.hz),
-    height: Float64Array.from(usable, (line) =>
-      Math.min(1, (line.overFloorDb - NOTHING_DB) / (ALL_DB - NOTHING_DB)),
-    ),
+    height: Float64Array.from(usable, (line) => share(line.overFloorDb, NOTHING_DB, ALL_DB)),
+    dominance: Float64Array.from(usable, (line) => share(line.overFloorDb, ALL_DB, DOMINANT_DB)),
     reachHz: TOOTH_LINES * lineHz,
     topHz: Math.min(fmaxHz, HARMONICS * highHz),
   };
+}
+
+/** How far a level has come from one to another, from 0 to 1. */
+function share(db: number, fromDb: number, toDb: number): number {
+  return Math.max(0, Math.min(1, (db - fromDb) / (toDb - fromDb)));
 }
 
 /** Local maxima of the combs' common score over the range and a little beyond, so that none is cut at its flank. */
@@ -154,7 +162,8 @@ function scoreOf(comb: Comb, hz: number): number {
     let best = 0;
     for (let j = at; j < comb.hz.length && comb.hz[j]! < k * hz + comb.reachHz; j++) {
       const distance = (comb.hz[j]! - k * hz) / comb.reachHz;
-      best = Math.max(best, comb.height[j]! * (1 - distance * distance));
+      const height = comb.height[j]! + (k === 1 ? comb.dominance[j]! : 0);
+      best = Math.max(best, height * (1 - distance * distance));
     }
     score += best / Math.sqrt(k);
   }

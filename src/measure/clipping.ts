@@ -22,15 +22,16 @@ export function clippedSamples(counts: Int32Array): number {
 function atRail(counts: Int32Array, sign: 1 | -1): number {
   let extreme = Number.NEGATIVE_INFINITY;
   let opposite = Number.POSITIVE_INFINITY;
-  for (const count of counts) {
-    if (sign * count > extreme) extreme = sign * count;
-    if (sign * count < opposite) opposite = sign * count;
+  for (let i = 0; i < counts.length; i++) {
+    const level = sign * counts[i]!;
+    if (level > extreme) extreme = level;
+    if (level < opposite) opposite = level;
   }
   const reach = Math.max(16, Math.round((extreme - opposite) / 64));
   const places: number[] = [];
   let near = 0;
-  for (const [i, count] of counts.entries()) {
-    const below = extreme - sign * count;
+  for (let i = 0; i < counts.length; i++) {
+    const below = extreme - sign * counts[i]!;
     if (below === 0) places.push(i);
     else if (below <= reach) near++;
   }

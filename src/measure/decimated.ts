@@ -46,16 +46,18 @@ export function decimateRecord(
   if (decimation.outputLength(acceleration.length) < LEAST_BLOCK) return null;
   const samples = decimate(decimation, acceleration);
   const decimatedHz = rateHz / factor;
+  // Too short for two blocks: then two shorter ones, half overlapped. One alone hardly hears the record's ends.
+  const fits = samples.length >= 1.5 * blockSamples;
   const spectrum = averagedSpectrum(samples, {
     rateHz: decimatedHz,
-    blockSamples: Math.min(blockSamples, samples.length),
+    blockSamples: fits ? blockSamples : Math.floor(samples.length / 1.5),
     window,
   });
   const seconds = (acceleration.length / rateHz).toFixed(2);
   let short: string | null = null;
-  if (samples.length < blockSamples) {
-    const lines = Math.floor((plan.spectrum.lines * samples.length) / blockSamples);
-    short = `record too short: ${seconds} s give ${lines} of ${plan.spectrum.lines} lines and no averaging`;
+  if (!fits) {
+    const lines = Math.floor(plan.spectrum.fmaxHz / spectrum.lineHz);
+    short = `record too short: ${seconds} s give ${lines} of ${plan.spectrum.lines} lines`;
   } else if (spectrum.averages < averages) {
     short = `record too short: ${seconds} s give ${spectrum.averages} of ${averages} averages`;
   }

@@ -102,7 +102,7 @@ const NO_SHAFT: ShaftFigures = { hz: null, source: null, confidence: null, tacho
 function accelerationG(record: SampleRecord): Float64Array {
   const { counts } = record;
   let sum = 0;
-  for (const count of counts) sum += count;
+  for (let i = 0; i < counts.length; i++) sum += counts[i]!;
   const mean = sum / counts.length;
   const scale = gPerCount(record);
   const acceleration = new Float64Array(counts.length);

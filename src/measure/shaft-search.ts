@@ -18,6 +18,10 @@ import { RATE_OVER_FMAX } from './plan-notes.ts';
 /** Above this the acceleration alone settles it. */
 const SETTLED = 0.5;
 const LEAST_LINE_DB = 8;
+/** Blocks hold this many turns, whatever lines the point is measured with: as fine for a slow shaft as for a fast one. */
+const BLOCK_TURNS = 80;
+/** A record that is too short for that gives two half-overlapped blocks; one alone has no floor to speak of. */
+const LEAST_BLOCKS = 1.5;
 /** Below this, drift of bias and leakage; no shaft that the tables know turns slower (120 r/min). */
 const LEAST_HZ = 1.5;
 /** An envelope shorter than this has no lines worth looking at. */
@@ -96,8 +100,8 @@ function envelopeLines(
 }
 
 function speedLines(samples: Float64Array, rateHz: number, fmaxHz: number, plan: PointPlan): SpeedLines {
-  // At least two averages, or a floor means little.
-  const blockSamples = Math.min(Math.round(rateHz / plan.spectrum.lineHz), Math.floor(samples.length / 1.5));
+  const wanted = Math.round((BLOCK_TURNS * rateHz) / rangeOf(plan).lowHz);
+  const blockSamples = Math.min(wanted, Math.floor(samples.length / LEAST_BLOCKS));
   const spectrum = averagedSpectrum(samples, { rateHz, blockSamples, window: 'hann' });
   return {
     lines: linesOverFloor(spectrum, [LEAST_HZ, fmaxHz], LEAST_LINE_DB),

@@ -56,6 +56,6 @@ function longestConstant(counts: Int32Array): number {
 
 function samplesAtLimit(counts: Int32Array, [low, high]: readonly [number, number]): number {
   let found = 0;
-  for (const count of counts) if (count <= low || count >= high) found++;
+  for (let i = 0; i < counts.length; i++) if (counts[i]! <= low || counts[i]! >= high) found++;
   return found;
 }

@@ -1,0 +1,161 @@
+import { describe, expect, it } from 'vitest';
+import { measureRecord } from '../../src/measure/measure.ts';
+import { type BenchOptions, gaussian, gOfVelocity, planOf, recordOf, type Tone } from './bench.ts';
+
+const RATE_HZ = 12_000;
+
+function read(options: BenchOptions, tones: readonly Tone[], fields = {}) {
+  const plan = planOf({ rateHz: RATE_HZ, ...options });
+  return measureRecord(
+    plan,
+    recordOf({ rateHz: RATE_HZ, samples: plan.recordSamples, tones, noiseG: 0.01, ...fields }),
+  );
+}
+
+const oneTimes: Tone = [24.631, gOfVelocity(3, 24.631)];
+
+describe('shaft speed of a reading', () => {
+  it('is found within the tolerance to better than 0.05 %, by a single line or by many', () => {
+    const single = read({}, [oneTimes]);
+    expect(single.shaft.source).toBe('spectrum');
+    expect(Math.abs(single.shaft.hz! / 24.631 - 1)).toBeLessThan(0.0005);
+    const many = Array.from({ length: 10 }, (_, i): Tone => [24.631 * (i + 1), 0.02]);
+    const rich = read({}, many);
+    expect(Math.abs(rich.shaft.hz! / 24.631 - 1)).toBeLessThan(0.0001);
+    expect(rich.shaft.confidence!).toBeGreaterThan(single.shaft.confidence!);
+    expect(rich.quality).toBe('good');
+  });
+
+  it('is found within a wide range', () => {
+    const reading = read({ machine: { shaft: { kind: 'range', rpmRange: [700, 1500] } } }, [oneTimes]);
+    expect(Math.abs(reading.shaft.hz! / 24.631 - 1)).toBeLessThan(0.0005);
+  });
+
+  it('is found in the envelope where the acceleration has no line of the shaft', () => {
+    // A resonance whose power the shaft modulates, as a loaded race does.
+    const depth = 0.8;
+    const carrier = 3170;
+    const tones: Tone[] = [
+      [310, gOfVelocity(1, 310)],
+      [carrier, 0.2],
+      [carrier - 24.631, (0.2 * depth) / 2],
+      [carrier + 24.631, (0.2 * depth) / 2],
+    ];
+    const reading = read({}, tones);
+    expect(reading.shaft.source).toBe('spectrum');
+    expect(Math.abs(reading.shaft.hz! / 24.631 - 1)).toBeLessThan(0.0005);
+  });
+
+  it('is null with the reason where two candidates compete', () => {
+    const reading = read({}, [
+      [24.2, 0.05],
+      [25.0, 0.05],
+    ]);
+    expect(reading.shaft).toEqual({ hz: null, source: null });
+    expect(reading.quality).toBe('uncertain');
+    expect(reading.why.join()).toMatch(/speed unknown: 2\d\.\d\d Hz and 2\d\.\d\d Hz compete/);
+    expect(reading.velocity['running-speed']).toBeNull();
+    expect(reading.velocity.overall).toBeGreaterThan(1);
+  });
+
+  it('is null with the reason where only noise is there', () => {
+    const reading = read({}, [], { noiseG: 0.5 });
+    expect(reading.running).toBe(true);
+    expect(reading.shaft.hz).toBeNull();
+    expect(reading.why).toEqual(['speed unknown: no line stands out where it could be']);
+  });
+
+  it('is not synchronous speed on mains, and may be on an inverter', () => {
+    const shaft = { kind: 'fixed', rpm: 1490, tolerancePct: 3 } as const;
+    const tones: Tone[] = [[25, gOfVelocity(3, 25)]];
+    const mains = read({ machine: { shaft, motor: { poles: 4, supply: 'mains' } } }, tones);
+    expect(mains.why.join()).toMatch(
+      /speed unknown: the line at 25.00 Hz is not below synchronous speed, 25 Hz/,
+    );
+    const inverter = read({ machine: { shaft, motor: { poles: 4, supply: 'inverter' } } }, tones);
+    expect(inverter.shaft.hz).toBeCloseTo(25, 2);
+    // A 60 Hz site has 30 Hz for four poles.
+    const site60 = read({ machine: { shaft, motor: { poles: 4, supply: 'mains' } }, mainsHz: 60 }, tones);
+    expect(site60.shaft.hz).toBeCloseTo(25, 2);
+  });
+
+  it('says so where the speed changes within the record', () => {
+    const plan = planOf({
+      rateHz: RATE_HZ,
+      machine: { shaft: { kind: 'fixed', rpm: 1480, tolerancePct: 5 } },
+    });
+    const random = gaussian(2);
+    const ramped = (rise: number) => {
+      const record = recordOf({ rateHz: RATE_HZ, samples: plan.recordSamples });
+      for (let i = 0; i < record.counts.length; i++) {
+        const t = i / RATE_HZ;
+        const turns = 24.4 * t + (rise * t * t) / 2;
+        let g = 0.005 * random();
+        for (let k = 1; k <= 3; k++) g += 0.1 * Math.cos(2 * Math.PI * k * turns);
+        record.counts[i] = Math.round(g * 4096);
+      }
+      return measureRecord(plan, record);
+    };
+    expect(ramped(0).quality).toBe('good');
+    const drifting = ramped(0.07);
+    expect(drifting.quality).toBe('uncertain');
+    expect(drifting.why.join()).toMatch(/speed (varies within the record|unknown)/);
+  });
+
+  it('is as configured where the tolerance is nought, as told, or not asked for', () => {
+    const fixed = read({ machine: { shaft: { kind: 'fixed', rpm: 1480, tolerancePct: 0 } } }, [oneTimes]);
+    expect(fixed.shaft).toEqual({ hz: 1480 / 60, source: 'configured' });
+    const mqtt = { machine: { shaft: { kind: 'mqtt', topic: 'plc/speed' } } } as const;
+    expect(read(mqtt, [oneTimes], { toldShaftHz: 24.6 }).shaft).toEqual({ hz: 24.6, source: 'mqtt' });
+    const untold = read(mqtt, [oneTimes]);
+    expect(untold.shaft.hz).toBeNull();
+    expect(untold.why).toEqual(['speed unknown: nothing was told']);
+    const other = { kind: 'tachometer', link: 'node-2', channel: 'tach', pulsesPerRev: 1 } as const;
+    const far = read({ machine: { shaft: other }, point: { ratio: 0.5 } }, [oneTimes], { toldShaftHz: 24.6 });
+    expect(far.shaft).toEqual({ hz: 12.3, source: 'tachometer' });
+    const none = read({ machine: { shaft: null } }, [oneTimes]);
+    expect(none).toMatchObject({ shaft: { hz: null, source: null }, why: [], quality: 'good', zone: 'B' });
+  });
+
+  it('is searched for at the speed of the point, behind a gear', () => {
+    const reading = read({ point: { ratio: 0.5 } }, [[12.3155, gOfVelocity(2, 12.3155)]]);
+    expect(Math.abs(reading.shaft.hz! / 12.3155 - 1)).toBeLessThan(0.0005);
+  });
+});
+
+describe('running and zones', () => {
+  it('runs above its threshold; at rest there is no zone and no speed to be missed', () => {
+    const rest = read({}, [[24.631, gOfVelocity(0.3, 24.631)]], { noiseG: 0.001 });
+    expect(rest).toMatchObject({ running: false, zone: null, quality: 'good', why: [] });
+    expect(rest.velocity.overall).toBeCloseTo(0.3, 1);
+    expect(rest.shaft.hz).toBeNull();
+    expect(read({}, [oneTimes])).toMatchObject({ running: true, zone: 'B' });
+  });
+
+  it('goes by what is told, and has no zone where nothing is', () => {
+    const told = { machine: { running: { kind: 'mqtt', topic: 'plc/run' } } } as const;
+    expect(read(told, [oneTimes], { toldRunning: true })).toMatchObject({ running: true, zone: 'B' });
+    expect(read(told, [oneTimes], { toldRunning: false })).toMatchObject({ running: false, zone: null });
+    expect(read(told, [oneTimes])).toMatchObject({ running: null, zone: null });
+  });
+
+  it('has zones where the table applies only', () => {
+    expect(read({ point: { at: 'foot' } }, [oneTimes]).zone).toBeNull();
+    expect(read({ point: { direction: 'axial' } }, [oneTimes]).zone).toBeNull();
+    expect(read({ point: { direction: 'axial', thrust: true } }, [oneTimes]).zone).toBe('B');
+    expect(read({ point: { severity: null } }, [oneTimes]).zone).toBeNull();
+    const slow = { machine: { shaft: { kind: 'fixed', rpm: 300, tolerancePct: 3 } } } as const;
+    expect(read(slow, [[5, gOfVelocity(3, 5)]])).toMatchObject({ running: true, zone: null });
+  });
+
+  it('lets displacement decide at low speed, by ISO 20816-3', () => {
+    const severity = { table: 'iso-20816-3', group: 2, support: 'rigid' } as const;
+    const shaft = { kind: 'fixed', rpm: 300, tolerancePct: 3 } as const;
+    // 1.3 mm/s is zone A by velocity; at 5 Hz it is 41 µm, zone B by displacement.
+    const reading = read({ point: { severity }, machine: { shaft } }, [[5, gOfVelocity(1.3, 5)]], {
+      noiseG: 0.001,
+    });
+    expect(reading.displacement.rms).toBeCloseTo(1300 / (2 * Math.PI * 5), 0);
+    expect(reading.zone).toBe('B');
+  });
+});
