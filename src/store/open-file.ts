@@ -113,7 +113,7 @@ function moveAside(directory: string): string {
   return target;
 }
 
-export function sqliteCode(error: unknown): string {
+function sqliteCode(error: unknown): string {
   const code = (error as { code?: unknown } | null)?.code;
   return typeof code === 'string' ? code : '';
 }

@@ -48,3 +48,15 @@ export function outboxMessage(
 export function emptyingMessage(ids: MessageIds, name: MessageClass, topic: string): OutboxMessage {
   return { n: ids.take(), class: name, topic, payload: Buffer.alloc(0), qos: 1, retain: true };
 }
+
+/** A message whose payload holds an id that was taken before, as those of alarms do. */
+export function identifiedMessage(
+  name: MessageClass,
+  topic: string,
+  payload: Readonly<{ id: string }>,
+): OutboxMessage {
+  const { id, ...body } = payload;
+  const n = Number(/-(\d+)$/.exec(id)?.[1]);
+  if (!Number.isSafeInteger(n)) throw new Error(`${id} is no id of a message`);
+  return { n, class: name, topic, payload: encode(id, body), qos: 1, retain: name !== 'answer' };
+}

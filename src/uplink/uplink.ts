@@ -155,6 +155,7 @@ export class Uplink {
   /** Throws where the embedded broker cannot open its port; a broker elsewhere is waited for. */
   async start(): Promise<void> {
     const { broker, commandTopics } = this.#settings;
+    this.#ledger.restore(await this.#host.store.budget(this.#ledger.day));
     if (broker.kind === 'embedded') {
       this.#embedded = await EmbeddedBroker.open({
         port: broker.port,
@@ -163,7 +164,6 @@ export class Uplink {
         writable: (topic) => this.topics.verbOf(topic) !== null || commandTopics.includes(topic),
       });
     }
-    this.#ledger.restore(await this.#host.store.budget(this.#ledger.day));
     this.#booking = setInterval(() => void this.#book(), this.#timing.bookEveryMs);
     this.#loop.start();
   }

@@ -10,7 +10,7 @@ import { Uplink, type UplinkSettings, type UplinkTiming } from '../../src/uplink
 import { sleep } from './proxy.ts';
 import { roomyLimits } from './store.ts';
 
-export const fastTiming: UplinkTiming = {
+const fastTiming: UplinkTiming = {
   firstPauseMs: 20,
   longestPauseMs: 200,
   steadyMs: 1000,
@@ -121,7 +121,7 @@ export class Rig {
   }
 }
 
-export function alarmBody(k: number): Record<string, unknown> {
+function alarmBody(k: number): Record<string, unknown> {
   return {
     state: 'unacknowledged',
     level: 'danger',

@@ -22,7 +22,7 @@ export async function freePort(): Promise<number> {
   return address.port;
 }
 
-export async function answers(port: number): Promise<boolean> {
+async function answers(port: number): Promise<boolean> {
   const socket = connect(port, '127.0.0.1');
   try {
     await once(socket, 'connect');

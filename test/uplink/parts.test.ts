@@ -263,6 +263,7 @@ describe('the outbox drainer', () => {
     expect(sent.map(({ topic }) => topic)).toEqual(['t/0', 't/1', 't/2']);
     sent[0]!.settle();
     await until(() => sent.length === 4, 'the next');
+    expect(sent[3]!.topic).toBe('t/3');
     const second = make();
     await second.store.commit({
       outbox: Array.from({ length: 40 }, (_, i) => message(i + 1, { topic: `t/${i % 30}` })),

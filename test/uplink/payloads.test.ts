@@ -1,10 +1,13 @@
 import { readFileSync } from 'node:fs';
 import { describe, expect, it } from 'vitest';
 import type { Reading } from '../../src/measure/reading.ts';
+import { MemoryStore } from '../../src/store/memory-store.ts';
+import { uplinkHealth } from '../../src/uplink/health.ts';
 import { MessageIds } from '../../src/uplink/message-ids.ts';
 import {
   emptyingMessage,
   encode,
+  identifiedMessage,
   outboxMessage,
   readingBody,
   rounded,
@@ -12,7 +15,9 @@ import {
 } from '../../src/uplink/payload.ts';
 import { askSchemas, payloadJsonSchema, payloadSchemas } from '../../src/uplink/payload-schemas.ts';
 import { topicsOf, topicTrouble } from '../../src/uplink/topics.ts';
+import type { UplinkStatus } from '../../src/uplink/uplink.ts';
 import { contractReading, readingOf } from '../support/readings.ts';
+import { message, roomyLimits } from '../support/store.ts';
 
 describe('rounding', () => {
   // Four significant digits: the rule of the topics; 110.36 mm/s is 10 Hz at 1 g peak.
@@ -122,6 +127,43 @@ describe('a message', () => {
     expect([emptying.n, emptying.retain, emptying.payload.byteLength]).toEqual([9, true, 0]);
     expect(ids.takeBlock(64)).toBe(10);
     expect(ids.nextN).toBe(74);
+  });
+});
+
+describe('a message whose id was taken before', () => {
+  it('has the number of its id, and the id in front', () => {
+    const made = identifiedMessage('alarm', 't', { id: 'k3f9ab-41', ...{ state: 'normal' } });
+    expect(made.n).toBe(41);
+    expect(Buffer.from(made.payload).toString()).toBe('{"id":"k3f9ab-41","state":"normal"}');
+    expect(() => identifiedMessage('alarm', 't', { id: 'k3f9ab' })).toThrow('is no id');
+  });
+});
+
+describe('the health sections', () => {
+  it('validate, with something in each of them', () => {
+    const store = new MemoryStore(roomyLimits, () => 12.3456);
+    store.commit({ outbox: [message(1), message(2, { class: 'reading' })] });
+    store.reject(2, 'too large', true);
+    const status: UplinkStatus = {
+      connected: true,
+      protocol: '5',
+      connects: 2,
+      inFlight: 1,
+      asks: { done: 1, refused: 0, ignored: 3 },
+      bytesToday: [{ day: 1, class: 'link', sentBytes: 500, receivedBytes: 300 }],
+      leftTodayBytes: 1_999_200,
+    };
+    const sections = uplinkHealth(status, store.counters());
+    const health = { id: 'k3f9ab-1', t: '2026-03-02T10:15:30.000Z', links: {}, ...sections };
+    expect(payloadSchemas.health.safeParse(health).error).toBeUndefined();
+    expect(sections.outbox).toMatchObject({
+      rows: 1,
+      set_aside: { rows: 1, latest: { reason: 'too large' } },
+    });
+    expect(sections.uplink).toMatchObject({
+      bytes_today: { link: { sent: 500, received: 300 } },
+      left_today: 1_999_200,
+    });
   });
 });
 
