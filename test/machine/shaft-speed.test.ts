@@ -145,3 +145,18 @@ describe('shaft speed from lines', () => {
     expect(() => findShaftSpeed([], { ...range, lowHz: 30 })).toThrow(RangeError);
   });
 });
+
+describe('a dominant first harmonic', () => {
+  it('is not put in doubt by a lone line that another speed would have as a higher harmonic', () => {
+    // 1x of an unbalanced shaft, 65 dB over the floor; an outer race at 3.585x, whose second line is 7 × 25.6 Hz.
+    const lines = [
+      { hz: 25, overFloorDb: 65 },
+      { hz: 89.63, overFloorDb: 35 },
+      { hz: 179.26, overFloorDb: 34 },
+    ];
+    const range = { lowHz: 24.25, highHz: 25.75, synchronousHz: null, mainsHz: 50 };
+    const found = findShaftSpeed([{ lines, lineHz: 0.3, fmaxHz: 1000 }], range);
+    expect(found.hz).toBeCloseTo(25, 6);
+    expect(found.hz === null ? 0 : found.confidence).toBeGreaterThan(0.7);
+  });
+});
