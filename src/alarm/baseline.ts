@@ -10,7 +10,7 @@ export interface LearnedFigure {
   readonly readings: number;
 }
 
-export interface BaselineRange {
+interface BaselineRange {
   /** Shaft speeds in Hz that it was learned at; null: the speed is unknown, and so is whether it matters. */
   readonly hz: readonly [number, number] | null;
   /** By watch path. */

@@ -10,7 +10,7 @@ import type { Level } from '../config/station.ts';
 
 /** In order of rank. */
 const WITHHOLDINGS = ['out-of-service', 'shelved', 'suppressed-by-design'] as const;
-export type Withholding = (typeof WITHHOLDINGS)[number];
+type Withholding = (typeof WITHHOLDINGS)[number];
 
 export type LifeState =
   | { readonly state: 'normal' }

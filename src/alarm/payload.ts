@@ -6,7 +6,7 @@ import type { Zone } from '../machine/severity.ts';
 import type { LifeState } from './life-cycle.ts';
 import type { AlarmRow } from './state.ts';
 
-export type AlarmStateName = LifeState['state'];
+type AlarmStateName = LifeState['state'];
 
 export interface AlarmPayload {
   id: string;

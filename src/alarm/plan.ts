@@ -23,7 +23,7 @@ export interface PointAlarm extends Common {
 }
 
 /** The sensor of a point. */
-export interface SensorAlarm extends Common {
+interface SensorAlarm extends Common {
   readonly kind: 'sensor';
   readonly machine: Machine;
   readonly point: Point;

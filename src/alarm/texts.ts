@@ -25,7 +25,7 @@ const FIGURE_WORDS: Readonly<Record<string, string>> = {
   'orders.3.mm_s': 'velocity at 3× shaft speed',
 };
 
-export function figureWords(watch: string): string {
+function figureWords(watch: string): string {
   return FIGURE_WORDS[watch] ?? watch.replaceAll('.', ' ');
 }
 

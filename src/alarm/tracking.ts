@@ -14,7 +14,7 @@ const COASTING = 0.9;
 const RANGE_SLACK = 0.05;
 
 /** A reading has figures to judge by. */
-export function isValid(reading: Reading): boolean {
+function isValid(reading: Reading): boolean {
   return reading.quality !== 'bad' && reading.velocity.overall !== null;
 }
 
@@ -38,7 +38,9 @@ export function trackPoint(
   const shaftHz = running === true ? reading.shaft.hz : null;
   const coasting = shaftHz !== null && from.shaftHz !== null && shaftHz < COASTING * from.shaftHz;
   const counts = running === true && startedS === null && !coasting && withinRange(machine, point, shaftHz);
-  const uncountedS = counts ? 0 : Math.min(from.uncountedS + (elapsedS ?? 0), SUPPRESS_AFTER_S);
+  // A reading that tells nothing is a fault, not a design.
+  const byDesignS = running === null ? 0 : (elapsedS ?? 0);
+  const uncountedS = counts ? 0 : Math.min(from.uncountedS + byDesignS, SUPPRESS_AFTER_S);
   const valid = isValid(reading);
   const row: PointRow = {
     ...from,

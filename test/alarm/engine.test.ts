@@ -242,6 +242,14 @@ describe('sensors and links', () => {
     expect(bench.lifeOf('pump-1/de-h.sensor')).toBe('returned-unacknowledged');
   });
 
+  test('hours without a figure are a fault, not suppression by design', () => {
+    const bench = new Bench(onePoint());
+    bench.read({ mmS: 2 });
+    for (let i = 0; i < 800; i++) bench.read({ mmS: null, why: ['flat line: the counts never change'] });
+    expect(bench.lifeOf('pump-1/de-h.zone')).toBe('normal');
+    expect(bench.lifeOf('pump-1/de-h.sensor')).toBe('unacknowledged');
+  });
+
   test('unknown outranks alert', () => {
     const bench = new Bench(onePoint());
     for (let i = 0; i < 4; i++) bench.read({ mmS: 5 });
@@ -298,6 +306,40 @@ describe('sensors and links', () => {
       );
     }
     expect(alarmsIn(bench.effects)).toEqual([]);
+  });
+});
+
+describe('links and gateway by the clock of the station', () => {
+  test('a link that flaps is announced once; it returns when it has been well for half a minute', () => {
+    const bench = new Bench(onePoint());
+    const link = (conditions: ('silent' | 'refused')[]) =>
+      bench.put({ kind: 'link', link: 'node-1', conditions, detail: null, t: bench.t });
+    for (let i = 0; i < 20; i++) {
+      link(i % 2 === 0 ? ['silent'] : []);
+      bench.tick(10);
+    }
+    expect(brief(alarmsIn(bench.effects))).toEqual(['unacknowledged alert']);
+    expect(brief(alarmsIn(bench.tick(10)))).toEqual([]);
+    expect(brief(alarmsIn(bench.tick(10)))).toEqual(['returned-unacknowledged alert']);
+  });
+
+  test('a condition of the gateway is an alarm with its detail', () => {
+    const bench = new Bench(onePoint());
+    const put = (holds: boolean) =>
+      bench.put({ kind: 'gateway', condition: 'database', holds, detail: 'moved to state/old', t: bench.t });
+    const [alarm] = alarmsIn(put(true), 'agent/alarm/gateway.database');
+    expect(alarm).toMatchObject({ state: 'unacknowledged', level: 'alert' });
+    expect(alarm!.reason).toContain('(moved to state/old)');
+    put(false);
+    for (let i = 0; i < 3; i++) bench.tick(10);
+    expect(bench.lifeOf('agent/gateway.database')).toBe('returned-unacknowledged');
+  });
+
+  test('a link that the station does not have is refused', () => {
+    const bench = new Bench(onePoint());
+    const put = () =>
+      bench.put({ kind: 'link', link: 'node-9', conditions: ['silent'], detail: null, t: bench.t });
+    expect(put).toThrow(/no link node-9/);
   });
 });
 

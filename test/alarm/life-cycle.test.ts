@@ -134,10 +134,11 @@ describe('latched', () => {
     expect(run(names).state).toBe(state);
   });
   test('keeps its worst level', () => {
-    expect(run(['danger', 'alert'])).toMatchObject({
-      state: 'unacknowledged',
-      level: 'danger',
-      condition: 'alert',
+    const step = stepLife(run(['danger', 'acknowledge']), inputs.alert!, true);
+    expect(step).toEqual({
+      state: { state: 'acknowledged', level: 'danger', condition: 'alert' },
+      changed: false,
+      announced: false,
     });
   });
 });
