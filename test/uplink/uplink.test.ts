@@ -347,6 +347,29 @@ describe.runIf(haveMosquitto)('a real broker that fails', () => {
     expect((await rig.store.counters()).setAside.rows).toBe(1);
   });
 
+  it('has a backlog at a slow link: a fresh alarm overtakes all that is not on the wire yet', async () => {
+    const broker = later(await Mosquitto.start(), (made) => made.stop());
+    const proxy = later(await FaultyLink.start(broker.port), (made) => made.stop());
+    proxy.bytesPerS = 40_000;
+    const room = await join(broker.port);
+    const rig = await agentAt(proxy.port, 5);
+    const readings: string[] = [];
+    for (let k = 0; k < 120; k++) {
+      const topic = rig.uplink.topics.reading(`pump-1/p${k % 40}`);
+      readings.push(await rig.send('reading', topic, { text: 'x'.repeat(900) }));
+    }
+    await rig.uplink.start();
+    await room.hears(readings.slice(0, 10));
+    const before = room.ids().length;
+    await rig.alarm(1);
+    await room.hears([...rig.alarms, ...readings]);
+    // At most sixteen are on the wire; as many again may have come in while the alarm was written.
+    const place = room.ids().indexOf(rig.alarms[0]!);
+    expect(place).toBeLessThanOrEqual(before + 32);
+    expect(place).toBeLessThan(80);
+    await rig.empty();
+  });
+
   it('keeps the byte budget for all but alarms, and what is left is told', async () => {
     const broker = later(await Mosquitto.start(), (made) => made.stop());
     const room = await join(broker.port);
