@@ -3,7 +3,7 @@
  * have, and the speed whose comb meets most is taken, unless another does nearly as well.
  */
 
-export interface SpeedLine {
+interface SpeedLine {
   readonly hz: number;
   /** 20·log10 of its amplitude over the floor about it. */
   readonly overFloorDb: number;

@@ -25,12 +25,20 @@ export class PlanNotes {
 
 /** Notes bands that lie out of reach or are too narrow, and frequencies closer than the lines can tell apart. */
 export function noteFrequencies(plan: Omit<PointPlan, 'warnings' | 'caveats'>, notes: PlanNotes): void {
+  noteShaft(plan, notes);
   noteBands(plan, notes);
   noteMains(plan, notes);
   noteBearings(plan, notes);
 }
 
 type Frequency = readonly [name: string, hz: number];
+
+function noteShaft({ machine, point }: Omit<PointPlan, 'warnings' | 'caveats'>, notes: PlanNotes): void {
+  if (machine.shaft !== null) return;
+  const orders = point.measure.bands.filter(({ range: band }) => 'orders' in band).map(({ id }) => id);
+  const without = [...orders.map((id) => `band ${id}`), ...point.bearings.map(({ id }) => `bearing ${id}`)];
+  if (without.length > 0) notes.warn(`no shaft speed is configured: nothing for ${without.join(', ')}`);
+}
 
 function noteBands(
   { point, shaft, spectrum }: Omit<PointPlan, 'warnings' | 'caveats'>,

@@ -30,7 +30,7 @@ export class PlanError extends Error {
 }
 
 /** Averaged spectrum of the decimated acceleration. */
-export interface SpectrumPlan {
+interface SpectrumPlan {
   /** The decimation factor, and the rate after it. */
   readonly factor: number;
   readonly rateHz: number;
@@ -56,7 +56,7 @@ export interface PlannedBearing {
 }
 
 /** Speed of the shaft at the point, as far as the settings tell. */
-export interface PlannedShaft {
+interface PlannedShaft {
   readonly lowHz: number;
   readonly highHz: number;
   readonly nominalHz: number | null;

@@ -7,9 +7,9 @@
 
 import type { Zone } from '../machine/severity.ts';
 
-export type Quality = 'good' | 'uncertain' | 'bad';
+type Quality = 'good' | 'uncertain' | 'bad';
 export type Defect = 'outer' | 'inner' | 'rolling-element' | 'cage' | 'cage-rate';
-export type RateSource = 'nominal' | 'measured' | 'given';
+type RateSource = 'nominal' | 'measured' | 'given';
 export type ShaftSpeedSource = 'spectrum' | 'tachometer' | 'mqtt' | 'configured';
 
 /** The sample rate that a record is measured with, and how sure it is. */

@@ -6,7 +6,7 @@ import type { SampleRecord } from '../../src/measure/record.ts';
 
 /** 2⁻¹² g, as the sensor link's test vectors have it. */
 export const G_PER_COUNT = 2 ** -12;
-export const GRAVITY = 9.80665;
+const GRAVITY = 9.80665;
 
 export const usual: MeasureSettings = {
   everyS: 10,
@@ -27,7 +27,7 @@ export interface BenchOptions {
   measure?: Partial<MeasureSettings>;
 }
 
-export function pointOf(options: BenchOptions): Point {
+function pointOf(options: BenchOptions): Point {
   return {
     id: 'motor-de-h',
     machineId: 'pump-1',

@@ -160,6 +160,13 @@ describe('what settings ask for and cannot have', () => {
     expect(text).toMatch(/bearing d: neither geometry nor multiples nor elements are given/);
   });
 
+  it('names what stays null without a shaft speed', () => {
+    expect(planOf({ machine: { shaft: null } }).warnings).toContainEqual(
+      'no shaft speed is configured: nothing for band running-speed, band harmonics',
+    );
+    expect(planOf().warnings).toEqual([]);
+  });
+
   it('names bands out of reach or narrower than the lines', () => {
     const bands = [
       { id: 'high', range: { hz: [900, 1200] } },
