@@ -10,7 +10,7 @@ export interface KurtogramOptions {
   readonly maxLevel: number;
 }
 
-export interface KurtogramBand {
+interface KurtogramBand {
   /** 0, 1, 1.6, 2, 2.6 … */
   readonly level: number;
   readonly bandHz: [number, number];
