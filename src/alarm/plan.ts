@@ -3,7 +3,7 @@
 import type { Machine, Point, Rule, Station } from '../config/station.ts';
 import type { Timing } from './condition.ts';
 import { ruleApplies } from './limits.ts';
-import { GAPS, GATEWAY_CONDITIONS, LINK_CONDITIONS, LINK_TIMING, PERSISTENT } from './sensor.ts';
+import { GAPS, GATEWAY_CONDITIONS, LINK_CONDITIONS, LINK_TIMING, LOST_TIMING, PERSISTENT } from './sensor.ts';
 
 interface Common {
   /** `pump-1/motor-de-h.zone`: how asks name it. */
@@ -125,7 +125,9 @@ function groupAlarm(machine: Machine, rule: Rule): GroupAlarm {
 }
 
 function agentAlarm(source: string, condition: string): AgentAlarm {
-  const timing = condition === GAPS ? { ...LINK_TIMING, readings: PERSISTENT } : LINK_TIMING;
+  const lost = condition === 'silent' || condition === 'refused';
+  const timing =
+    condition === GAPS ? { ...LINK_TIMING, readings: PERSISTENT } : lost ? LOST_TIMING : LINK_TIMING;
   return {
     kind: 'agent',
     ...namesOf('agent', `${source}.${condition}`),

@@ -36,3 +36,5 @@ export type GatewayCondition = (typeof GATEWAY_CONDITIONS)[number];
 
 /** Links are watched with patience of their own; this only keeps a flapping one from announcing itself over and over. */
 export const LINK_TIMING: Timing = { onDelayS: 0, offDelayS: 30, readings: null };
+/** A node that starts a little after the gateway, or restarts, is no news. */
+export const LOST_TIMING: Timing = { ...LINK_TIMING, onDelayS: 5 };

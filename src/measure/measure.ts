@@ -45,8 +45,9 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
 
   const given = givenShaft(plan, record);
   const running = isRunning(plan, record, given, decimated);
-  // A machine at rest has no speed to be found, and none to be missed.
-  const shaft = given ?? (running === false ? NO_SHAFT : foundShaft(plan, decimated, acceleration, rateHz));
+  const shaft = given ?? foundShaft(plan, decimated, acceleration, rateHz);
+  // A machine at rest has no speed to be missed. It is looked for all the same: a smooth machine may vibrate less than
+  // the threshold and still have a bearing that tells something.
   if (running !== false) why.push(...shaft.why);
 
   const bandHz = overallBandHz(shaft.hz ?? expectedShaftHz(plan), decimated.fmaxHz);
@@ -95,8 +96,6 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
     zone: zoneFor(plan, running, shaft.hz, overall, displacement),
   };
 }
-
-const NO_SHAFT: ShaftFigures = { hz: null, source: null, confidence: null, tachometer: null, why: [] };
 
 /** Acceleration in g, its mean removed. */
 function accelerationG(record: SampleRecord): Float64Array {

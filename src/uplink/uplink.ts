@@ -261,7 +261,8 @@ export class Uplink {
     this.#lastBlock = block;
     this.#connects++;
     this.#host.log('info', 'connected', { protocol: connection.protocol });
-    const marker = this.#readMarker();
+    // The first connection of a run knows of no earlier one: there is nothing to compare with, nor to wait for.
+    const marker = last === null ? null : this.#readMarker();
     await this.#subscribe(connection, [this.topics.agent, this.topics.asks]);
     for (const topic of this.#settings.commandTopics) await this.#subscribe(connection, [topic]);
     await this.#host.store.releaseRefused();
