@@ -43,8 +43,9 @@ export function kaiserBeta(attenuationDb: number): number {
  * @example Rate 25 600, pass 2500, stop 3900 Hz, 80 dB: 93.
  */
 export function kaiserTaps(options: LowpassOptions): number {
-  checkLowpass(options);
+  checkEdges(options);
   const { rateHz, passHz, stopHz, attenuationDb } = options;
+  if (!(attenuationDb > 8)) throw new SignalRangeError('attenuationDb', attenuationDb, 'needs more than 8');
   const transition = (2 * Math.PI * (stopHz - passHz)) / rateHz;
   const order = Math.ceil((attenuationDb - 7.95) / (2.285 * transition));
   return order % 2 === 0 ? order + 1 : order + 2;
@@ -110,7 +111,11 @@ export function windowedLowpass(n: number, cutoffHz: number, rateHz: number, bet
  * @example Rate 25 600, pass 2500, stop 3900 Hz, 80 dB: 97 taps, where the plain estimate gives 93 and 78.8 dB.
  */
 export function designLowpass(options: LowpassOptions): Float64Array {
+  checkEdges(options);
   const { rateHz, passHz, stopHz, attenuationDb } = options;
+  if (!(attenuationDb >= 21 && attenuationDb <= 140)) {
+    throw new SignalRangeError('attenuationDb', attenuationDb, 'needs 21 to 140');
+  }
   const reserved = { ...options, attenuationDb: attenuationDb + DESIGN_RESERVE_DB };
   const beta = kaiserBeta(reserved.attenuationDb);
   const cutoffHz = (passHz + stopHz) / 2;
@@ -154,15 +159,12 @@ function worstGain(taps: Float64Array, rateHz: number, stopHz: number): number {
   return worst;
 }
 
-function checkLowpass({ rateHz, passHz, stopHz, attenuationDb }: LowpassOptions): void {
+function checkEdges({ rateHz, passHz, stopHz }: LowpassOptions): void {
   requirePositive('rateHz', rateHz);
   requirePositive('passHz', passHz);
   if (!(stopHz > passHz)) throw new SignalRangeError('stopHz', stopHz, `needs to be above passHz, ${passHz}`);
   if (!(stopHz <= rateHz / 2)) {
     throw new SignalRangeError('stopHz', stopHz, `needs to be at most half the rate, ${rateHz / 2}`);
-  }
-  if (!(attenuationDb >= 21 && attenuationDb <= 142)) {
-    throw new SignalRangeError('attenuationDb', attenuationDb, 'needs 21 to 140');
   }
 }
 

@@ -103,8 +103,8 @@ it.each([
   [{ rateHz: 10, passHz: 0, stopHz: 2, attenuationDb: 80 }, 'passHz'],
   [{ rateHz: 10, passHz: 2, stopHz: 2, attenuationDb: 80 }, 'stopHz'],
   [{ rateHz: 10, passHz: 2, stopHz: 5.1, attenuationDb: 80 }, 'stopHz'],
-  [{ rateHz: 10, passHz: 2, stopHz: 3, attenuationDb: 10 }, 'attenuationDb'],
-  [{ rateHz: 10, passHz: 2, stopHz: 3, attenuationDb: 150 }, 'attenuationDb'],
+  [{ rateHz: 10, passHz: 2, stopHz: 3, attenuationDb: 20.9 }, 'attenuationDb'],
+  [{ rateHz: 10, passHz: 2, stopHz: 3, attenuationDb: 140.1 }, 'attenuationDb'],
   [{ rateHz: 10, passHz: 2, stopHz: Number.NaN, attenuationDb: 80 }, 'stopHz'],
   [{ rateHz: 1e6, passHz: 2, stopHz: 3, attenuationDb: 80 }, 'stopHz'],
 ])('refuses %o, naming %s', (options, quantity) => {
@@ -115,4 +115,5 @@ it.each([
 it('refuses an even number of taps and an attenuation of nothing', () => {
   expect(() => windowedLowpass(10, 1, 4, 5)).toThrow(SignalRangeError);
   expect(() => kaiserBeta(0)).toThrow(SignalRangeError);
+  expect(() => kaiserTaps({ rateHz: 10, passHz: 2, stopHz: 3, attenuationDb: 8 })).toThrow(SignalRangeError);
 });
