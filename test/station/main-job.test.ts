@@ -2,16 +2,18 @@
  * The main job on real parts: a sender written from the page of the sensor link alone, a pseudo-terminal made by
  * socat, the agent as a process of its own, a broker, and a subscriber on whose messages everything is asserted.
  */
-import { spawn } from 'node:child_process';
+import { spawn, spawnSync } from 'node:child_process';
+import { writeFileSync } from 'node:fs';
 import mqtt from 'mqtt';
 import { afterEach, describe, expect, it } from 'vitest';
 import { payloadSchemas } from '../../src/uplink/payload-schemas.ts';
-import { AgentProcess } from '../support/agent.ts';
+import { AgentProcess, command } from '../support/agent.ts';
 import { freePort, haveMosquitto, Mosquitto } from '../support/mosquitto.ts';
 import { sleep } from '../support/proxy.ts';
 import { pumpCounts } from '../support/pump-signal.ts';
 import { NodeFrames, type SentNode } from '../support/sender.ts';
 import { haveSocat, SocatCable } from '../support/socat.ts';
+import { wavBytes } from '../support/wav.ts';
 
 const rateHz = 40_960;
 const seconds = 21;
@@ -55,15 +57,19 @@ alarms:
   - {id: bearing, watch: envelope.defect, is: [outer], level: alert, readings: [2, 3]}
 `;
 
-/** All frames of the run, made beforehand: the sender only has to keep time. */
-function framesOfRun(): { at: number; bytes: Uint8Array }[] {
+/** What the three channels carry. */
+function countsOfRun(): Int32Array[] {
   const signal = { rateHz, seconds, gPerCount, noiseG: 0.02, tone: { hz: 25, velocityMmS: 10 } };
   const knocks = { hz: bpfoHz, peakG: 1.5, ringHz: 5200, decayS: 0.0008 };
-  const channels = [
+  return [
     pumpCounts({ ...signal, knocks, seed: 1 }),
     pumpCounts({ ...signal, knocks, seed: 2 }),
     pumpCounts({ ...signal, knocks: null, tone: { hz: 25, velocityMmS: 2 }, seed: 3 }),
   ];
+}
+
+/** All frames of the run, made beforehand: the sender only has to keep time. */
+function framesOf(channels: readonly Int32Array[]): { at: number; bytes: Uint8Array }[] {
   const maker = new NodeFrames(node);
   const frames: { at: number; bytes: Uint8Array }[] = [];
   const n = 512;
@@ -184,8 +190,9 @@ describe.runIf(haveSocat)('the main job, from a serial device to a subscriber', 
   async function runThrough(
     broker: string,
     subscribe: (heard: Heard[]) => Promise<() => void> | (() => void),
-  ): Promise<{ heard: Heard[]; agent: AgentProcess }> {
-    const frames = framesOfRun();
+  ): Promise<{ heard: Heard[]; agent: AgentProcess; channels: Int32Array[] }> {
+    const channels = countsOfRun();
+    const frames = framesOf(channels);
     const agent = new AgentProcess(stationText(broker));
     undo.push(() => agent.dispose());
     const cable = await SocatCable.lay(`${agent.folder}/tty`);
@@ -198,18 +205,59 @@ describe.runIf(haveSocat)('the main job, from a serial device to a subscriber', 
     await sleep(1500);
     expect(await agent.stop()).toBe(0);
     await sleep(300);
-    return { heard, agent };
+    return { heard, agent, channels };
+  }
+
+  /** The replay of the same counts at the rate that a live reading was measured with. */
+  function replayed(agent: AgentProcess, rateHz: unknown): Record<string, unknown>[] {
+    const wav = `${agent.folder}/run.wav`;
+    const points = 'pump-1/h,pump-1/v,pump-1/a';
+    const scale = String(2 ** 15 * gPerCount);
+    const args = [
+      'replay',
+      wav,
+      '-c',
+      agent.stationFile,
+      '--points',
+      points,
+      '--full-scale-g',
+      scale,
+      '--json',
+    ];
+    const run = spawnSync(process.execPath, [command, ...args, '--rate-hz', String(rateHz)], {
+      encoding: 'utf8',
+    });
+    expect(run.stderr).toBe('');
+    expect(run.status).toBe(0);
+    return run.stdout
+      .trim()
+      .split('\n')
+      .map((line) => JSON.parse(line) as Record<string, unknown>);
   }
 
   it('with the embedded broker', async () => {
     const port = await freePort();
-    const { heard, agent } = await runThrough(`{embedded: {port: ${port}}}`, (into) =>
+    const { heard, agent, channels } = await runThrough(`{embedded: {port: ${port}}}`, (into) =>
       subscribeByClient(port, into),
     );
     expectAllValid(heard);
     // The embedded broker goes with the agent, so its farewell may not arrive; all else is as with any broker.
     const farewell = { topic: 'forebay/test-weir/agent', payload: { state: 'offline' } };
     expectTheMainJob([...heard, farewell], agent);
+
+    // The same counts, first index, rate and scale give the same readings in replay; id, wall time and who said the
+    // rate aside.
+    writeFileSync(`${agent.folder}/run.wav`, wavBytes(channels, rateHz, 16));
+    const live = heard.filter(({ topic }) => topic.endsWith('/reading'));
+    expect(live.length).toBeGreaterThanOrEqual(6);
+    for (const { topic, payload } of live) {
+      const { id: _id, t: _t, rate, ...figures } = payload;
+      const again = replayed(agent, (rate as { hz: number }).hz).find(
+        ({ kind, point, first_index }) =>
+          kind === 'reading' && topic.endsWith(`/${point}/reading`) && first_index === figures.first_index,
+      );
+      expect(again, topic).toMatchObject(figures);
+    }
   }, 90_000);
 
   it.runIf(haveMosquitto).each(['5', '3.1.1'])(
