@@ -3,7 +3,8 @@
 import type { AlarmEffect } from '../alarm/effects.ts';
 import { ForebayError } from '../config/errors.ts';
 import { loadStation } from '../config/load.ts';
-import type { Station } from '../config/station.ts';
+import type { Point, Station } from '../config/station.ts';
+import type { RateUsed } from '../measure/reading.ts';
 import { openRecording, type Recording } from '../snapshot/recording.ts';
 import { type ReplayChannel, type ReplayEvent, replay } from '../station/replaying.ts';
 import { readingBody } from '../uplink/payload.ts';
@@ -37,15 +38,15 @@ export async function replayCommand(
   const station = withEvery(loadStation(options.config), options.every);
   const recording = openRecording(file);
   try {
+    const { tags } = recording;
     const channels = channelsFor(station, recording, options.points, options.fullScaleG ?? null);
-    const rateHz = options.rateHz ?? recording.rateHz;
-    const rateSource = options.rateHz === undefined ? 'nominal' : 'given';
+    const rate = rateOf(recording, options.rateHz);
     const events = replay(station, recording, {
       channels,
-      nominalRateHz: nominalRate(station, channels, rateHz, err),
-      rate: { hz: rateHz, source: rateSource, ppm: null },
-      firstIndex: options.firstIndex ?? 0,
-      startMs: startOf(options.start),
+      nominalRateHz: tags?.nominalRateHz ?? nominalRate(station, channels, rate.hz, err),
+      rate,
+      firstIndex: options.firstIndex ?? tags?.firstIndex ?? 0,
+      startMs: startOf(options.start ?? tags?.start),
     });
     for (const event of events) {
       const line = lineOf(event);
@@ -58,10 +59,7 @@ export async function replayCommand(
 }
 
 /** The payload of topics.md with what says whose it is; null for what is not printed. */
-export type PrintedLine = { kind: string; machine: string } & Record<
-  string,
-  unknown
->;
+export type PrintedLine = { kind: string; machine: string } & Record<string, unknown>;
 
 function lineOf(event: ReplayEvent): PrintedLine | null {
   if (event.kind === 'effect') return alarmOrFindingLine(event.effect);
@@ -85,6 +83,11 @@ function startOf(text: string | undefined): number {
   const ms = Date.parse(text);
   if (Number.isNaN(ms)) throw usage(`--start ${text}: an ISO 8601 time is wanted, as 2026-03-02T10:15:30Z`);
   return ms;
+}
+
+function rateOf({ rateHz, tags }: Recording, givenHz: number | undefined): RateUsed {
+  if (givenHz !== undefined) return { hz: givenHz, source: 'given', ppm: null };
+  return tags?.rate ?? { hz: rateHz, source: 'nominal', ppm: null };
 }
 
 function withEvery(station: Station, everyS: number | undefined): Station {
@@ -134,15 +137,33 @@ function channelsFor(
     const place = findPoint(station, name);
     if (place) {
       if (points.some(({ point }) => point.key === name)) throw usage(`--points names ${name} twice`);
-      const scaleG = fullScaleG ?? place.point.sensor.rangeG;
-      if (scaleG === null) throw usage(`a WAV file does not say its scale, nor does ${name}; give --full-scale-g`);
-      points.push({ ...place, channel, unit: 'g', unitsPerCount: scaleG / 2 ** (recording.bitsPerSample - 1) });
+      points.push({ ...place, channel, ...scaleOf(recording, channel, place.point, fullScaleG) });
     } else if (isTachometer(station, name)) tachometers.set(name, channel);
     else throw usage(`--points: ${name} is no point and no tachometer of this station; ${known(station)}`);
   });
   if (points.length === 0) throw usage('--points names no point to measure');
   points.sort((a, b) => order(station, a.point.key) - order(station, b.point.key));
   return points.map((entry) => ({ ...entry, tachometer: tachometerOf(entry, tachometers) }));
+}
+
+/** As the file says, unless told otherwise; as the sensor's range, where the file says nothing. */
+function scaleOf(
+  { tags, bitsPerSample }: Recording,
+  channel: number,
+  { key, sensor }: Point,
+  fullScaleG: number | null,
+): Pick<ReplayChannel, 'unit' | 'unitsPerCount' | 'countRange'> {
+  const own = tags?.channels[channel];
+  if (own && fullScaleG === null) {
+    const { unit, unitsPerCount, countRange } = own;
+    if (unit === 'logic') throw usage(`channel ${channel + 1} of the recording is a tachometer, not ${key}`);
+    return { unit, unitsPerCount, countRange };
+  }
+  const scaleG = fullScaleG ?? sensor.rangeG;
+  if (scaleG === null)
+    throw usage(`the recording does not say its scale, nor does ${key}; give --full-scale-g`);
+  const half = 2 ** (bitsPerSample - 1);
+  return { unit: 'g', unitsPerCount: scaleG / half, countRange: [-half, half - 1] };
 }
 
 function findPoint(station: Station, key: string): Pick<ReplayChannel, 'machine' | 'point'> | null {

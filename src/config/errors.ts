@@ -20,7 +20,7 @@ export const errorCatalogue = {
   'config.not-available-yet': 'Take it out of the station file until a later version brings it.',
   'file.unreadable': 'Check the path and that this user may read it.',
   'recording.malformed':
-    'Export the recording again as PCM WAV, 16 to 32 bit, and check that it was copied whole.',
+    'Export the recording again as FLAC or as PCM WAV, 16 to 32 bit, and check that it was copied whole.',
   'command.usage': 'See `forebay help`.',
   'store.locked': 'Stop the other agent, or give this one a `storage.directory` of its own.',
   'store.unwritable':

@@ -21,6 +21,7 @@ export interface ReplayChannel {
   channel: number;
   unit: 'g' | 'm/s2';
   unitsPerCount: number;
+  countRange: readonly [number, number] | null;
   /** Channel of the recording that carries the machine's tachometer. */
   tachometer: { channel: number; pulsesPerRev: number } | null;
 }
@@ -80,7 +81,12 @@ export function* replay(
     if (held.first !== first || held.samples !== samples) {
       held = { first, samples, counts: recording.read(first - options.firstIndex, samples) };
     }
-    const reading = measure(held.counts, recording.bitsPerSample, due, options);
+    const reading = measure(
+      held.counts,
+      missingWithin(recording, first - options.firstIndex, samples),
+      due,
+      options,
+    );
     const t = labelAt(endS);
     const { key } = entry.point;
     const before = previousEnd.get(key);
@@ -108,26 +114,34 @@ function dueRecords(station: Station, recording: Recording, options: ReplayOptio
   return all.sort((a, b) => endOf(a) - endOf(b) || a.order - b.order);
 }
 
+/** Of a snapshot that has gaps: how many of these samples never came. */
+function missingWithin({ tags }: Recording, first: number, samples: number): number {
+  let missing = 0;
+  for (const gap of tags?.gaps ?? []) {
+    missing += Math.max(0, Math.min(first + samples, gap.at + gap.samples) - Math.max(first, gap.at));
+  }
+  return missing;
+}
+
 function measure(
   counts: readonly Int32Array[],
-  bitsPerSample: number,
+  missingSamples: number,
   { entry, plan, span }: Due,
   options: ReplayOptions,
 ): Reading {
-  const half = 2 ** (bitsPerSample - 1);
   const pulses = entry.tachometer && counts[entry.tachometer.channel];
   return measureRecord(plan, {
     counts: counts[entry.channel] ?? new Int32Array(0),
     firstIndex: span.first,
     unit: entry.unit,
     unitsPerCount: entry.unitsPerCount,
-    countRange: [-half, half - 1],
+    countRange: entry.countRange,
     rate: options.rate,
     tachometer:
       pulses && entry.tachometer ? { counts: pulses, pulsesPerRev: entry.tachometer.pulsesPerRev } : null,
     toldShaftHz: null,
     toldRunning: null,
-    missingSamples: 0,
+    missingSamples,
     distrust: [],
   });
 }

@@ -16,3 +16,7 @@ export function recordingsFolder(): string | null {
   const folder = fileURLToPath(new URL('../../../shared/data', import.meta.url));
   return existsSync(folder) ? folder : null;
 }
+
+export function hasSoundfile(): boolean {
+  return spawnSync('/usr/bin/python3', ['-c', 'import soundfile']).status === 0;
+}
