@@ -39,5 +39,5 @@ function findingText(line: PrintedLine): string {
 export function lineFor(line: PrintedLine): string {
   if (line.kind === 'reading') return readingText(line);
   if (line.kind === 'finding') return findingText(line);
-  return `${line.t} ALARM ${line.machine}/${line.alarm} ${line.state} ${line.level ?? ''} ${line.reason} ${line.check}`;
+  return `${line.t} ALARM ${line.machine}/${line.alarm} ${line.state} ${line.level ?? ''} ${line.reason}. ${line.check}`;
 }

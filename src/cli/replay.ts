@@ -43,7 +43,7 @@ export async function replayCommand(
     const rate = rateOf(recording, options.rateHz);
     const events = replay(station, recording, {
       channels,
-      nominalRateHz: tags?.nominalRateHz ?? nominalRate(station, channels, rate.hz, err),
+      nominalRateHz: tags?.nominalRateHz ?? nominalRate(station, channels, recording.rateHz, err),
       rate,
       firstIndex: options.firstIndex ?? tags?.firstIndex ?? 0,
       startMs: startOf(options.start ?? tags?.start),
@@ -67,7 +67,7 @@ function lineOf(event: ReplayEvent): PrintedLine | null {
   return { kind: 'reading', machine, point, id, ...readingBody(t, reading) };
 }
 
-export function alarmOrFindingLine(effect: AlarmEffect): PrintedLine | null {
+function alarmOrFindingLine(effect: AlarmEffect): PrintedLine | null {
   if (effect.kind !== 'publish' || effect.class === 'state') return null;
   const [machine = '', , alarm = ''] = effect.topic.split('/');
   if (effect.class === 'finding') return { kind: 'finding', machine, ...effect.payload };
@@ -99,7 +99,7 @@ function withEvery(station: Station, everyS: number | undefined): Station {
   return { ...station, machines };
 }
 
-/** What sizes the records: the rate that the link expects, where the recording can be of that link. */
+/** What sizes the records: the rate that the link expects, where the recording can be of that link, else its own. */
 function nominalRate(
   station: Station,
   channels: readonly ReplayChannel[],
