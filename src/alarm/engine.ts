@@ -102,3 +102,17 @@ export function restoreAlarms(plan: AlarmPlan, rows: Readonly<Record<string, Sto
   const waiting = Object.keys(alarms).filter((key) => signature(alarms[key]!) !== alarms[key]!.told);
   return { state: { alarms, points, machines, quiet, waiting }, effects };
 }
+
+/** The same for a state at work, when the configuration changes under it. */
+export function replanAlarms(plan: AlarmPlan, state: EngineState): EngineStep {
+  const rows = (of: 'alarm' | 'point' | 'machine', from: Readonly<Record<string, object>>) =>
+    Object.entries(from).map(([key, row]) => [`${of}:${key}`, { v: ROW_VERSION, of, ...row } as StoredRow]);
+  return restoreAlarms(plan, {
+    ...Object.fromEntries([
+      ...rows('alarm', state.alarms),
+      ...rows('point', state.points),
+      ...rows('machine', state.machines),
+    ]),
+    'quiet:': { v: ROW_VERSION, of: 'quiet', ...state.quiet },
+  });
+}

@@ -4,7 +4,7 @@
  */
 
 import type { AlarmEffect, AlarmInput, AllocateId } from '../alarm/effects.ts';
-import { stepAlarms } from '../alarm/engine.ts';
+import { replanAlarms, stepAlarms } from '../alarm/engine.ts';
 import { machineEvidence } from '../alarm/evidence.ts';
 import type { AlarmPlan } from '../alarm/plan.ts';
 import type { EngineState } from '../alarm/state.ts';
@@ -12,8 +12,14 @@ import type { Finding } from '../machine/finding-evidence.ts';
 import { findingsFor } from '../machine/findings.ts';
 import type { Reading } from '../measure/reading.ts';
 
+interface JudgedStep {
+  effects: readonly AlarmEffect[];
+  /** The state advances here, so that a step whose commit fails never happened. */
+  keep(): void;
+}
+
 export class Judging {
-  readonly #plan: AlarmPlan;
+  #plan: AlarmPlan;
   readonly #allocateId: AllocateId;
   #state: EngineState;
   /** Latest reading of each point. */
@@ -39,13 +45,28 @@ export class Judging {
     return this.#latest.get(pointKey) ?? null;
   }
 
-  /** What an input changes. The state advances at `keep`, so that a step whose commit fails never happened. */
-  step(input: AlarmInput): { effects: readonly AlarmEffect[]; keep(): void } {
+  /** What an input changes; nothing where it is about what has left the configuration. */
+  step(input: AlarmInput): JudgedStep {
+    if (!isAbout(this.#plan, input)) return { effects: [], keep: () => undefined };
     const { state, effects } = stepAlarms(this.#plan, this.#state, input, this.#allocateId);
     return {
       effects,
       keep: () => {
         this.#state = state;
+      },
+    };
+  }
+
+  /** Goes on with another plan: alarms that stay keep their state, those that left are withdrawn. */
+  replan(plan: AlarmPlan): JudgedStep {
+    const { state, effects } = replanAlarms(plan, this.#state);
+    return {
+      effects,
+      keep: () => {
+        this.#plan = plan;
+        this.#state = state;
+        this.#rounds.clear();
+        for (const key of this.#latest.keys()) if (!plan.points.has(key)) this.#latest.delete(key);
       },
     };
   }
@@ -59,7 +80,8 @@ export class Judging {
     reading: Reading,
   ): { machineId: string; findings: readonly Finding[] } | null {
     const entry = this.#plan.points.get(pointKey);
-    if (!entry) throw new RangeError(`no point ${pointKey} in this station`);
+    // It came with a configuration whose turn has not come yet.
+    if (!entry) return null;
     const { machine } = entry;
     const round = this.#rounds.get(machine.id) ?? new Set<string>();
     this.#rounds.set(machine.id, round);
@@ -79,5 +101,20 @@ export class Judging {
 
   #evaluate(machineId: string): readonly Finding[] {
     return findingsFor(machineEvidence(this.#plan, machineId, this.#latest, this.#state));
+  }
+}
+
+function isAbout(plan: AlarmPlan, input: AlarmInput): boolean {
+  switch (input.kind) {
+    case 'reading':
+      return plan.points.has(input.pointKey);
+    case 'findings':
+      return plan.machines.has(input.machineId);
+    case 'trend':
+      return plan.alarms.has(input.alarm);
+    case 'link':
+      return plan.alarms.has(`agent/${input.link}.silent`);
+    default:
+      return true;
   }
 }

@@ -4,6 +4,7 @@
  */
 
 import type { AlarmEffect, AlarmInput } from '../alarm/effects.ts';
+import type { AlarmPlan } from '../alarm/plan.ts';
 import type { Commit, JournalEntry, MessageClass, OutboxMessage } from '../store/types.ts';
 import { journalEntryOf, numberOf } from './journal-entry.ts';
 import type { Judging } from './judging.ts';
@@ -24,10 +25,11 @@ export interface JudgeHost {
 
 export type AskOutcome = Pick<Extract<AlarmEffect, { kind: 'answer' }>, 'ok'> & { error?: string };
 
-interface Waiting {
-  input: AlarmInput;
-  resolve(effects: readonly AlarmEffect[]): void;
-}
+type Waiting = { resolve(effects: readonly AlarmEffect[]): void } & (
+  | { input: AlarmInput }
+  /** What came before is judged by the old plan, what comes after by this one. */
+  | { plan: AlarmPlan }
+);
 
 /** Inputs that may wait while the database cannot be written: an hour of ten points at ten seconds. */
 const MAX_WAITING = 3600;
@@ -58,7 +60,7 @@ export class LiveJudge {
   /** Resolves with the effects once they are durable; with none where the input was given up. */
   take(input: AlarmInput): Promise<readonly AlarmEffect[]> {
     const last = this.#queue.at(-1);
-    if (input.kind === 'tick' && last?.input.kind === 'tick') {
+    if (input.kind === 'tick' && last && 'input' in last && last.input.kind === 'tick') {
       last.input = { ...input, elapsedS: input.elapsedS + last.input.elapsedS };
       return Promise.resolve([]);
     }
@@ -66,8 +68,17 @@ export class LiveJudge {
       this.#queue.push({ input, resolve });
       if (this.#queue.length > MAX_WAITING) {
         this.dropped++;
-        this.#queue.shift()?.resolve([]);
+        const oldest = this.#queue.findIndex((waiting) => 'input' in waiting);
+        this.#queue.splice(oldest, 1)[0]?.resolve([]);
       }
+      this.#running ??= this.#run();
+    });
+  }
+
+  /** Judges by another plan whatever is taken from now on. Resolves once that is durable. */
+  replan(plan: AlarmPlan): Promise<void> {
+    return new Promise((resolve) => {
+      this.#queue.push({ plan, resolve: () => resolve() });
       this.#running ??= this.#run();
     });
   }
@@ -87,7 +98,8 @@ export class LiveJudge {
 
   async #run(): Promise<void> {
     for (let next = this.#queue.shift(); next; next = this.#queue.shift()) {
-      const { effects, keep } = this.#judging.step(next.input);
+      const { effects, keep } =
+        'plan' in next ? this.#judging.replan(next.plan) : this.#judging.step(next.input);
       const durable = await this.#commit(effects);
       if (durable) keep();
       next.resolve(durable ? effects : []);

@@ -36,7 +36,10 @@ export interface MeasureJob {
 }
 
 export type ToWorker =
-  | { kind: 'ring'; link: string; memory: SharedArrayBuffer }
+  /** Takes the place of what the worker was started with. */
+  | { kind: 'setup'; setup: MeasuringSetup }
+  /** null: the link is gone. */
+  | { kind: 'ring'; link: string; memory: SharedArrayBuffer | null }
   | { kind: 'measure'; job: MeasureJob };
 
 /** `missed`: why there is no reading; the record is counted as lost. */

@@ -25,7 +25,9 @@ export class MeasuringRoom {
   /** Records that got no reading, by reason. */
   readonly missed: Record<string, number> = {};
   workerRestarts = 0;
-  readonly #setup: MeasuringSetup;
+  /** Outcomes that the worker gave. */
+  settled = 0;
+  #setup: MeasuringSetup;
   readonly #host: MeasuringHost;
   readonly #rings = new Map<string, SharedArrayBuffer>();
   readonly #queue: Waiting[] = [];
@@ -50,6 +52,25 @@ export class MeasuringRoom {
   addRing(link: string, memory: SharedArrayBuffer): void {
     this.#rings.set(link, memory);
     this.#post({ kind: 'ring', link, memory });
+  }
+
+  /** A link that is gone: its samples are given back. */
+  forgetRing(link: string): void {
+    this.#rings.delete(link);
+    this.#post({ kind: 'ring', link, memory: null });
+  }
+
+  /**
+   * Goes on with other points. Jobs that wait are given up where `stillWanted` says no: a point that is measured
+   * otherwise from now on, or samples that are no longer there.
+   */
+  replan(setup: MeasuringSetup, stillWanted: (job: Omit<MeasureJob, 'id'>) => boolean): void {
+    this.#setup = setup;
+    const waiting = this.#queue.splice(0);
+    this.#queue.push(...waiting.filter(({ job }) => stillWanted(job)));
+    for (const unwanted of waiting.filter(({ job }) => !stillWanted(job)))
+      this.#giveUp(unwanted, 'the configuration changed');
+    this.#post({ kind: 'setup', setup });
   }
 
   /** Always settles: with a reading, or with why there is none. */
@@ -109,6 +130,7 @@ export class MeasuringRoom {
     const current = this.#current;
     if (!current || current.id !== outcome.id) return;
     this.#current = null;
+    this.settled++;
     if (this.#lostSince) {
       this.#lostSince = false;
       this.#host.workerBack();

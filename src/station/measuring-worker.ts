@@ -7,13 +7,17 @@ import { type PointPlan, planPoint } from '../measure/plan.ts';
 import { tachometerSpeed } from '../measure/tachometer.ts';
 import type { MeasureJob, MeasureOutcome, MeasuringSetup, RingSpan, ToWorker } from './measure-job.ts';
 
-const setup = workerData as MeasuringSetup;
+let setup = workerData as MeasuringSetup;
 const port = parentPort;
 if (!port) throw new Error('this module runs as a worker only');
 
 const rings = new Map<string, RingReader>();
 const plans = new Map<string, PointPlan>();
-const points = new Map(setup.points.map((entry) => [entry.point.key, entry]));
+let points = pointsOf(setup);
+
+function pointsOf({ points: entries }: MeasuringSetup) {
+  return new Map(entries.map((entry) => [entry.point.key, entry]));
+}
 
 function planFor(pointKey: string, rateHz: number): PointPlan {
   const known = plans.get(pointKey);
@@ -66,8 +70,15 @@ function otherTachometerHz(job: MeasureJob): number | null {
 }
 
 port.on('message', (message: ToWorker) => {
+  if (message.kind === 'setup') {
+    setup = message.setup;
+    points = pointsOf(setup);
+    plans.clear();
+    return;
+  }
   if (message.kind === 'ring') {
-    rings.set(message.link, new RingReader(message.memory));
+    if (message.memory === null) rings.delete(message.link);
+    else rings.set(message.link, new RingReader(message.memory));
     return;
   }
   let outcome: MeasureOutcome;

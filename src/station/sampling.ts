@@ -57,7 +57,7 @@ interface FedPoint {
 
 export class LinkSampling {
   readonly #link: string;
-  readonly #station: Station;
+  #station: Station;
   readonly #told: ToldValues;
   readonly #host: SamplingHost;
   readonly #ringSeconds: number;
@@ -78,6 +78,21 @@ export class LinkSampling {
     return this.#standing;
   }
 
+  get ringSeconds(): number {
+    return this.#ringSeconds;
+  }
+
+  /** Goes on with another station over the same samples: each point's next record begins where its last one let off. */
+  replan(station: Station): void {
+    this.#station = station;
+    const standing = this.#standing;
+    if (!standing) return;
+    this.#skippedBefore = this.skipped;
+    const before = new Map(this.#points.map((fed) => [fed.point.key, fed]));
+    this.#feedAll(standing.description, (key) => before.get(key)?.schedule.next ?? standing.head);
+    for (const fed of this.#points) fed.previousEnd = before.get(fed.point.key)?.previousEnd ?? null;
+  }
+
   /** Points of this link that the node cannot feed. */
   get unfed(): readonly Unfed[] {
     return this.#unfed;
@@ -91,13 +106,7 @@ export class LinkSampling {
   begin({ epoch, firstIndex, description }: EpochStart): void {
     this.#skippedBefore = this.skipped;
     this.#standing = { epoch, head: firstIndex, description };
-    this.#points = [];
-    this.#unfed = [];
-    for (const machine of this.#station.machines) {
-      for (const point of machine.points) {
-        if (point.link === this.#link) this.#feed(machine, point, description, firstIndex);
-      }
-    }
+    this.#feedAll(description, () => firstIndex);
   }
 
   advance(head: number): void {
@@ -116,6 +125,17 @@ export class LinkSampling {
             samples,
           }),
         );
+      }
+    }
+  }
+
+  /** @param from the index from which on a point wants records, by its key. */
+  #feedAll(description: NodeDescription, from: (pointKey: string) => number): void {
+    this.#points = [];
+    this.#unfed = [];
+    for (const machine of this.#station.machines) {
+      for (const point of machine.points) {
+        if (point.link === this.#link) this.#feed(machine, point, description, from(point.key));
       }
     }
   }

@@ -26,6 +26,11 @@ export class RecordSchedule {
     this.#next = this.#multipleFrom(firstIndex);
   }
 
+  /** Where the next record begins. */
+  get next(): number {
+    return this.#next;
+  }
+
   /**
    * The records that have become complete, oldest first.
    * @param head index after the newest sample.

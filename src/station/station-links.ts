@@ -4,13 +4,14 @@
  */
 
 import type { LinkCondition as LinkAlarmCondition } from '../alarm/sensor.ts';
-import type { Machine, Point, Station } from '../config/station.ts';
+import type { LinkSettings, Machine, Point, Station } from '../config/station.ts';
 import { Link } from '../link/link.ts';
 import type { LinkCondition, LinkHealth } from '../link/link-health.ts';
 import { systemClock } from '../link/system-clock.ts';
 import { measureRecord } from '../measure/measure.ts';
 import { planPoint } from '../measure/plan.ts';
 import type { Reading } from '../measure/reading.ts';
+import type { MeasuringSetup } from './measure-job.ts';
 import type { MeasuringRoom } from './measuring-room.ts';
 import { type DueRecord, LinkSampling, type Unfed } from './sampling.ts';
 import type { ToldValues } from './told.ts';
@@ -39,44 +40,30 @@ const alarmOf: Partial<Record<LinkCondition['kind'], LinkAlarmCondition>> = {
 };
 
 interface Joined {
+  settings: LinkSettings;
   link: Link;
   sampling: LinkSampling;
 }
 
 export class StationLinks {
-  readonly #station: Station;
+  #station: Station;
   readonly #room: MeasuringRoom;
+  readonly #told: ToldValues;
   readonly #host: StationLinksHost;
   readonly #joined = new Map<string, Joined>();
+  /** What the figures of each point depend on. */
+  #measuredBy: ReadonlyMap<string, string>;
+  #stopped = false;
+  #outdated = 0;
 
   constructor(station: Station, room: MeasuringRoom, told: ToldValues, host: StationLinksHost) {
     this.#station = station;
     this.#room = room;
+    this.#told = told;
     this.#host = host;
-    for (const settings of station.links) {
-      const ringSeconds = longestRecordS(station, settings.id) + SPARE_S;
-      const sampling = new LinkSampling(settings.id, station, ringSeconds, told, {
-        rate: (id) => this.#joined.get(id)?.link.rate ?? null,
-        wallMs: () => host.wallMs(),
-        due: (record) => void this.#measure(record),
-        standing: (id) => this.#joined.get(id)?.sampling.standing ?? null,
-      });
-      const link = new Link(
-        settings,
-        { ringSeconds, maxRingBytes: MAX_RING_BYTES },
-        {
-          ...systemClock,
-          onEpoch: (start) => {
-            room.addRing(settings.id, start.memory);
-            sampling.begin(start);
-            this.#report(settings.id, sampling.unfed);
-          },
-          onSamples: ({ head }) => sampling.advance(head),
-          onCondition: (condition) => this.#conditionChanged(settings.id, condition),
-        },
-      );
-      this.#joined.set(settings.id, { link, sampling });
-    }
+    this.#measuredBy = measuredBy(station);
+    for (const settings of station.links)
+      this.#join(settings, longestRecordS(station, settings.id) + SPARE_S);
   }
 
   start(): void {
@@ -84,22 +71,105 @@ export class StationLinks {
   }
 
   async stop(): Promise<void> {
+    this.#stopped = true;
     await Promise.all([...this.#joined.values()].map(({ link }) => link.stop()));
+  }
+
+  /**
+   * Goes on with another station. Links whose line and format stay are not touched: their samples go on, and each
+   * point's next record begins where its last one let off. Other links are closed and opened anew.
+   * @throws RangeError where a point cannot be measured so; nothing has changed then.
+   */
+  async replan(station: Station): Promise<void> {
+    const ringSeconds = new Map(
+      station.links.map(({ id }) => [id, longestRecordS(station, id) + SPARE_S] as const),
+    );
+    const kept = new Set(
+      station.links
+        .filter((settings) => {
+          const joined = this.#joined.get(settings.id);
+          return (
+            joined &&
+            sameLine(joined.settings, settings) &&
+            joined.sampling.ringSeconds >= (ringSeconds.get(settings.id) ?? 0)
+          );
+        })
+        .map(({ id }) => id),
+    );
+    const before = this.#measuredBy;
+    this.#station = station;
+    this.#measuredBy = measuredBy(station);
+    this.#room.replan(setupOf(station), ({ pointKey, span, otherTachometer }) => {
+      const links = otherTachometer ? [span.link, otherTachometer.span.link] : [span.link];
+      return before.get(pointKey) === this.#measuredBy.get(pointKey) && links.every((id) => kept.has(id));
+    });
+    const closing: Promise<void>[] = [];
+    for (const [id, { link, sampling }] of this.#joined) {
+      if (kept.has(id)) {
+        sampling.replan(station);
+        continue;
+      }
+      this.#joined.delete(id);
+      this.#room.forgetRing(id);
+      closing.push(link.stop());
+    }
+    const fresh = station.links
+      .filter(({ id }) => !kept.has(id))
+      .map((settings) => this.#join(settings, ringSeconds.get(settings.id) ?? SPARE_S));
+    // Two links may have changed places: a device is free only once its old link has let go of it.
+    await Promise.all(closing);
+    if (this.#stopped) return;
+    for (const link of fresh) link.start();
+    for (const id of kept) this.#report(id, this.#joined.get(id)?.sampling.unfed ?? []);
   }
 
   health(): Record<string, LinkHealth> {
     return Object.fromEntries([...this.#joined].map(([id, { link }]) => [id, link.health()]));
   }
 
-  /** Records that were overwritten before they were asked for. */
+  /** Records that were overwritten before they were asked for, or measured for a configuration that has gone. */
   get skipped(): number {
-    return [...this.#joined.values()].reduce((sum, { sampling }) => sum + sampling.skipped, 0);
+    const overwritten = [...this.#joined.values()].reduce((sum, { sampling }) => sum + sampling.skipped, 0);
+    return overwritten + this.#outdated;
+  }
+
+  #join(settings: LinkSettings, ringSeconds: number): Link {
+    const { id } = settings;
+    const sampling = new LinkSampling(id, this.#station, ringSeconds, this.#told, {
+      rate: (other) => this.#joined.get(other)?.link.rate ?? null,
+      wallMs: () => this.#host.wallMs(),
+      due: (record) => void this.#measure(record),
+      standing: (other) => this.#joined.get(other)?.sampling.standing ?? null,
+    });
+    const link: Link = new Link(
+      settings,
+      { ringSeconds, maxRingBytes: MAX_RING_BYTES },
+      {
+        ...systemClock,
+        onEpoch: (start) => {
+          this.#room.addRing(id, start.memory);
+          sampling.begin(start);
+          this.#report(id, sampling.unfed);
+        },
+        onSamples: ({ head }) => sampling.advance(head),
+        onCondition: (condition) => {
+          // The last words of a link that has left.
+          if (this.#joined.get(id)?.link === link) this.#conditionChanged(id, condition);
+        },
+      },
+    );
+    this.#joined.set(id, { settings, link, sampling });
+    return link;
   }
 
   async #measure(record: DueRecord): Promise<void> {
+    const { key } = record.point;
+    const by = this.#measuredBy.get(key);
     const outcome = await this.#room.measure(record.job);
-    if ('reading' in outcome)
+    if (!('reading' in outcome)) return;
+    if (this.#measuredBy.get(key) === by)
       this.#host.reading(record.point, outcome.reading, record.wallMs, record.elapsedS);
+    else this.#outdated++;
   }
 
   #conditionChanged(id: string, { kind, why }: LinkCondition): void {
@@ -162,6 +232,25 @@ function blankReading(
   } catch {
     return null;
   }
+}
+
+/** What the measuring worker needs to know of a station. */
+export function setupOf({ machines, site }: Station): MeasuringSetup {
+  const points = machines.flatMap((machine) => machine.points.map((point) => ({ point, machine })));
+  return { points, mainsHz: site.mainsHz };
+}
+
+/** All that the figures of a point depend on, by its key: equal text, equal figures. */
+function measuredBy(station: Station): ReadonlyMap<string, string> {
+  return new Map(
+    station.machines.flatMap(({ points, ...machine }) =>
+      points.map((point) => [point.key, JSON.stringify([point, machine, station.site.mainsHz])] as const),
+    ),
+  );
+}
+
+function sameLine(a: LinkSettings, b: LinkSettings): boolean {
+  return JSON.stringify([a.transport, a.format]) === JSON.stringify([b.transport, b.format]);
 }
 
 /** In seconds at the nominal rate. */

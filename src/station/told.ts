@@ -14,7 +14,7 @@ interface Told {
 }
 
 export class ToldValues {
-  readonly #topics: ReadonlySet<string>;
+  #topics: ReadonlySet<string> = new Set();
   readonly #monotonicS: () => number;
   readonly #told = new Map<string, Told>();
   /** Payloads that could not be read as what they should be. */
@@ -22,8 +22,14 @@ export class ToldValues {
 
   /** @param topics the only ones listened to. */
   constructor(topics: Iterable<string>, monotonicS: () => number) {
-    this.#topics = new Set(topics);
     this.#monotonicS = monotonicS;
+    this.listenTo(topics);
+  }
+
+  /** Other topics from now on; what was told on those that stay is kept. */
+  listenTo(topics: Iterable<string>): void {
+    this.#topics = new Set(topics);
+    for (const topic of this.#told.keys()) if (!this.#topics.has(topic)) this.#told.delete(topic);
   }
 
   get topics(): readonly string[] {
