@@ -6,7 +6,7 @@ import type { BearingRates } from './bearing.ts';
 import type { BandLines, EnvelopeLine, LineSet } from './evidence-lines.ts';
 import { type Comb, type Explanation, explain } from './line-explanation.ts';
 
-export type BearingPart = 'outer' | 'inner' | 'rolling-element' | 'cage' | 'cage-rate';
+type BearingPart = 'outer' | 'inner' | 'rolling-element' | 'cage' | 'cage-rate';
 
 /** One part accused by one band. */
 export interface Accusation {
@@ -23,10 +23,11 @@ const RACE_SLIP = 0.015;
 const ELEMENT_SLIP = 0.025;
 
 /**
- * Depth of the fundamental from which a part can be named. Shallower combs were seen on recordings of another fault
- * (0.47 and below, of 44), so those are left to levels and trends. The spin of an element smears its line.
+ * Depth of the fundamental from which a part can be named. On 44 recordings, combs of a race up to 0.47 deep belonged to
+ * another fault more often than not and all from 0.62 but one to their own; what is shallower is left to levels and
+ * trends. The spin of an element smears its line.
  */
-const LEAST_DEPTH = { race: 0.5, cage: 0.45, element: 0.35 } as const;
+const LEAST_DEPTH = { race: 0.55, cage: 0.45, element: 0.35 } as const;
 /** Part of all modulation that the part must explain; what an element shows is less of a comb, so it must be more. */
 const LEAST_SHARE = { race: 0.25, cage: 0.5, elementWithHarmonic: 0.5, elementWithSideband: 0.7 } as const;
 /**
@@ -50,7 +51,7 @@ const RIVALS = 6;
  * @param rates of the bearing, per shaft revolution, from its geometry and not from rules of thumb
  * @param shaftHz shaft speed in hertz
  * @returns the accusation, or null where none is deep enough, complete enough and clearly better than the next
- * Valid with lines at most 1/30 of an order apart; wider ones let a comb fit nearly anything.
+ * Valid with lines at most 1/20 of an order apart; wider ones cannot keep a cage and the multiples of the shaft apart.
  * Source: lines expected by McFadden and Smith 1984 and Randall and Antoni 2011 (from memory); the rule is our own, its
  *   thresholds lie on a plateau of the open recordings of Case Western Reserve University and MFPT.
  * Worked: shaft 30 Hz, BPFO 3.585: lines 107.6 Hz (depth 0.8) and 215.2 Hz (0.6) and nothing else: outer, score 1.0.

@@ -18,10 +18,10 @@ const CUT_S = 0.8 * ENVELOPE_EDGE_S;
 const LEAST_BLOCKS = 1.5;
 /** Fewer lines than this tell nothing apart. */
 const LEAST_LINES = 100;
-/** A bearing is judged on blocks of this many turns where the record allows: lines 1/40 of an order apart. */
-const WANTED_TURNS = 40;
-/** With fewer, lines are so wide that a comb fits nearly anything. */
-const LEAST_TURNS = 30;
+/** A bearing is judged on blocks of this many turns where the record allows: lines 1/100 of an order apart. */
+const WANTED_TURNS = 100;
+/** With fewer, a line is wider than the distance of one bearing's cage from another's, or of a race from the shaft. */
+const LEAST_TURNS = 20;
 /** Two lines closer than the half width of a Hann main lobe look like one. */
 const TELL_APART_LINES = 2;
 /** Bands down to 1/16 of the spectrum: narrower ones follow single tones. */
@@ -89,7 +89,7 @@ export function measureEnvelope(
   }
 
   const foreignHz = [2 * plan.mainsHz, ...otherHz];
-  const judgedS = Math.max(blockS, Math.min(WANTED_TURNS / shaftHz, longestS));
+  const judgedS = Math.min(WANTED_TURNS / shaftHz, longestS);
   let shown = bearings[0]!;
   if (judgedS * shaftHz < LEAST_TURNS) {
     doubts.push(

@@ -100,8 +100,8 @@ describe('judgeBearing', () => {
         [3.5848, depth],
         [2 * 3.5848, 0.8 * depth],
       ]);
-    expect(partOf(at(0.51))).toBe('outer');
-    expect(partOf(at(0.49))).toBeNull();
+    expect(partOf(at(0.56))).toBe('outer');
+    expect(partOf(at(0.54))).toBeNull();
   });
 
   it('wants a harmonic of a race', () => {
@@ -157,7 +157,7 @@ describe('judgeBearing', () => {
     expect(
       partOf(
         band([
-          [3.5848, 0.55],
+          [3.5848, 0.6],
           [7.1696, 0.1],
           [2.2, 0.4],
         ]),

@@ -300,7 +300,7 @@ describe('why a figure of the envelope is doubtful', () => {
     expect(short.reading?.defect).toBe('outer');
     expect(short.why.join()).toContain('record too short: envelope lines of');
     expect(short.uncertain).toBe(true);
-    const shorter = at(1.5);
+    const shorter = at(1.2);
     expect(shorter.reading?.defect).toBeNull();
     expect(shorter.reading?.bpfo?.line).toBeGreaterThan(0);
     expect(shorter.why.join()).toContain('record too short to judge a bearing');
