@@ -17,12 +17,15 @@ import { topicsOf } from '../uplink/topics.ts';
 import { Uplink } from '../uplink/uplink.ts';
 import { clockState, type StationClock, systemClock } from './clock.ts';
 import { healthBody } from './health.ts';
+import { noteEntry } from './journal-entry.ts';
 import { Judging } from './judging.ts';
+import { Learning } from './learning.ts';
 import { LiveJudge } from './live-judge.ts';
 import type { Log } from './log.ts';
 import { MeasuringRoom } from './measuring-room.ts';
 import { ownTopics } from './own-topics.ts';
 import { ReadingPost } from './reading-post.ts';
+import { riseInputs } from './rises.ts';
 import { answerAsks } from './station-asks.ts';
 import { StationLinks } from './station-links.ts';
 import { ToldValues, toldTopics } from './told.ts';
@@ -31,6 +34,7 @@ import { trendWatches } from './trend-watches.ts';
 const TICK_MS = 1000;
 const HEALTH_EVERY_S = 6 * 3600;
 const CLOCK_CHECK_S = 600;
+const RISES_EVERY_S = 3600;
 /** A stop is done, or given up, within this. */
 const STOP_MS = 4500;
 
@@ -50,8 +54,14 @@ export class Agent {
   readonly #links: StationLinks;
   readonly #told: ToldValues;
   readonly #loopDelay = monitorEventLoopDelay({ resolution: 10 });
-  #parts: { uplink: Uplink; ids: MessageIds; judge: LiveJudge; judging: Judging; post: ReadingPost } | null =
-    null;
+  #parts: {
+    uplink: Uplink;
+    ids: MessageIds;
+    judge: LiveJudge;
+    judging: Judging;
+    post: ReadingPost;
+    learning: Learning;
+  } | null = null;
   #openedS = 0;
   #runSAtOpen = 0;
   #clockSays: 'synchronised' | 'free' = 'free';
@@ -59,6 +69,7 @@ export class Agent {
   #tickS = 0;
   #healthS = 0;
   #clockS = 0;
+  #risesS = 0;
   #storeTrouble = false;
   #cpu = { usage: process.cpuUsage(), atS: 0 };
 
@@ -118,6 +129,7 @@ export class Agent {
     this.#cpu = { usage: process.cpuUsage(), atS: this.#tickS };
     // The first health follows once the links have had time to speak.
     this.#healthS = this.#tickS - HEALTH_EVERY_S + 30;
+    this.#risesS = this.#tickS - RISES_EVERY_S;
     this.#timer = setInterval(() => this.#tick(), TICK_MS);
     this.#log.info('running', { site: this.#station.site.id, config: this.#station.configHash });
   }
@@ -128,6 +140,7 @@ export class Agent {
     this.#logLinks();
     await this.#room.stop();
     await this.#parts?.judge.stop();
+    await this.#parts?.learning.stop();
     await this.#parts?.uplink.stop(STOP_MS);
     await this.#store.close();
     this.#loopDelay.disable();
@@ -157,6 +170,7 @@ export class Agent {
       },
       evidence: () => undefined,
       commitFailed: (error) => this.#storeFailed(error),
+      inputFailed: (error) => this.#log.error('an alarm input could not be judged', error),
       monotonicS: () => this.#clock.monotonicS(),
     });
     const post = new ReadingPost(station.publish, trendWatches(station), {
@@ -188,8 +202,17 @@ export class Agent {
     );
     await judge.restore(restored.effects);
     await emptyForgotten(store, ids, ownTopics(station, plan, topics));
-    answerAsks(uplink, { judge, post, store, ids, plan, now: () => this.#now() });
-    return { uplink, ids, judge, judging, post };
+    const learning = new Learning(await store.baselines(), {
+      plan: () => judging.plan,
+      commit: (commit, note) => {
+        const journal = note ? [noteEntry(ids, note.machine, note, this.#now())] : [];
+        return store.commit({ ...commit, journal });
+      },
+      failed: (error) => this.#storeFailed(error),
+      now: () => this.#now(),
+    });
+    answerAsks(uplink, { judge, post, store, ids, judging, learning, now: () => this.#now() });
+    return { uplink, ids, judge, judging, post, learning };
   }
 
   #opened(report: OpenReport): void {
@@ -201,7 +224,11 @@ export class Agent {
     const parts = this.#parts;
     if (!parts) return;
     const t = new Date(wallMs).toISOString();
-    void parts.judge.take({ kind: 'reading', pointKey: point.key, reading, t, elapsedS });
+    const { learning, judging } = parts;
+    const baseline = learning.baselineOf(point.key);
+    void parts.judge
+      .take({ kind: 'reading', pointKey: point.key, reading, t, elapsedS, baseline })
+      .then(() => learning.take(point.key, reading, judging.state));
     const findings = parts.judging.noteReading(point.key, reading);
     if (findings) void parts.judge.take({ kind: 'findings', ...findings, t });
     void parts.post.take(point.key, t, reading);
@@ -209,7 +236,10 @@ export class Agent {
 
   #tick(): void {
     const nowS = this.#clock.monotonicS();
-    void this.#parts?.judge.take({ kind: 'tick', elapsedS: nowS - this.#tickS, t: this.#now() });
+    const elapsedS = nowS - this.#tickS;
+    void this.#parts?.judge.take({ kind: 'tick', elapsedS, t: this.#now() });
+    this.#parts?.learning.tick(elapsedS);
+    this.#parts?.post.tick();
     this.#tickS = nowS;
     if (nowS - this.#healthS >= HEALTH_EVERY_S) {
       this.#healthS = nowS;
@@ -218,6 +248,18 @@ export class Agent {
     if (nowS - this.#clockS >= CLOCK_CHECK_S) {
       this.#clockS = nowS;
       void this.#checkClock();
+    }
+    if (nowS - this.#risesS >= RISES_EVERY_S) {
+      this.#risesS = nowS;
+      this.#watchRises().catch((error) => this.#storeFailed(error));
+    }
+  }
+
+  async #watchRises(): Promise<void> {
+    const parts = this.#parts;
+    if (!parts) return;
+    for await (const input of riseInputs(parts.judging.plan, this.#store, this.#now())) {
+      await parts.judge.take(input);
     }
   }
 
@@ -246,6 +288,7 @@ export class Agent {
           skipped: this.#links.skipped,
           worker_restarts: this.#room.workerRestarts,
           readings_lost: parts.post.lost,
+          readings_held: parts.post.held,
           alarm_inputs_dropped: parts.judge.dropped,
           told_unreadable: this.#told.unreadable,
         },

@@ -20,10 +20,10 @@ export interface JudgeHost {
   committed(): void;
   evidence(effect: Extract<AlarmEffect, { kind: 'evidence' }>): void;
   commitFailed(error: unknown): void;
+  /** The input was given up. */
+  inputFailed(error: unknown): void;
   monotonicS(): number;
 }
-
-export type AskOutcome = Pick<Extract<AlarmEffect, { kind: 'answer' }>, 'ok'> & { error?: string };
 
 type Waiting = { resolve(effects: readonly AlarmEffect[]): void } & (
   | { input: AlarmInput }
@@ -71,7 +71,7 @@ export class LiveJudge {
         const oldest = this.#queue.findIndex((waiting) => 'input' in waiting);
         this.#queue.splice(oldest, 1)[0]?.resolve([]);
       }
-      this.#running ??= this.#run();
+      this.#start();
     });
   }
 
@@ -79,7 +79,7 @@ export class LiveJudge {
   replan(plan: AlarmPlan): Promise<void> {
     return new Promise((resolve) => {
       this.#queue.push({ plan, resolve: () => resolve() });
-      this.#running ??= this.#run();
+      this.#start();
     });
   }
 
@@ -91,21 +91,38 @@ export class LiveJudge {
   /** Judges what waits and writes the idle rows; gives up where the database does not take them. */
   async stop(): Promise<void> {
     this.#stopped = true;
-    await this.#running;
+    while (this.#running) await this.#running;
     if (this.#idleRows.size > 0)
       await this.#host.commit({ alarmStates: this.#takeIdleRows() }).catch(() => undefined);
   }
 
+  #start(): void {
+    this.#running ??= this.#run().finally(() => {
+      this.#running = null;
+      if (this.#queue.length > 0) this.#start();
+    });
+  }
+
   async #run(): Promise<void> {
     for (let next = this.#queue.shift(); next; next = this.#queue.shift()) {
-      const { effects, keep } =
-        'plan' in next ? this.#judging.replan(next.plan) : this.#judging.step(next.input);
-      const durable = await this.#commit(effects);
-      if (durable) keep();
-      next.resolve(durable ? effects : []);
-      for (const effect of effects) if (effect.kind === 'evidence') this.#host.evidence(effect);
+      try {
+        await this.#judge(next);
+      } catch (error) {
+        // A fault in judging one input must not silence the alarms of all later ones.
+        this.dropped++;
+        this.#host.inputFailed(error);
+        next.resolve([]);
+      }
     }
-    this.#running = null;
+  }
+
+  async #judge(next: Waiting): Promise<void> {
+    const { effects, keep } =
+      'plan' in next ? this.#judging.replan(next.plan) : this.#judging.step(next.input);
+    const durable = await this.#commit(effects);
+    if (durable) keep();
+    next.resolve(durable ? effects : []);
+    for (const effect of effects) if (effect.kind === 'evidence') this.#host.evidence(effect);
   }
 
   /** Until it is durable, or the agent stops. */
