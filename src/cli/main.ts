@@ -98,6 +98,20 @@ program
   );
 
 program
+  .command('learn')
+  .description('learns the baseline of each point from good readings of the running agent')
+  .addOption(stationOption())
+  .option('--hours <n>', 'how long the agent collects readings; 24 unless given', positive)
+  .option('--no-accept', 'leave what was learned as a proposal, for ask/baseline to accept or reject')
+  .action(
+    runs(async ({ config, hours, accept }: { config: string; hours?: number; accept: boolean }) => {
+      const { learnCommand } = await import('./learn.ts');
+      const [out, err] = [process.stdout, process.stderr];
+      return learnCommand({ config, hours: hours ?? null, accept, out, err });
+    }),
+  );
+
+program
   .command('replay')
   .description('runs a recording through the same measuring, finding and alarm code as the agent')
   .argument('<file>', 'a WAV recording')

@@ -38,6 +38,10 @@ export const errorCatalogue = {
   'uplink.certificate':
     'Check `ca_file`, that the certificate is still valid and that its name is the host in `broker.url`.',
   'uplink.clock': 'Set the clock of the gateway (NTP, or a battery clock); measuring goes on meanwhile.',
+  'uplink.unreachable':
+    'Check that the broker runs and is the one of the station file; the embedded one runs within the agent, on a fixed port.',
+  'uplink.no-answer':
+    'Check that the agent runs and is connected, and that the broker lets this user write ask/ and read answer/.',
   'uplink.refused': 'Check `username`, `password_file` and what the broker allows this client.',
 } as const satisfies Record<string, string>;
 

@@ -16,6 +16,8 @@ export interface HealthSources {
     skipped: number;
     worker_restarts: number;
     readings_lost: number;
+    /** Changes of zone or defect that waited because the point flaps. */
+    readings_held: number;
     alarm_inputs_dropped: number;
     told_unreadable: number;
   };

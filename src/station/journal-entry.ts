@@ -2,11 +2,23 @@
 
 import type { AlarmJournalEntry } from '../alarm/effects.ts';
 import type { JournalEntry } from '../store/types.ts';
+import type { MessageIds } from '../uplink/message-ids.ts';
 import { readingBody } from '../uplink/payload.ts';
 
 export function journalEntryOf({ id, t, key, payload, reading }: AlarmJournalEntry): JournalEntry {
   const body = reading === null ? null : readingBody(t, reading);
   return { n: numberOf(id), kind: 'alarm', key, t, json: JSON.stringify({ ...payload, reading: body }) };
+}
+
+/** What a person notes of a machine. */
+export function noteEntry(
+  ids: MessageIds,
+  machine: string,
+  note: { readonly by: string | null; readonly text: string },
+  t: string,
+): JournalEntry {
+  const n = ids.take();
+  return { n, kind: 'note', key: machine, t, json: JSON.stringify({ id: ids.idOf(n), ...note }) };
 }
 
 /** The number in a message id `<store>-<n>`. */

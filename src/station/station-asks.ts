@@ -1,13 +1,14 @@
 /** What the station answers to asks. Each handler does one thing or refuses; sizes are bounded here. */
 
 import type { AskInput } from '../alarm/effects.ts';
-import type { AlarmPlan } from '../alarm/plan.ts';
 import type { JournalEntry, Store, TrendPoint } from '../store/types.ts';
 import { AskRefused } from '../uplink/asks.ts';
 import type { MessageIds } from '../uplink/message-ids.ts';
 import { rounded } from '../uplink/payload.ts';
 import type { Uplink } from '../uplink/uplink.ts';
-import { journalLine, numberOf } from './journal-entry.ts';
+import { journalLine, noteEntry, numberOf } from './journal-entry.ts';
+import type { Judging } from './judging.ts';
+import type { Learning } from './learning.ts';
 import type { LiveJudge } from './live-judge.ts';
 import type { ReadingPost } from './reading-post.ts';
 
@@ -16,7 +17,8 @@ export interface AskSources {
   post: Pick<ReadingPost, 'latest'>;
   store: Pick<Store, 'journal' | 'trend' | 'commit'>;
   ids: MessageIds;
-  plan: AlarmPlan;
+  judging: Pick<Judging, 'plan' | 'state'>;
+  learning: Pick<Learning, 'start' | 'accept' | 'reject' | 'show'>;
   now(): string;
 }
 
@@ -34,8 +36,9 @@ export function answerAsks(uplink: Pick<Uplink, 'handle'>, sources: AskSources):
     return {};
   };
   const t = () => sources.now();
+  const plan = () => sources.judging.plan;
 
-  uplink.handle('readings', () => ({ readings: fitting(sources.post.latest()) }));
+  uplink.handle('readings', () => ({ readings: fitting(sources.post.latest(), 'see the retained topic') }));
   uplink.handle('acknowledge', ({ alarm, raised, by }) =>
     operate({ kind: 'acknowledge', alarm, by, t: t(), ...(raised === undefined ? {} : { raised }) }),
   );
@@ -51,15 +54,27 @@ export function answerAsks(uplink: Pick<Uplink, 'handle'>, sources: AskSources):
     );
   }
   uplink.handle('note', async ({ machine, by, text }) => {
-    if (!sources.plan.machines.has(machine)) throw new AskRefused(`there is no machine ${machine}`);
-    const n = sources.ids.take();
-    const json = JSON.stringify({ id: sources.ids.idOf(n), by, text });
-    await sources.store.commit({ journal: [{ n, kind: 'note', key: machine, t: t(), json }] });
-    return { noted: sources.ids.idOf(n) };
+    if (!plan().machines.has(machine)) throw new AskRefused(`there is no machine ${machine}`);
+    const entry = noteEntry(sources.ids, machine, { by, text }, t());
+    await sources.store.commit({ journal: [entry] });
+    return { noted: sources.ids.idOf(entry.n), ...newBaselineOffer(plan().station.asks, machine) };
+  });
+  uplink.handle('baseline', async ({ machine, action, hours, by = null, point }) => {
+    const { learning, judging } = sources;
+    const state = await {
+      start: () => learning.start(machine, hours, by, judging.state),
+      accept: () => learning.accept(machine, by),
+      reject: () => learning.reject(machine, by),
+      show: () => learning.show(machine),
+    }[action]();
+    const shown = Object.entries(state.points).filter(
+      ([id]) => point === undefined || point === `${machine}/${id}`,
+    );
+    return { ...state, points: fitting(Object.fromEntries(shown), 'ask with its `point`') };
   });
   uplink.handle('journal', async ({ since }) => journalAnswer(await journalSince(sources, since)));
   uplink.handle('trend', async ({ point, watch, from, to, points }) => {
-    if (!sources.plan.points.has(point)) throw new AskRefused(`there is no point ${point}`);
+    if (!plan().points.has(point)) throw new AskRefused(`there is no point ${point}`);
     const [fromMs, toMs] = [Date.parse(from), Date.parse(to)];
     if (!(fromMs < toMs)) throw new AskRefused('`from` must be before `to`');
     const trend = await sources.store.trend({
@@ -71,6 +86,18 @@ export function answerAsks(uplink: Pick<Uplink, 'handle'>, sources: AskSources):
     });
     return { point, watch, trend: trend.map(trendLine) };
   });
+}
+
+/** What was changed is noted; what was learned of the machine before may no longer hold. */
+function newBaselineOffer(asks: readonly string[], machine: string): Record<string, unknown> {
+  if (!asks.includes('baseline')) return {};
+  return {
+    new_baseline: {
+      ask: 'baseline',
+      with: { machine, action: 'start' },
+      when: 'if a part was changed: values learned before it may no longer hold',
+    },
+  };
 }
 
 function trendLine({ wallMs, mean, min, max, count }: TrendPoint): Record<string, unknown> {
@@ -106,13 +133,16 @@ function journalAnswer(entries: readonly JournalEntry[]): Record<string, unknown
   return { journal: lines, more: lines.length < entries.length || entries.length === MAX_JOURNAL };
 }
 
-/** Readings as they fit; points that do not are named, to be taken from their retained topics. */
-function fitting(readings: Record<string, Record<string, unknown>>): Record<string, unknown> {
+/** Points as they fit; those that do not are named, with where they can be had. */
+function fitting(
+  points: Readonly<Record<string, object | string>>,
+  elsewhere: string,
+): Record<string, unknown> {
   const out: Record<string, unknown> = {};
   let bytes = 0;
-  for (const [key, reading] of Object.entries(readings)) {
+  for (const [key, reading] of Object.entries(points)) {
     bytes += JSON.stringify(reading).length;
-    out[key] = bytes > MAX_ANSWER_BYTES ? 'too large for one answer: see the retained topic' : reading;
+    out[key] = bytes > MAX_ANSWER_BYTES ? `too large for one answer: ${elsewhere}` : reading;
   }
   return out;
 }

@@ -16,6 +16,7 @@ import type {
   MessageClass,
   OpenReport,
   OutboxRow,
+  RecentTrendQuery,
   StoreCounters,
   StoreEngine,
   StoreLimits,
@@ -146,6 +147,10 @@ export class Database implements StoreEngine {
 
   trend(query: TrendQuery): TrendPoint[] {
     return this.#guard(() => this.#open().records.trend(query));
+  }
+
+  recentTrend(query: RecentTrendQuery): TrendPoint[] {
+    return this.#guard(() => this.#open().records.recentTrend(query));
   }
 
   budget(day: number): BudgetLine[] {

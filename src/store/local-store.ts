@@ -16,6 +16,7 @@ export function localStore(engine: StoreEngine): Store {
     baselines: async () => engine.baselines(),
     journal: async (query) => engine.journal(query),
     trend: async (query) => engine.trend(query),
+    recentTrend: async (query) => engine.recentTrend(query),
     budget: async (day) => engine.budget(day),
     close: async () => engine.close(),
   };

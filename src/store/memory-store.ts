@@ -14,6 +14,7 @@ import {
   type OpenReport,
   type OutboxMessage,
   type OutboxRow,
+  type RecentTrendQuery,
   type StoreCounters,
   type StoreEngine,
   type StoreLimits,
@@ -196,16 +197,18 @@ export class MemoryStore implements StoreEngine {
       );
       spans.set(span, [...(spans.get(span) ?? []), value]);
     }
-    return [...spans.values()]
-      .map((values) => ({
-        wallMs: Math.max(...values.map((v) => v.wallMs)),
-        runS: Math.max(...values.map((v) => v.runS)),
-        mean: sum(values, (v) => v.value) / values.length,
-        min: Math.min(...values.map((v) => v.value)),
-        max: Math.max(...values.map((v) => v.value)),
-        count: values.length,
-      }))
-      .sort((a, b) => a.wallMs - b.wallMs);
+    return [...spans.values()].map(trendPoint).sort((a, b) => a.wallMs - b.wallMs);
+  }
+
+  recentTrend({ point, watch, lastS, points }: RecentTrendQuery): TrendPoint[] {
+    const series = this.#trend.filter((value) => value.point === point && value.watch === watch);
+    const end = Math.max(...series.map(({ runS }) => runS));
+    const spans = new Map<number, (TrendValue & { runS: number })[]>();
+    for (const value of series.filter(({ runS }) => runS > end - lastS)) {
+      const span = Math.floor(((end - value.runS) * points) / lastS);
+      spans.set(span, [...(spans.get(span) ?? []), value]);
+    }
+    return [...spans.values()].map(trendPoint).sort((a, b) => a.runS - b.runS);
   }
 
   budget(day: number): BudgetLine[] {
@@ -273,6 +276,17 @@ function put(map: Map<string, string>, changes: readonly { key: string; json: st
     if (json === null) map.delete(key);
     else map.set(key, json);
   }
+}
+
+function trendPoint(values: readonly (TrendValue & { runS: number })[]): TrendPoint {
+  return {
+    wallMs: Math.max(...values.map((v) => v.wallMs)),
+    runS: Math.max(...values.map((v) => v.runS)),
+    mean: sum(values, (v) => v.value) / values.length,
+    min: Math.min(...values.map((v) => v.value)),
+    max: Math.max(...values.map((v) => v.value)),
+    count: values.length,
+  };
 }
 
 function sum<T>(items: readonly T[], of: (item: T) => number): number {

@@ -4,6 +4,7 @@ import type {
   Commit,
   JournalEntry,
   JournalQuery,
+  RecentTrendQuery,
   StoreCounters,
   StoreLimits,
   TrendPoint,
@@ -99,6 +100,10 @@ export class Records {
     }) as TrendPoint[];
   }
 
+  recentTrend({ point, watch, lastS, points }: RecentTrendQuery): TrendPoint[] {
+    return this.#sql.recentTrend.all({ point, watch, last: lastS, spans: points }) as TrendPoint[];
+  }
+
   budget(day: number): BudgetLine[] {
     return this.#sql.budget.all(day) as BudgetLine[];
   }
@@ -131,6 +136,12 @@ const statements = {
       max(value) AS max, count(*) AS count
     FROM trend WHERE point = :point AND watch = :watch AND wall_ms BETWEEN :from AND :to
     GROUP BY CAST((wall_ms - :from) * :spans / :width AS INTEGER) ORDER BY wallMs`,
+  recentTrend: `WITH series AS (SELECT * FROM trend WHERE point = :point AND watch = :watch),
+      newest AS (SELECT max(made_s) AS end FROM series)
+    SELECT max(wall_ms) AS wallMs, max(made_s) AS runS, avg(value) AS mean, min(value) AS min,
+      max(value) AS max, count(*) AS count
+    FROM series, newest WHERE made_s > end - :last
+    GROUP BY CAST((end - made_s) * :spans / :last AS INTEGER) ORDER BY runS`,
   putBudget: `INSERT INTO budget VALUES (?, ?, ?, ?)
     ON CONFLICT (day, class) DO UPDATE SET sent = excluded.sent, received = excluded.received`,
   pruneBudget: 'DELETE FROM budget WHERE day < ?',

@@ -114,6 +114,16 @@ export interface TrendQuery {
   points: number;
 }
 
+/** The end of a series, by run time: wall time may have jumped, and a machine that stood still keeps its last days. */
+export interface RecentTrendQuery {
+  point: string;
+  watch: string;
+  /** Run time before the newest value of the series, in seconds. */
+  lastS: number;
+  /** As in {@link TrendQuery}. */
+  points: number;
+}
+
 export interface TrendPoint {
   /** Wall time of the last value in the span. */
   wallMs: number;
@@ -169,6 +179,7 @@ export interface StoreEngine {
   baselines(): Record<string, string>;
   journal(query: JournalQuery): JournalEntry[];
   trend(query: TrendQuery): TrendPoint[];
+  recentTrend(query: RecentTrendQuery): TrendPoint[];
   budget(day: number): BudgetLine[];
   close(): void;
 }
@@ -194,6 +205,7 @@ export interface Store {
   baselines(): Promise<Record<string, string>>;
   journal(query: JournalQuery): Promise<JournalEntry[]>;
   trend(query: TrendQuery): Promise<TrendPoint[]>;
+  recentTrend(query: RecentTrendQuery): Promise<TrendPoint[]>;
   budget(day: number): Promise<BudgetLine[]>;
   close(): Promise<void>;
 }

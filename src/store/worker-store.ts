@@ -10,6 +10,7 @@ import type {
   MessageClass,
   OpenReport,
   OutboxRow,
+  RecentTrendQuery,
   Store,
   StoreCounters,
   TrendPoint,
@@ -117,6 +118,10 @@ export class WorkerStore implements Store {
 
   async journal(query: JournalQuery): Promise<JournalEntry[]> {
     return (await this.#ask('journal', [query])) as JournalEntry[];
+  }
+
+  async recentTrend(query: RecentTrendQuery): Promise<TrendPoint[]> {
+    return (await this.#ask('recentTrend', [query])) as TrendPoint[];
   }
 
   async trend(query: TrendQuery): Promise<TrendPoint[]> {

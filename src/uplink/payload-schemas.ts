@@ -235,6 +235,11 @@ export const askSchemas = {
     id: askId,
     machine: machineName,
     action: z.enum(['start', 'accept', 'reject', 'show']),
+    /** With `start`: how long to collect, in hours of the running agent. */
+    hours: z.number().positive().max(720).optional(),
+    /** Only this one in the answer. */
+    point: pointName.optional(),
+    by: by.optional(),
   }),
 } as const;
 

@@ -14,6 +14,7 @@ export interface Topics {
   agentAlarm(subject: string, rule: string): string;
   state(machine: string): string;
   finding(machine: string): string;
+  ask(verb: string): string;
   answer(askId: string): string;
   answerPart(askId: string, part: number): string;
   /** The verb of a topic of `asks`; null: another topic. */
@@ -33,6 +34,7 @@ export function topicsOf(site: string): Topics {
     agentAlarm: (subject, rule) => `${root}agent/alarm/${subject}.${rule}`,
     state: (machine) => `${root}${machine}/state`,
     finding: (machine) => `${root}${machine}/finding`,
+    ask: (verb) => `${askRoot}${verb}`,
     answer: (askId) => `${root}answer/${askId}`,
     answerPart: (askId, part) => `${root}answer/${askId}/${part}`,
     verbOf: (topic) => (topic.startsWith(askRoot) ? topic.slice(askRoot.length) : null),
