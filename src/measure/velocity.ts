@@ -55,10 +55,8 @@ export function displacementPeakToPeak(record: DecimatedRecord, bandHz: readonly
   return { value: high - low, why: null };
 }
 
-function bandRms(spectrum: Spectrum, [low, high]: readonly [number, number], weight: Float64Array): number {
-  // Where padding put bins between the lines, a line on the edge has 1 % of its power in a bin just beyond the reach.
-  const outwardHz = spectrum.binHz < spectrum.lineHz ? spectrum.binHz : 0;
-  return Math.sqrt(bandMeanSquare(spectrum, [low - outwardHz, high + outwardHz], { weight }));
+function bandRms(spectrum: Spectrum, bandHz: readonly [number, number], weight: Float64Array): number {
+  return Math.sqrt(bandMeanSquare(spectrum, bandHz, { weight }));
 }
 
 function outOfReach(record: DecimatedRecord, bandHz: readonly [number, number], name: string): string | null {

@@ -109,7 +109,7 @@ def decimated(seed):
 
 
 def reach(name):
-    """How far a band reaches beyond its edges, in lines: 0.75 of the half main lobe."""
+    """How far a band reaches beyond its edges, in lines: 0.75 of the half main lobe; every bin that it touches counts."""
     return 0.75 * {"rectangular": 1, "hann": 2, "flat-top": 5}[name]
 
 
@@ -139,7 +139,8 @@ def spectra(seed):
             bands = []
             for low, high in ((100, 400), (50, 1000), (10, 60)):
                 r = reach(name) * rate / block
-                inside = (f >= low - r - 1e-6) & (f <= high + r + 1e-6)
+                half = rate / nfft / 2
+                inside = (f + half > low - r + 1e-6) & (f - half < high + r - 1e-6)
                 spread = line_spread(name) * (rate / block) ** 2
                 with np.errstate(divide="ignore"):
                     velocity = np.where(f > 0, (1e3 * G / (2 * np.pi)) ** 2 / (f**2 + 3 * spread), 0)

@@ -82,9 +82,9 @@ describe.each(windows)('with the %s window', (window) => {
     const { rms } = statistics(x);
     // Random error of a band of B Hz over T s is 1/√(BT) (Bendat and Piersol, from memory): 0.3 % and 0.7 %; three times that.
     expect(Math.abs(total(spectrum.meanSquare) / rms ** 2 - 1)).toBeLessThan(0.01);
-    const density = bandMeanSquare(spectrum, [100, 200]) / 100;
-    const reach = (2 * 0.75 * { rectangular: 1, hann: 2, 'flat-top': 5 }[window]) / 100;
-    expect(Math.abs(density / (1 / 500) / (1 + reach) - 1)).toBeLessThan(0.02);
+    // Bins of 1 Hz: those of the band, and 1, 1 and 4 that its reach touches at each side.
+    const bins = 101 + 2 * { rectangular: 1, hann: 1, 'flat-top': 4 }[window];
+    expect(Math.abs((bandMeanSquare(spectrum, [100, 200]) * 500) / bins - 1)).toBeLessThan(0.02);
   });
 });
 
@@ -104,8 +104,9 @@ describe('bands', () => {
   it('reach 1.5 lines outward for Hann', () => {
     expect(bandBins(spectrumOf(50), [10, 20])).toEqual([9, 21]);
     expect(bandBins(spectrumOf(50), [0, 2000])).toEqual([0, 512]);
-    expect(bandBins(spectrumOf(50, 'flat-top'), [10, 20])).toEqual([7, 23]);
-    expect(bandBins(spectrumOf(50, 'rectangular'), [10, 20])).toEqual([10, 20]);
+    // 3.75 and 0.75 lines: every bin that the reach touches counts.
+    expect(bandBins(spectrumOf(50, 'flat-top'), [10, 20])).toEqual([6, 24]);
+    expect(bandBins(spectrumOf(50, 'rectangular'), [10, 20])).toEqual([9, 21]);
   });
 
   it('hold a tone on their edge whole, wherever it stands between the lines', () => {
@@ -117,6 +118,23 @@ describe('bands', () => {
       expect(Math.sqrt(2 * bandMeanSquare(spectrumOf(hz), [hz - 20, hz]))).toBeGreaterThan(0.995);
     }
   });
+
+  it.each([600, 700, 868, 1000])(
+    'hold it as whole where blocks of %d samples are padded to 1024',
+    (blockSamples) => {
+      for (const hz of [40, 40.2, 40.5, 40.7, 60]) {
+        const x = sine(8192, { rateHz, hz, phase: 0.2 });
+        const spectrum = averagedSpectrum(x, { rateHz, blockSamples, window: 'hann' });
+        for (const band of [
+          [hz, hz + 20],
+          [hz - 20, hz],
+        ] as const) {
+          const rms = Math.sqrt(2 * bandMeanSquare(spectrum, band));
+          expect(Math.abs(rms - 1), `${hz} Hz on an edge of ${band.join('-')}`).toBeLessThan(0.0025);
+        }
+      }
+    },
+  );
 
   it('hold next to nothing of a tone five lines outside', () => {
     expect(bandMeanSquare(spectrumOf(35), [40, 60])).toBeLessThan(1e-6);
