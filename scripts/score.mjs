@@ -42,11 +42,10 @@ function writeWav(path, samples, rateHz) {
 }
 
 /** The rigs are small and shake far less than a pump, so they count as running from 0.01 mm/s. */
-function stationYaml({ sample_rate_hz, rpm }, bearing, measure = '') {
+function stationYaml({ sample_rate_hz, rpm }, bearing) {
   const { ftf, bsf, bpfo, bpfi } = bearing.multiples;
   return `site: {id: score, name: Score, mains_hz: 60}
 broker: {embedded: {port: 1883}}
-${measure}
 links:
   - {id: node, serial: {path: /dev/null, baud: 115200}, format: frames, expect: {sample_rate_hz: ${sample_rate_hz}, channels: [x]}}
 machines:
@@ -87,11 +86,10 @@ async function verdict(record, bearing) {
   };
 }
 
-/** The whole recording as one record, unrounded, its velocity spectrum from 1 s blocks as the reference analysis has it. */
+/** The whole recording as one record, unrounded, with the default settings. */
 function disagreements({ name, meta }, samples, reference) {
-  const measure = 'measure: {velocity: {fmax_hz: 1000, lines: 1000, averages: 1}}';
   const config = join(work, 'station.yaml');
-  writeFileSync(config, stationYaml(meta, meta.bearing, measure));
+  writeFileSync(config, stationYaml(meta, meta.bearing));
   const [machine] = loadStation(config).machines;
   const counts = Int32Array.from({ length: samples.length / 2 }, (_, i) => samples.readInt16LE(2 * i));
   const reading = measureRecord(planPoint(machine.points[0], machine, meta.sample_rate_hz, 60), {
