@@ -122,10 +122,11 @@ export function makeReading(shown: Shown): Reading {
     first_index: 0,
     rate: { hz: 40960, source: 'nominal', ppm: null },
     running: measured ? running : null,
-    shaft: { hz: measured ? (shown.shaftHz ?? 24.7) : null, source: 'spectrum' },
+    shaft: { hz: measured ? (shown.shaftHz ?? (running === false ? null : 24.7)) : null, source: 'spectrum' },
     velocity: { unit: 'mm/s', overall: mmS },
     displacement: { unit: 'µm', rms: measured ? um : null, p2p: null },
     orders: { 1: { mm_s: null, deg: null }, 2: { mm_s: null, deg: null }, 3: { mm_s: null, deg: null } },
+    tones: { vane_pass: null, twice_mains: null },
     acceleration: {
       unit: 'g',
       band_hz: [2, 16000],
