@@ -23,6 +23,9 @@ function wholeNumber(text: string): number {
   return value;
 }
 
+/** The command line is wrong, or names a file that cannot be read. */
+const usageCodes: readonly string[] = ['command.usage', 'file.unreadable'];
+
 /** Says what went wrong on standard error and gives the exit status. */
 function failure(error: unknown): number {
   if (error instanceof ConfigError) {
@@ -31,7 +34,7 @@ function failure(error: unknown): number {
   }
   if (error instanceof ForebayError) {
     process.stderr.write(`forebay: ${error.message}\n  ${error.fix} (${error.code})\n`);
-    return error.code === 'command.usage' || error.code.startsWith('config.') ? 2 : 1;
+    return usageCodes.includes(error.code) || error.code.startsWith('config.') ? 2 : 1;
   }
   process.stderr.write(
     `forebay: ${error instanceof Error ? (error.stack ?? error.message) : String(error)}\n`,
