@@ -18,6 +18,7 @@ export const errorCatalogue = {
   'config.impossible': 'Check the figure against the nameplate or the data sheet.',
   'config.secret': 'Move the secret into a file of its own and name that in broker.password_file.',
   'config.not-available-yet': 'Take it out of the station file until a later version brings it.',
+  'config.needs-restart': 'Restart the agent for this change, or take it back.',
   'file.unreadable': 'Check the path and that this user may read it.',
   'recording.malformed':
     'Export the recording again as FLAC or as PCM WAV, 16 to 32 bit, and check that it was copied whole.',

@@ -5,6 +5,7 @@ import { monitorEventLoopDelay } from 'node:perf_hooks';
 import type { AlarmInput, StoredRow } from '../alarm/effects.ts';
 import { restoreAlarms } from '../alarm/engine.ts';
 import { planAlarms } from '../alarm/plan.ts';
+import { ForebayError } from '../config/errors.ts';
 import type { Point, Station } from '../config/station.ts';
 import type { Reading } from '../measure/reading.ts';
 import { storeLimits } from '../store/limits.ts';
@@ -25,9 +26,12 @@ import type { Log } from './log.ts';
 import { MeasuringRoom } from './measuring-room.ts';
 import { ownTopics } from './own-topics.ts';
 import { ReadingPost } from './reading-post.ts';
+import { needsRestart, sameUplink, uplinkSettings } from './reload.ts';
 import { riseInputs } from './rises.ts';
+import type { ServiceManager } from './service-manager.ts';
 import { answerAsks } from './station-asks.ts';
-import { StationLinks } from './station-links.ts';
+import { ringSecondsOf, StationLinks, setupOf } from './station-links.ts';
+import { Supervision } from './supervision.ts';
 import { ToldValues, toldTopics } from './told.ts';
 import { trendWatches } from './trend-watches.ts';
 
@@ -35,17 +39,19 @@ const TICK_MS = 1000;
 const HEALTH_EVERY_S = 6 * 3600;
 const CLOCK_CHECK_S = 600;
 const RISES_EVERY_S = 3600;
-/** A stop is done, or given up, within this. */
-const STOP_MS = 4500;
+/** What each part of a stop may take; together less than 5 s. What is not sent by then stays in the store. */
+const STOP_MS = { links: 800, judging: 800, uplink: 2000, store: 800 };
 
 export interface AgentOptions {
   version: string;
   log: Log;
   clock?: StationClock;
+  /** Whoever started the agent and wants to know how it is. */
+  manager?: ServiceManager;
 }
 
 export class Agent {
-  readonly #station: Station;
+  #station: Station;
   readonly #options: AgentOptions;
   readonly #clock: StationClock;
   readonly #log: Log;
@@ -53,6 +59,7 @@ export class Agent {
   readonly #room: MeasuringRoom;
   readonly #links: StationLinks;
   readonly #told: ToldValues;
+  readonly #supervision: Supervision | null;
   readonly #loopDelay = monitorEventLoopDelay({ resolution: 10 });
   #parts: {
     uplink: Uplink;
@@ -71,6 +78,7 @@ export class Agent {
   #clockS = 0;
   #risesS = 0;
   #storeTrouble = false;
+  #reloading: Promise<void> = Promise.resolve();
   #cpu = { usage: process.cpuUsage(), atS: 0 };
 
   constructor(station: Station, options: AgentOptions) {
@@ -86,14 +94,10 @@ export class Agent {
       onDown: (error) => void this.#reopenStore(error),
     });
     this.#told = new ToldValues(toldTopics(station.machines), () => this.#clock.monotonicS());
-    const points = station.machines.flatMap((machine) => machine.points.map((point) => ({ point, machine })));
-    this.#room = new MeasuringRoom(
-      { points, mainsHz: station.site.mainsHz },
-      {
-        workerLost: (reason) => this.#gateway('measuring', true, reason),
-        workerBack: () => this.#gateway('measuring', false, null),
-      },
-    );
+    this.#room = new MeasuringRoom(setupOf(station), {
+      workerLost: (reason) => this.#gateway('measuring', true, reason),
+      workerBack: () => this.#gateway('measuring', false, null),
+    });
     this.#links = new StationLinks(station, this.#room, this.#told, {
       wallMs: () => this.#clock.wallMs(),
       reading: (point, reading, wallMs, elapsedS) => this.#reading(point, reading, wallMs, elapsedS),
@@ -102,6 +106,16 @@ export class Agent {
         void this.#parts?.judge.take({ kind: 'link', link, conditions, detail: why, t: this.#now() });
       },
     });
+    this.#supervision =
+      options.manager === undefined
+        ? null
+        : new Supervision(options.manager, {
+            links: () => this.#links.health(),
+            measuring: () => ({ waiting: this.#room.waiting, settled: this.#room.settled }),
+            store: this.#store,
+            monotonicS: () => this.#clock.monotonicS(),
+            log: this.#log,
+          });
   }
 
   /** The port of the embedded broker; null: the broker is another's. */
@@ -122,6 +136,9 @@ export class Agent {
       this.#log.warn('the database was broken and has been set aside', { reason, path });
       this.#gateway('database', true, `${reason}; it was set aside as ${path} and a fresh one begun`);
     } else this.#gateway('database', false, null);
+    // What stood when the last run ended has to show anew.
+    for (const condition of ['disk', 'measuring', 'configuration'] as const)
+      this.#gateway(condition, false, null);
     await parts.uplink.start();
     this.#links.start();
     this.#loopDelay.enable();
@@ -132,19 +149,84 @@ export class Agent {
     this.#risesS = this.#tickS - RISES_EVERY_S;
     this.#timer = setInterval(() => this.#tick(), TICK_MS);
     this.#log.info('running', { site: this.#station.site.id, config: this.#station.configHash });
+    void this.#options.manager?.ready();
   }
 
+  /** Says offline, sends what can be sent, keeps the rest. Done in less than 5 s, whatever hangs. */
   async stop(): Promise<void> {
+    void this.#options.manager?.stopping();
     if (this.#timer) clearInterval(this.#timer);
-    await this.#links.stop();
+    await within(STOP_MS.links, this.#links.stop());
     this.#logLinks();
     await this.#room.stop();
-    await this.#parts?.judge.stop();
-    await this.#parts?.learning.stop();
-    await this.#parts?.uplink.stop(STOP_MS);
-    await this.#store.close();
+    const parts = this.#parts;
+    if (parts) {
+      await within(
+        STOP_MS.judging,
+        parts.judge.stop().then(() => parts.learning.stop()),
+      );
+      await within(STOP_MS.uplink + 200, parts.uplink.stop(STOP_MS.uplink));
+    }
+    await within(STOP_MS.store, this.#store.close());
     this.#loopDelay.disable();
     this.#log.info('stopped');
+  }
+
+  /**
+   * Goes on with what `read` gives, or with what there was where that fails or cannot be had without a restart. Either
+   * way it is told, in the log and by the alarm of the gateway's configuration.
+   */
+  reload(read: () => Station): Promise<void> {
+    this.#reloading = this.#reloading.then(async () => {
+      try {
+        const next = read();
+        await this.#goOnWith(next);
+        this.#log.info('configuration taken', { config: next.configHash });
+        this.#gateway('configuration', false, null);
+      } catch (error) {
+        this.#log.error('the new configuration is refused, the old one stays', error);
+        const [first = '', second = ''] = (error as Error).message.split('\n');
+        this.#gateway('configuration', true, `${first} ${second}`.trim().slice(0, 300));
+      }
+    });
+    return this.#reloading;
+  }
+
+  async #goOnWith(next: Station): Promise<void> {
+    const parts = this.#parts;
+    if (!parts) return;
+    const why = needsRestart(this.#station, next);
+    if (why !== null) throw new ForebayError('config.needs-restart', why);
+    const plan = planAlarms(next);
+    const ringSeconds = ringSecondsOf(next);
+    if (!sameUplink(this.#station, next)) await this.#exchangeUplink(next);
+    this.#station = next;
+    this.#told.listenTo(toldTopics(next.machines));
+    const judged = parts.judge.replan(plan);
+    parts.post.replan(next.publish, trendWatches(next), (key) => plan.points.has(key));
+    await this.#links.replan(next, ringSeconds);
+    await judged;
+    await emptyForgotten(this.#store, parts.ids, ownTopics(next, plan, topicsOf(next.site.id)));
+    await parts.uplink.agentChanged();
+    parts.uplink.kick();
+  }
+
+  /** Another broker, or other topics to listen to. Where it cannot start, the one of before comes back. */
+  async #exchangeUplink(next: Station): Promise<void> {
+    const parts = this.#parts;
+    if (!parts) return;
+    await parts.uplink.stop(STOP_MS.uplink);
+    const begin = async (station: Station) => {
+      parts.uplink = this.#makeUplink(station, parts.ids);
+      answerAsks(parts.uplink, { ...parts, store: this.#store, now: () => this.#now() });
+      await parts.uplink.start();
+    };
+    try {
+      await begin(next);
+    } catch (error) {
+      await begin(this.#station);
+      throw error;
+    }
   }
 
   async #assemble(report: OpenReport) {
@@ -159,7 +241,8 @@ export class Agent {
     ]);
     const restored = restoreAlarms(plan, Object.fromEntries(rows));
     const judging = new Judging(plan, restored.state, () => ids.idOf(ids.take()));
-    const kick = () => uplink.kick();
+    const uplink = this.#makeUplink(station, ids);
+    const kick = () => (this.#parts?.uplink ?? uplink).kick();
     const judge = new LiveJudge(judging, {
       commit: (commit) => store.commit({ ...commit, nextN: ids.nextN }),
       topic: topics.below,
@@ -180,26 +263,6 @@ export class Agent {
       monotonicS: () => this.#clock.monotonicS(),
       lost: (error) => this.#storeFailed(error),
     });
-    const uplink = new Uplink(
-      {
-        site: station.site.id,
-        broker: station.broker,
-        asks: station.asks,
-        commandTopics: this.#told.topics,
-      },
-      {
-        store,
-        ids,
-        runS: () => this.#runSAtOpen + this.#clock.monotonicS() - this.#openedS,
-        now: () => this.#now(),
-        agent: () => ({ version: this.#options.version, config: station.configHash, clock: this.#clockSays }),
-        command: (topic, text) => this.#told.hear(topic, text),
-        log: (level, message, details) => {
-          if (level === 'info') this.#log.info(message, details);
-          else this.#log.warn(message, details);
-        },
-      },
-    );
     await judge.restore(restored.effects);
     await emptyForgotten(store, ids, ownTopics(station, plan, topics));
     const learning = new Learning(await store.baselines(), {
@@ -213,6 +276,25 @@ export class Agent {
     });
     answerAsks(uplink, { judge, post, store, ids, judging, learning, now: () => this.#now() });
     return { uplink, ids, judge, judging, post, learning };
+  }
+
+  #makeUplink(station: Station, ids: MessageIds): Uplink {
+    return new Uplink(uplinkSettings(station), {
+      store: this.#store,
+      ids,
+      runS: () => this.#runSAtOpen + this.#clock.monotonicS() - this.#openedS,
+      now: () => this.#now(),
+      agent: () => ({
+        version: this.#options.version,
+        config: this.#station.configHash,
+        clock: this.#clockSays,
+      }),
+      command: (topic, text) => this.#told.hear(topic, text),
+      log: (level, message, details) => {
+        if (level === 'info') this.#log.info(message, details);
+        else this.#log.warn(message, details);
+      },
+    });
   }
 
   #opened(report: OpenReport): void {
@@ -240,6 +322,7 @@ export class Agent {
     void this.#parts?.judge.take({ kind: 'tick', elapsedS, t: this.#now() });
     this.#parts?.learning.tick(elapsedS);
     this.#parts?.post.tick();
+    this.#supervision?.tick();
     this.#tickS = nowS;
     if (nowS - this.#healthS >= HEALTH_EVERY_S) {
       this.#healthS = nowS;
@@ -362,4 +445,14 @@ export class Agent {
   #now(): string {
     return new Date(this.#clock.wallMs()).toISOString();
   }
+}
+
+/** Waits for it, but not longer. */
+async function within(ms: number, work: Promise<unknown>): Promise<void> {
+  let timer: NodeJS.Timeout | undefined;
+  const over = new Promise<void>((resolve) => {
+    timer = setTimeout(resolve, ms);
+  });
+  await Promise.race([work.catch(() => undefined), over]);
+  clearTimeout(timer);
 }

@@ -78,12 +78,9 @@ export class StationLinks {
   /**
    * Goes on with another station. Links whose line and format stay are not touched: their samples go on, and each
    * point's next record begins where its last one let off. Other links are closed and opened anew.
-   * @throws RangeError where a point cannot be measured so; nothing has changed then.
+   * @param ringSeconds as `ringSecondsOf` gives them.
    */
-  async replan(station: Station): Promise<void> {
-    const ringSeconds = new Map(
-      station.links.map(({ id }) => [id, longestRecordS(station, id) + SPARE_S] as const),
-    );
+  async replan(station: Station, ringSeconds: ReadonlyMap<string, number>): Promise<void> {
     const kept = new Set(
       station.links
         .filter((settings) => {
@@ -251,6 +248,11 @@ function measuredBy(station: Station): ReadonlyMap<string, string> {
 
 function sameLine(a: LinkSettings, b: LinkSettings): boolean {
   return JSON.stringify([a.transport, a.format]) === JSON.stringify([b.transport, b.format]);
+}
+
+/** What the ring of each link has to hold, in seconds. @throws RangeError where a point cannot be measured so. */
+export function ringSecondsOf(station: Station): ReadonlyMap<string, number> {
+  return new Map(station.links.map(({ id }) => [id, longestRecordS(station, id) + SPARE_S]));
 }
 
 /** In seconds at the nominal rate. */

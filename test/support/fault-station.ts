@@ -1,0 +1,309 @@
+/**
+ * A station to break: the agent as a process, a real broker behind a proxy, two sensor nodes on pseudo-terminals, and
+ * a control room that asks and takes note. What must arrive is known from a ledger inside the agent's own database: a
+ * trigger of this test writes down each alarm message in the transaction that makes it.
+ */
+import { mkdirSync } from 'node:fs';
+import { join } from 'node:path';
+import SqliteDatabase from 'better-sqlite3';
+import mqtt, { type MqttClient } from 'mqtt';
+import { AgentProcess } from './agent.ts';
+import { until } from './broker-rig.ts';
+import { Mosquitto } from './mosquitto.ts';
+import { FaultyLink, sleep } from './proxy.ts';
+import { Cable, nodeRateHz, pacedNode } from './replug.ts';
+import type { PacedSender } from './sender.ts';
+
+const site = 'test-weir';
+/** Records start every second. */
+const stepSamples = nodeRateHz;
+export const pointKeys = ['m1/p', 'm2/p', 'm3/p', 'm4/p'] as const;
+const places = [
+  ['m1', 'node-1', 'x'],
+  ['m2', 'node-1', 'y'],
+  ['m3', 'node-2', 'x'],
+  ['m4', 'node-2', 'y'],
+] as const;
+
+export interface StationChanges {
+  broker?: string;
+  storage?: string;
+  /** The third link is one that only comes and goes by the configuration. */
+  moreLinks?: string;
+  /** Limit of the rule. */
+  alertMmS?: number;
+  everyS?: number;
+}
+
+export function stationText(brokerPort: number, changes: StationChanges = {}): string {
+  const broker =
+    changes.broker ??
+    `{url: "mqtt://127.0.0.1:${brokerPort}", client_id: test-weir-gateway, keepalive_s: 10, bytes_per_day: 1000000000}`;
+  const machines = places.map(
+    ([id, link, channel]) => `  - id: ${id}
+    running: {above_mm_s: 0.1}
+    start_delay_s: 0
+    points: [{id: p, link: ${link}, channel: ${channel}}]
+`,
+  );
+  return `
+site: {id: ${site}, name: Test weir, mains_hz: 50}
+broker: ${broker}
+storage: ${changes.storage ?? '{directory: FOLDER/state}'}
+publish: {change_pct: 0, min_interval_s: 0, at_least_s: 1}
+measure:
+  every_s: ${changes.everyS ?? 1}
+  velocity: {fmax_hz: 200, lines: 100, averages: 1}
+  bands: []
+  envelope: {band_hz: [500, 1500], fmax_hz: 200, lines: 100, averages: 1}
+links:
+  - id: node-1
+    serial: {path: FOLDER/tty-1, baud: 3000000}
+    expect: {node: 1, serial_number: A1, sample_rate_hz: ${nodeRateHz}, channels: [x, y]}
+  - id: node-2
+    serial: {path: FOLDER/tty-2, baud: 3000000}
+    expect: {node: 2, serial_number: A2, sample_rate_hz: ${nodeRateHz}, channels: [x, y]}
+${changes.moreLinks ?? ''}machines:
+${machines.join('')}alarms:
+  - {id: high, watch: velocity.overall, above: {alert: ${changes.alertMmS ?? 5}}, on_delay_s: 0, off_delay_s: 0}
+asks: [readings, acknowledge, shelve, unshelve, test, note, journal]
+`;
+}
+
+/** What came of the alarms: `sent` were committed to be published, in order by number within a topic. */
+export interface Alarms {
+  sent: number;
+  received: number;
+  lost: number;
+  disordered: number;
+}
+
+/** The subscriber: keeps numbers, not payloads, so that it can listen for hours. */
+class Listener {
+  readonly client: MqttClient;
+  /** By topic, numbers in the order in which each was first heard. */
+  readonly alarms = new Map<string, number[]>();
+  readonly #seen = new Set<string>();
+  /** By point: first index of each good reading. */
+  readonly readings = new Map<string, Set<number>>();
+  /** Monotonic ms of the last good and the last figureless reading by point. */
+  readonly goodMs = new Map<string, number>();
+  readonly blankMs = new Map<string, number>();
+  /** The newest payload by topic, of everything but readings. */
+  readonly latest = new Map<string, Record<string, unknown>>();
+  /** All text heard, where it is wanted. */
+  text: string | null = null;
+  repeats = 0;
+
+  constructor(port: number) {
+    this.client = mqtt.connect(`mqtt://127.0.0.1:${port}`, {
+      reconnectPeriod: 20,
+      protocolVersion: 4,
+      clientId: 'control-room',
+      clean: false,
+    });
+    this.client.on('connect', () => this.client.subscribe('forebay/#', { qos: 1 }));
+    this.client.on('error', () => undefined);
+    this.client.on('message', (topic, payload) => this.#take(topic, payload));
+  }
+
+  get connected(): boolean {
+    return this.client.connected;
+  }
+
+  #take(topic: string, payload: Buffer): void {
+    if (this.text !== null) this.text += `${topic} ${payload}\n`;
+    if (payload.length === 0) return;
+    const body = JSON.parse(String(payload)) as Record<string, unknown> & { id: string };
+    const name = topic.slice(`forebay/${site}/`.length);
+    if (/\/alarm\//.test(name)) {
+      if (this.#seen.has(body.id)) this.repeats++;
+      else {
+        this.#seen.add(body.id);
+        const n = Number(body.id.split('-')[1]);
+        this.alarms.set(topic, [...(this.alarms.get(topic) ?? []), n]);
+      }
+    }
+    if (!name.endsWith('/reading')) this.latest.set(name, body);
+    else this.#reading(name.slice(0, -'/reading'.length), body);
+  }
+
+  #reading(point: string, body: Record<string, unknown>): void {
+    const { overall } = body.velocity as { overall: number | null };
+    const now = performance.now();
+    if (overall === null) {
+      this.blankMs.set(point, now);
+      return;
+    }
+    this.goodMs.set(point, now);
+    const indices = this.readings.get(point) ?? new Set();
+    this.readings.set(point, indices.add(body.first_index as number));
+  }
+}
+
+export class FaultStation {
+  readonly agent: AgentProcess;
+  readonly broker: Mosquitto;
+  readonly link: FaultyLink;
+  readonly cables: readonly [Cable, Cable];
+  readonly nodes: readonly [PacedSender, PacedSender];
+  readonly room: Listener;
+  /** Where the database is. */
+  directory: string;
+  #asks = 0;
+
+  private constructor(agent: AgentProcess, broker: Mosquitto, link: FaultyLink, room: Listener) {
+    this.agent = agent;
+    this.broker = broker;
+    this.link = link;
+    this.room = room;
+    this.directory = join(agent.folder, 'state');
+    this.cables = [new Cable(`${agent.folder}/tty-1`), new Cable(`${agent.folder}/tty-2`)];
+    this.nodes = [pacedNode(1, 'A1', this.cables[0]), pacedNode(2, 'A2', this.cables[1])];
+  }
+
+  /** @param brokerLines the listener's settings, as for Mosquitto.start. */
+  static async start(
+    options: {
+      brokerLines?: string[];
+      brokerFiles?: Record<string, string>;
+      station?: StationChanges;
+      prepare?: (station: FaultStation) => void;
+    } = {},
+  ): Promise<FaultStation> {
+    const broker = await Mosquitto.start(
+      options.brokerLines ?? ['allow_anonymous true', 'max_queued_messages 0'],
+      options.brokerFiles,
+    );
+    const link = await FaultyLink.start(broker.port);
+    const agent = new AgentProcess(stationText(link.port, options.station));
+    const station = new FaultStation(agent, broker, link, new Listener(broker.port));
+    await until(() => station.room.connected, 'the control room to connect');
+    options.prepare?.(station);
+    await station.#makeLedger();
+    for (const cable of station.cables) await cable.plug();
+    await agent.start();
+    for (const node of station.nodes) node.start();
+    await station.flows();
+    return station;
+  }
+
+  /** The database is made by the agent itself, which is stopped again for the ledger to be added. */
+  async #makeLedger(): Promise<void> {
+    mkdirSync(this.directory, { recursive: true });
+    await this.agent.start();
+    await this.agent.stop();
+    this.addLedger();
+  }
+
+  addLedger(): void {
+    const db = this.#open();
+    db.exec(`
+      CREATE TABLE IF NOT EXISTS test_ledger (n INTEGER PRIMARY KEY, topic TEXT NOT NULL);
+      CREATE TRIGGER IF NOT EXISTS test_note AFTER INSERT ON outbox WHEN NEW.class = 0 AND length(NEW.payload) > 0
+      BEGIN INSERT OR IGNORE INTO test_ledger VALUES (NEW.n, NEW.topic); END;`);
+    db.close();
+  }
+
+  #open() {
+    return new SqliteDatabase(join(this.directory, 'forebay.db'), { timeout: 5000 });
+  }
+
+  /** What is in the ledger. */
+  ledger(): { n: number; topic: string }[] {
+    const db = this.#open();
+    try {
+      return db.prepare('SELECT n, topic FROM test_ledger ORDER BY n').all() as {
+        n: number;
+        topic: string;
+      }[];
+    } finally {
+      db.close();
+    }
+  }
+
+  waitingRows(): number {
+    const db = this.#open();
+    try {
+      return db.prepare('SELECT count(*) FROM outbox WHERE aside IS NULL').pluck().get() as number;
+    } finally {
+      db.close();
+    }
+  }
+
+  /** Alarm load: a shelf set anew is an alarm message each time, and no flood limit holds it back. */
+  ask(count: number): void {
+    for (let i = 0; i < count; i++) {
+      const k = this.#asks++;
+      const body = {
+        id: `ask-${process.pid}-${k}`,
+        alarm: `${pointKeys[k % 4]}.high`,
+        by: 'test',
+        minutes: 1 + (k % 60),
+      };
+      this.room.client.publish(`forebay/${site}/ask/shelve`, JSON.stringify(body), { qos: 1 });
+    }
+  }
+
+  /** Until each of the points has a good reading of samples sent after now; how long that took, in seconds. */
+  async flows(points: readonly string[] = pointKeys, withinMs = 30_000): Promise<number> {
+    const began = performance.now();
+    // A record is a second long: what arrives this soon began before.
+    const from = began + 1000;
+    await until(
+      () => points.every((point) => (this.room.goodMs.get(point) ?? 0) > from),
+      `readings of ${points.filter((point) => !((this.room.goodMs.get(point) ?? 0) > from)).join(', ')}`,
+      withinMs,
+    );
+    return (performance.now() - began) / 1000;
+  }
+
+  /** Once nothing waits any more: what became of the alarms. */
+  async alarms(withinMs = 20_000): Promise<Alarms> {
+    const settled = () => {
+      const { lost } = this.#compare();
+      return lost === 0;
+    };
+    await until(settled, 'all alarms to arrive', withinMs).catch(() => undefined);
+    return this.#compare();
+  }
+
+  #compare(): Alarms {
+    const ledger = this.ledger();
+    const heard = new Set([...this.room.alarms.values()].flat());
+    let disordered = 0;
+    for (const ns of this.room.alarms.values()) {
+      for (let i = 1; i < ns.length; i++) if (ns[i]! < ns[i - 1]!) disordered++;
+    }
+    const received = ledger.filter(({ n }) => heard.has(n)).length;
+    return { sent: ledger.length, received, lost: ledger.length - received, disordered };
+  }
+
+  /** Records of the node's samples that came to no reading at the subscriber, over the whole time of the points. */
+  readingsLost(points: readonly string[] = pointKeys): number {
+    let lost = 0;
+    for (const point of points) {
+      const indices = this.room.readings.get(point) ?? new Set<number>();
+      const first = Math.min(...indices);
+      const last = Math.max(...indices);
+      if (indices.size > 0) lost += (last - first) / stepSamples + 1 - indices.size;
+    }
+    return lost;
+  }
+
+  async restartAgent(): Promise<void> {
+    await this.agent.start();
+  }
+
+  async stop(): Promise<void> {
+    for (const node of this.nodes) node.stop();
+    await this.agent.stop('SIGKILL');
+    for (const cable of this.cables) cable.unplug();
+    await this.room.client.endAsync(true);
+    await this.link.stop();
+    await this.broker.stop();
+    await this.agent.dispose();
+  }
+}
+
+export { sleep };
