@@ -21,8 +21,7 @@ const LINE = {
  * @param readings the latest reading by point key; those that do not run or are bad are left out.
  * @param state of the alarm engine: a standing alarm of a point's velocity makes it notable.
  *
- * Bands `low` and `harmonics` are the usual ones of the station file; `vane-pass` and `twice-mains` are used where a
- * reading has them.
+ * Bands `low` and `harmonics` are the usual ones of the station file.
  */
 export function machineEvidence(
   plan: AlarmPlan,
@@ -42,7 +41,7 @@ export function machineEvidence(
 }
 
 function pointEvidence({ point, rules }: PointPlan, reading: Reading, state: EngineState): PointEvidence {
-  const { orders, velocity, zone } = reading;
+  const { orders, tones, velocity, zone } = reading;
   const alarmed = rules.some(({ key, rule }) => {
     const row = state.alarms[key];
     return rule.watch.startsWith('velocity.') && row !== undefined && conditionLevel(row.condition) !== null;
@@ -61,8 +60,8 @@ function pointEvidence({ point, rules }: PointPlan, reading: Reading, state: Eng
     ordersMmS: [orders['1'].mm_s, orders['2'].mm_s, orders['3'].mm_s],
     harmonicsMmS: band('harmonics'),
     lowMmS: band('low'),
-    twiceMainsMmS: band('twice-mains'),
-    vanePassMmS: band('vane-pass'),
+    twiceMainsMmS: tones.twice_mains?.mm_s ?? null,
+    vanePassMmS: tones.vane_pass?.mm_s ?? null,
     bearing: bearingEvidence(reading),
   };
 }

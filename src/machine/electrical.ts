@@ -16,3 +16,30 @@ export function synchronousHz(mainsHz: number, poles: number): number {
   }
   return (2 * mainsHz) / poles;
 }
+
+/**
+ * Slip of an induction motor: how far its shaft stays behind synchronous speed.
+ *
+ * @param synchronous synchronous speed, Hz.
+ * @param shaftHz speed of the motor's shaft, Hz.
+ * @returns share of the synchronous speed, without unit; 0 or less for a shaft that does not stay behind.
+ *
+ * Source: any handbook of electrical machines. Worked: 30 Hz, 29.5 Hz (1770 r/min): 0.016667.
+ */
+export function slip(synchronous: number, shaftHz: number): number {
+  return (synchronous - shaftHz) / synchronous;
+}
+
+/**
+ * How far twice the supply frequency lies from the nearest multiple of the shaft's speed. For a motor's own shaft that
+ * multiple is the one by its number of poles, and the distance is its pole pass frequency (poles × slip speed).
+ *
+ * @param mainsHz supply frequency.
+ * @param shaftHz speed of the shaft, above 0 Hz.
+ * @returns Hz, 0 to half the shaft's speed.
+ *
+ * Source: any handbook of electrical machines. Worked: 50 Hz, 1480 r/min: 100 − 4 × 24.6667 = 1.3333 Hz.
+ */
+export function twiceMainsOffOrderHz(mainsHz: number, shaftHz: number): number {
+  return Math.abs(2 * mainsHz - Math.round((2 * mainsHz) / shaftHz) * shaftHz);
+}

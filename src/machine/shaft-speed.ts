@@ -3,6 +3,8 @@
  * have, and the speed whose comb meets most is taken, unless another does nearly as well.
  */
 
+import { slip } from './electrical.ts';
+
 interface SpeedLine {
   readonly hz: number;
   /** 20·log10 of its amplitude over the floor about it. */
@@ -75,7 +77,7 @@ export function findShaftSpeed(spectra: readonly SpeedLines[], range: SpeedRange
     .sort((a, b) => b.score - a.score);
   const best = ranked[0];
   if (best === undefined || best.score < LEAST_SCORE) return unknown('no line stands out where it could be');
-  if (range.synchronousHz !== null && best.hz >= range.synchronousHz * (1 - LEAST_SLIP)) {
+  if (range.synchronousHz !== null && slip(range.synchronousHz, best.hz) <= LEAST_SLIP) {
     return unknown(
       `the line at ${best.hz.toFixed(2)} Hz is not below synchronous speed, ${range.synchronousHz} Hz`,
     );

@@ -10,6 +10,7 @@ import type { Reading } from './reading.ts';
 import type { SampleRecord } from './record.ts';
 import { foundShaft, givenShaft, type ShaftFigures } from './shaft.ts';
 import { tachometerSpeed } from './tachometer.ts';
+import { NO_TONES, toneFigures } from './tones.ts';
 import { gPerCount, invalidities } from './validity.ts';
 import { displacementPeakToPeak, displacementRms, type Figure, velocityRms } from './velocity.ts';
 
@@ -91,6 +92,7 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
       p2p,
     },
     orders: shaft.hz === null ? NO_ORDERS : orderFigures(decimated, shaft.hz, phase),
+    tones: shaft.hz === null ? NO_TONES : toneFigures(plan, decimated, shaft.hz),
     acceleration: { unit: 'g', band_hz: [...plan.accelerationHz], rms, peak, crest, kurtosis },
     envelope: envelope.reading,
     zone: zoneFor(plan, running, shaft.hz, overall, displacement),
@@ -164,6 +166,7 @@ function badReading(plan: PointPlan, record: SampleRecord, why: string[]): Readi
     velocity: { unit: 'mm/s', overall: null, ...bands },
     displacement: { unit: 'µm', rms: null, p2p: null },
     orders: NO_ORDERS,
+    tones: NO_TONES,
     acceleration: {
       unit: 'g',
       band_hz: [...plan.accelerationHz],

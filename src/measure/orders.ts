@@ -1,11 +1,10 @@
 /** The first three harmonics of the shaft: velocity, and its lag behind the tachometer. */
 
-import { GRAVITY_M_S2 } from '../signal/integrate.ts';
-import { lineAmplitude, type Spectrum, strongestBin } from '../signal/spectrum.ts';
 import { makeWindow } from '../signal/window.ts';
 import type { DecimatedRecord } from './decimated.ts';
 import type { OrderReading, Reading } from './reading.ts';
 import { type TachometerSpeed, turnsAt } from './tachometer.ts';
+import { lineVelocity } from './velocity.ts';
 
 const ORDERS = [1, 2, 3] as const;
 const NOTHING: OrderReading = { mm_s: null, deg: null };
@@ -27,19 +26,11 @@ export function orderFigures(
     // Where the line would not lie clear of the edge.
     if (hz + 2 * record.spectrum.lineHz > record.fmaxHz) continue;
     orders[order] = {
-      mm_s: lineVelocity(record.spectrum, hz),
+      mm_s: lineVelocity(record.spectrum, hz, record.spectrum.lineHz)?.mmS ?? null,
       deg: tachometer === null ? null : lagDegrees(record, order, tachometer),
     };
   }
   return orders;
-}
-
-/** RMS velocity of the line within one line spacing of a frequency, mm/s; null where there is no bin. */
-function lineVelocity(spectrum: Spectrum, hz: number): number | null {
-  const bin = strongestBin(spectrum, [hz - spectrum.lineHz, hz + spectrum.lineHz]);
-  if (bin === null) return null;
-  const line = lineAmplitude(spectrum, bin);
-  return ((line.amplitude / Math.SQRT2) * 1000 * GRAVITY_M_S2) / (2 * Math.PI * line.hz);
 }
 
 /**

@@ -66,6 +66,8 @@ export interface PointPlan {
   readonly key: string;
   readonly point: Point;
   readonly machine: Pick<Machine, 'shaft' | 'running' | 'motor'>;
+  /** Of the impeller on the point's shaft; null: unknown, or none for certain. */
+  readonly vanes: number | null;
   readonly mainsHz: number;
   /** Nominal raw rate: it gives the sizes; a record's own rate gives its frequencies. */
   readonly rateHz: number;
@@ -141,6 +143,7 @@ export function planPoint(point: Point, machine: Machine, rateHz: number, mainsH
     key: point.key,
     point,
     machine: { shaft: machine.shaft, running: machine.running, motor: machine.motor },
+    vanes: vanesOn(point, machine),
     mainsHz,
     rateHz,
     stepSamples,
@@ -154,6 +157,12 @@ export function planPoint(point: Point, machine: Machine, rateHz: number, mainsH
   };
   noteFrequencies(plan, notes);
   return { ...plan, warnings: notes.warnings, caveats: notes.caveats };
+}
+
+/** Behind a belt or gear only the pump's own points are on the impeller's shaft. */
+function vanesOn(point: Point, machine: Machine): number | null {
+  const direct = machine.points.every(({ ratio }) => ratio === 1);
+  return direct || point.part === 'pump' || point.part === 'fan' ? machine.vanes : null;
 }
 
 function plannedShaft(machine: Machine, ratio: number): PlannedShaft | null {

@@ -56,6 +56,12 @@ export interface OrderReading {
   deg: number | null;
 }
 
+/** A line of the velocity spectrum: where it stands, and its RMS. */
+export interface ToneReading {
+  hz: number;
+  mm_s: number;
+}
+
 export interface Reading {
   quality: Quality;
   why: string[];
@@ -69,6 +75,8 @@ export interface Reading {
   velocity: { unit: 'mm/s'; overall: number | null } & Record<string, number | null | string>;
   displacement: { unit: 'µm'; rms: number | null; p2p: number | null };
   orders: { '1': OrderReading; '2': OrderReading; '3': OrderReading };
+  /** Number of vanes × shaft speed, and twice the supply frequency; null: unknown, out of reach or not to be told apart. */
+  tones: { vane_pass: ToneReading | null; twice_mains: ToneReading | null };
   acceleration: {
     unit: 'g';
     band_hz: [number, number];

@@ -1,8 +1,13 @@
 /** Velocity and displacement figures of a spectrum: overall, the configured bands. */
 
-import { displacementWaveform, displacementWeights, velocityWeights } from '../signal/integrate.ts';
+import {
+  displacementWaveform,
+  displacementWeights,
+  GRAVITY_M_S2,
+  velocityWeights,
+} from '../signal/integrate.ts';
 import { SignalRangeError } from '../signal/range-error.ts';
-import { bandMeanSquare, type Spectrum } from '../signal/spectrum.ts';
+import { bandMeanSquare, lineAmplitude, type Spectrum, strongestBin } from '../signal/spectrum.ts';
 import { mainLobeHalfWidthBins } from '../signal/window.ts';
 import type { DecimatedRecord } from './decimated.ts';
 import { hz, range } from './plan-notes.ts';
@@ -53,6 +58,19 @@ export function displacementPeakToPeak(record: DecimatedRecord, bandHz: readonly
     if (value > high) high = value;
   }
   return { value: high - low, why: null };
+}
+
+/** The strongest line about a frequency: its place and RMS velocity in mm/s; null where there is no bin. */
+export function lineVelocity(
+  spectrum: Spectrum,
+  hz: number,
+  reachHz: number,
+): { hz: number; mmS: number } | null {
+  const bin = strongestBin(spectrum, [hz - reachHz, hz + reachHz]);
+  if (bin === null) return null;
+  const line = lineAmplitude(spectrum, bin);
+  const mmS = ((line.amplitude / Math.SQRT2) * 1000 * GRAVITY_M_S2) / (2 * Math.PI * line.hz);
+  return { hz: line.hz, mmS };
 }
 
 function bandRms(spectrum: Spectrum, bandHz: readonly [number, number], weight: Float64Array): number {

@@ -22,6 +22,7 @@ const bearingLine = z
   .nullable();
 
 const order = z.looseObject({ mm_s: figure, deg: figure });
+const tone = z.looseObject({ hz: figure, mm_s: figure }).nullable();
 
 const reading = z.looseObject({
   id,
@@ -42,6 +43,7 @@ const reading = z.looseObject({
   velocity: z.object({ unit: z.literal('mm/s'), overall: figure }).catchall(figure),
   displacement: z.looseObject({ unit: z.literal('µm'), rms: figure, p2p: figure }),
   orders: z.looseObject({ 1: order, 2: order, 3: order }),
+  tones: z.looseObject({ vane_pass: tone, twice_mains: tone }).optional(),
   acceleration: z.looseObject({
     unit: z.literal('g'),
     band_hz: band,
@@ -221,6 +223,8 @@ export const askSchemas = {
     from_s: z.number().nonnegative().optional(),
     seconds: seconds.optional(),
     parts: z.array(count).max(500).optional(),
+    /** The id of an earlier fetch that is no longer wanted. */
+    cancel: askId.optional(),
   }),
   journal: z.looseObject({ id: askId, since: z.union([time, id]).optional() }),
   trend: z.looseObject({
