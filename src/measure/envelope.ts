@@ -13,7 +13,7 @@ import { hz } from './plan-notes.ts';
 import type { EnvelopeReading } from './reading.ts';
 
 /** The band filter needs most of what the plan leaves at each end, the decimation after it the rest. */
-const CUT_S = 0.8 * ENVELOPE_EDGE_S;
+export const CUT_S = 0.7 * ENVELOPE_EDGE_S;
 /** A spectrum is averaged over two half-overlapped blocks at least; a shorter record gets wider lines instead. */
 const LEAST_BLOCKS = 1.5;
 /** Fewer lines than this tell nothing apart. */
