@@ -11,7 +11,7 @@ import type { GAPS, GatewayCondition, LinkCondition, SensorFault } from './senso
 
 /** Ends every advice that leads a person to the machine. */
 const NEAR_THE_MACHINE =
-  'It may start by itself: isolate and lock it by the local procedure before reaching in; opening it is for qualified people.';
+  'Advice only: no trip may depend on it. The machine may start by itself: isolate and lock it by local codes and procedure before reaching in; opening it is for qualified people.';
 
 const FIGURE_WORDS: Readonly<Record<string, string>> = {
   'envelope.defect': 'bearing lines of the envelope',
@@ -91,7 +91,8 @@ function lookNext(watch: string): string {
 
 export function groupReason(rule: Rule, name: string, points: readonly string[], level: Level): string {
   const shown = points.slice(0, 8).join(', ') + (points.length > 8 ? ' and more' : '');
-  return `${points.length} points of ${name} stand in ${level} or alert of rule ${rule.id} together: ${shown}`;
+  const levels = level === 'danger' ? 'alert or danger' : 'alert';
+  return `${points.length} points of ${name} stand in ${levels} by rule ${rule.id} together: ${shown}`;
 }
 
 export const groupedReason = (group: string): string => `one cause, one alarm: announced as ${group}`;

@@ -16,13 +16,14 @@ const WATCHES = [
 test('every check that leads to the machine carries the caution and defers to the local procedure', () => {
   for (const watch of WATCHES) {
     for (const level of ['alert', 'danger'] as const) {
-      expect(conditionCheck(watch, level)).toMatch(/isolate and lock it by the local procedure/);
+      expect(conditionCheck(watch, level)).toMatch(/isolate and lock it by local codes and procedure/);
       expect(conditionCheck(watch, level)).toMatch(/qualified people/);
-      expect(conditionCheck(watch, level)).not.toMatch(/\btrip\b|shut it down|stop the (pump|machine)/i);
+      expect(conditionCheck(watch, level)).toMatch(/Advice only: no trip may depend on it/);
+      expect(conditionCheck(watch, level)).not.toMatch(/trip (it|the)|shut it down|stop the (pump|machine)/i);
     }
   }
   const timing = { onDelayS: 0, offDelayS: 0, readings: [3, 5] } as const;
-  expect(sensorWords('flat line', timing).check).toMatch(/local procedure/);
+  expect(sensorWords('flat line', timing).check).toMatch(/local codes and procedure/);
 });
 
 test.each(['silent', 'refused', 'foreign-node', 'gaps', 'database', 'disk', 'measuring', 'configuration'])(
