@@ -5,7 +5,7 @@
 
 import type { SampleUnit } from '../link/frames.ts';
 import type { RateUsed } from '../measure/reading.ts';
-import type { Comments } from './flac-file.ts';
+import type { Comments } from './flac-head.ts';
 
 export interface SnapshotChannel {
   name: string;
@@ -46,17 +46,25 @@ export interface SnapshotTags {
   firstIndex: number;
   nodeSerial: string | null;
   shafts: readonly ShaftTag[];
-  /** In words, with the alarm where there was one. */
+  /** In words. */
   cause: string;
+  kind: SnapshotKind;
+  /** Alarms that it was taken for. */
+  alarms: readonly string[];
+  /** Run time of the gateway when it was taken, in seconds: its age, whatever the clock says. */
+  takenRunS: number;
   version: string;
   config: string;
   gaps: readonly Gap[];
   channels: readonly SnapshotChannel[];
 }
 
+export type SnapshotKind = 'alarm' | 'asked' | 'start' | 'coast-down';
+
 /** Version of these names; a reader that meets a higher one reads what it knows. */
 const FORMAT = '1';
 const UNITS: readonly SampleUnit[] = ['g', 'm/s2', 'logic'];
+const KINDS: readonly SnapshotKind[] = ['alarm', 'asked', 'start', 'coast-down'];
 const SOURCES: readonly RateUsed['source'][] = ['nominal', 'measured', 'given'];
 
 export function commentsOf(tags: SnapshotTags): string[] {
@@ -76,6 +84,9 @@ export function commentsOf(tags: SnapshotTags): string[] {
     ['NODE_SERIAL', tags.nodeSerial],
     ['SHAFTS', tags.shafts.map(({ machine, hz, source }) => `${machine}:${hz}:${source}`).join(' ')],
     ['CAUSE', tags.cause],
+    ['KIND', tags.kind],
+    ['ALARMS', tags.alarms.join(' ')],
+    ['TAKEN_RUN_S', tags.takenRunS],
     ['AGENT_VERSION', tags.version],
     ['CONFIG', tags.config],
     ['GAPS', tags.gaps.map(({ at, samples }) => `${at}+${samples}`).join(' ')],
@@ -140,6 +151,9 @@ export function tagsOf(comments: Comments, channels: number): SnapshotTags | nul
     nodeSerial: comments.get('NODE_SERIAL') ?? null,
     shafts: words('SHAFTS').map(shaftOf),
     cause: comments.get('CAUSE') ?? '',
+    kind: oneOf('KIND', KINDS),
+    alarms: words('ALARMS'),
+    takenRunS: number('TAKEN_RUN_S', (value) => value >= 0),
     version: text('AGENT_VERSION'),
     config: text('CONFIG'),
     gaps: words('GAPS').map(gapOf),

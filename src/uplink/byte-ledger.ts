@@ -1,7 +1,8 @@
 /**
  * What the uplink costs, by class, in periods of 24 h of run time (wall time jumps). Bytes are those of the raw
  * socket, under TLS, both ways, plus an estimate of what IP and TCP add. What a message costs beyond its own packet
- * is the share of `link`, which counts against the ceiling like the rest; only alarms do not.
+ * is the share of `link`, which counts against the ceiling like the rest; only alarms do not, and waveforms have a
+ * ceiling of their own.
  */
 
 import { type BudgetLine, type MessageClass, messageClasses } from '../store/types.ts';
@@ -13,6 +14,8 @@ const segmentHeaderBytes = 52;
 const segmentPayloadBytes = 1360;
 /** From this share on, what can wait does; the rest is for states, findings and answers. */
 const bulkShare = 0.9;
+/** The class of the parts of waveforms. */
+const waveforms = 'snapshot';
 const bulk: readonly MessageClass[] = ['reading', 'trend', 'health'];
 
 /** Counters of one connection; they only grow. */
@@ -30,6 +33,7 @@ interface Tally {
 
 export class ByteLedger {
   readonly #bytesPerDay: number;
+  readonly #waveformBytesPerDay: number;
   readonly #runS: () => number;
   #day = -1;
   #byClass = new Map<string, Tally>();
@@ -39,8 +43,9 @@ export class ByteLedger {
   /** Bytes of messages booked under their class before they showed in the meter's total. */
   #ahead = 0;
 
-  constructor(bytesPerDay: number, runS: () => number) {
+  constructor(bytesPerDay: number, waveformBytesPerDay: number, runS: () => number) {
     this.#bytesPerDay = bytesPerDay;
+    this.#waveformBytesPerDay = waveformBytesPerDay;
     this.#runS = runS;
   }
 
@@ -72,6 +77,14 @@ export class ByteLedger {
     this.#ahead += packetBytes;
   }
 
+  /** A part of a waveform went out, with the headers of the segments that carry it. */
+  publishedPart(packetBytes: number): void {
+    this.#turnDay();
+    const bytes = packetBytes + Math.ceil(packetBytes / segmentPayloadBytes) * segmentHeaderBytes;
+    this.#add(waveforms, bytes, 0);
+    this.#ahead += bytes;
+  }
+
   /** Books what the meter counted since the last time. */
   settle(): void {
     this.#turnDay();
@@ -89,11 +102,22 @@ export class ByteLedger {
     return Math.max(0, this.#bytesPerDay - this.#spent());
   }
 
-  /** What may be sent now. Alarms always. */
-  allowedClasses(): readonly MessageClass[] {
+  /** Bytes that waveforms may still cost in this period. */
+  waveformsLeftBytes(): number {
+    this.#turnDay();
+    return Math.max(0, this.#waveformBytesPerDay - (this.#byClass.get(waveforms)?.sentBytes ?? 0));
+  }
+
+  /** Seconds until the next period. */
+  renewsInS(): number {
+    return (this.day + 1) * daySeconds - this.#runS();
+  }
+
+  /** What may be sent now: alarms always; what can wait, not while `bulkWaits`. */
+  allowedClasses(bulkWaits = false): readonly MessageClass[] {
     const spent = this.#spent();
     if (spent >= this.#bytesPerDay) return ['alarm'];
-    if (spent < this.#bytesPerDay * bulkShare) return messageClasses;
+    if (spent < this.#bytesPerDay * bulkShare && !bulkWaits) return messageClasses;
     return messageClasses.filter((name) => !bulk.includes(name));
   }
 
@@ -107,7 +131,7 @@ export class ByteLedger {
     this.settle();
     let spent = 0;
     for (const [name, tally] of this.#byClass) {
-      if (name !== 'alarm') spent += tally.sentBytes + tally.receivedBytes;
+      if (name !== 'alarm' && name !== waveforms) spent += tally.sentBytes + tally.receivedBytes;
     }
     return spent;
   }

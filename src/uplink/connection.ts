@@ -82,6 +82,7 @@ export class Connection {
   #receivedPackets = 0;
   #serverReceiveMaximum = 65_535;
   #serverMaxBytes: number | null = null;
+  #ackReason = 0;
 
   constructor(settings: ConnectionSettings, host: ConnectionHost) {
     this.protocol = settings.protocol;
@@ -120,11 +121,20 @@ export class Connection {
     return this.#serverMaxBytes;
   }
 
-  /** QoS 1. Resolves at the acknowledgement; rejects with PublishRefused, or because the connection ended. */
-  publish(topic: string, payload: Uint8Array, retain: boolean, timeoutMs: number): Promise<void> {
-    return this.#within(timeoutMs, `acknowledge ${topic}`, (done) => {
-      this.#client.publish(topic, Buffer.from(payload), { qos: 1, retain }, (error) => done(refusal(error)));
+  /**
+   * QoS 1. Resolves at the acknowledgement, with its reason code; rejects with PublishRefused, or because the
+   * connection ended.
+   */
+  async publish(topic: string, payload: Uint8Array, retain: boolean, timeoutMs: number): Promise<number> {
+    let reason = 0;
+    await this.#within(timeoutMs, `acknowledge ${topic}`, (done) => {
+      this.#client.publish(topic, Buffer.from(payload), { qos: 1, retain }, (error) => {
+        // MQTT.js calls back while it handles the acknowledgement, and keeps its reason to itself.
+        reason = this.#ackReason;
+        done(refusal(error));
+      });
     });
+    return reason;
   }
 
   /** Rejects where the broker denies one of them; the others hold. */
@@ -182,7 +192,10 @@ export class Connection {
   #listen(): void {
     const client = this.#client;
     client.on('packetsend', () => this.#sentPackets++);
-    client.on('packetreceive', () => this.#receivedPackets++);
+    client.on('packetreceive', (packet) => {
+      this.#receivedPackets++;
+      if (packet.cmd === 'puback') this.#ackReason = packet.reasonCode ?? 0;
+    });
     client.on('error', (error) => this.#failed(error));
     client.on('disconnect', (packet) => {
       this.#noteError(new Error(`the broker hung up with reason ${packet.reasonCode ?? 0}`));

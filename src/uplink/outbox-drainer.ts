@@ -13,6 +13,10 @@ export interface DrainerHost {
   readonly store: Pick<Store, 'batch' | 'accept' | 'reject'>;
   allowedClasses(): readonly MessageClass[];
   published(name: MessageClass, packetBytes: number): void;
+  /** What else is in flight on this connection. */
+  beside(): { messages: number; bytes: number };
+  /** A message is no longer in flight. */
+  settled(): void;
   log(level: 'warn' | 'error', message: string, details: Record<string, unknown>): void;
 }
 
@@ -53,6 +57,15 @@ export class OutboxDrainer {
 
   get inFlight(): number {
     return this.#inFlight.size;
+  }
+
+  /** Bytes that are not acknowledged yet. */
+  get inFlightBytes(): number {
+    return [...this.#inFlight.values()].reduce((sum, { bytes }) => sum + bytes, 0);
+  }
+
+  get alarmInFlight(): boolean {
+    return [...this.#inFlight.values()].some(({ row }) => row.class === 'alarm');
   }
 
   attach(connection: Connection): void {
@@ -99,7 +112,8 @@ export class OutboxDrainer {
     const connection = this.#connection;
     const flight = this.#inFlight;
     if (connection === null || this.#pause !== null) return;
-    const free = Math.min(this.#settings.maxInFlight, connection.receiveMaximum) - flight.size;
+    const room = connection.receiveMaximum - this.#host.beside().messages;
+    const free = Math.min(this.#settings.maxInFlight, room) - flight.size;
     if (free <= 0 || this.#suspectAlone()) return;
     const rows = await this.#host.store.batch({
       max: free,
@@ -142,8 +156,7 @@ export class OutboxDrainer {
     const flight = this.#inFlight;
     const bytes = packetBytes(row);
     flight.set(row.topic, { row, bytes });
-    let waiting = 0;
-    for (const other of flight.values()) waiting += other.bytes;
+    const waiting = this.inFlightBytes + this.#host.beside().bytes;
     const timeoutMs = this.#settings.ackTimeoutMs + (waiting / this.#settings.slowestBytesPerS) * 1000;
     try {
       this.#host.published(row.class, bytes);
@@ -159,6 +172,7 @@ export class OutboxDrainer {
       else await this.#reject(row, `refused by the broker: ${error.message} (${error.reasonCode})`, true);
     } finally {
       flight.delete(row.topic);
+      this.#host.settled();
       if (this.#connection === connection) this.kick();
     }
   }

@@ -15,6 +15,7 @@ import { ConnectionLoop } from './connection-loop.ts';
 import { EmbeddedBroker } from './embedded-broker.ts';
 import type { MessageIds } from './message-ids.ts';
 import { OutboxDrainer } from './outbox-drainer.ts';
+import { PartSender, type PartTransfer } from './part-sender.ts';
 import { encode, outboxMessage } from './payload.ts';
 import type { AskVerb } from './payload-schemas.ts';
 import { type AgentBlock, agentBlock, brokerKept } from './retained.ts';
@@ -90,6 +91,7 @@ export class Uplink {
   readonly #timing: UplinkTiming;
   readonly #ledger: ByteLedger;
   readonly #drainer: OutboxDrainer;
+  readonly #parts: PartSender;
   readonly #asks: AskDispatcher;
   readonly #loop: ConnectionLoop;
   #embedded: EmbeddedBroker | null = null;
@@ -106,12 +108,16 @@ export class Uplink {
     this.#host = host;
     this.#timing = { ...usualTiming, ...settings.timing };
     this.topics = topicsOf(settings.site);
-    this.#ledger = new ByteLedger(settings.broker.bytesPerDay, () => host.runS());
+    this.#ledger = new ByteLedger(settings.broker.bytesPerDay, settings.broker.snapshotBytesPerDay, () =>
+      host.runS(),
+    );
     this.#drainer = new OutboxDrainer(
       {
         store: host.store,
-        allowedClasses: () => this.#ledger.allowedClasses(),
+        allowedClasses: () => this.#ledger.allowedClasses(this.#parts.busy),
         published: (name, bytes) => this.#ledger.published(name, bytes),
+        beside: () => ({ messages: this.#parts.inFlight, bytes: this.#parts.inFlightBytes }),
+        settled: () => this.#parts.kick(),
         log: (...line) => host.log(...line),
       },
       {
@@ -122,8 +128,20 @@ export class Uplink {
         quotaPauseMs: this.#timing.quotaPauseMs,
       },
     );
+    this.#parts = new PartSender(
+      {
+        topic: (askId, part) => this.topics.answerPart(askId, part),
+        alarmUnderWay: () => this.#drainer.alarmInFlight,
+        otherBytes: () => this.#drainer.inFlightBytes,
+        roomFor: (connection) => connection.receiveMaximum - this.#drainer.inFlight - this.#parts.inFlight,
+        leftTodayBytes: () => this.#ledger.waveformsLeftBytes(),
+        published: (bytes) => this.#ledger.publishedPart(bytes),
+        progressed: () => this.#drainer.kick(),
+      },
+      { ackTimeoutMs: this.#timing.ackTimeoutMs, slowestBytesPerS },
+    );
     this.#asks = new AskDispatcher(settings.asks, {
-      answer: (askId, body) => this.#answer(askId, body),
+      answer: (askId, body) => this.answer(askId, body),
       log: (...line) => host.log(...line),
       monotonicS: () => host.runS(),
     });
@@ -150,6 +168,23 @@ export class Uplink {
   /** Registers what answers a verb. */
   handle<V extends AskVerb>(verb: V, handler: AskHandler<V>): void {
     this.#asks.handle(verb, handler);
+  }
+
+  /** Sends binary parts of an answer; false: too many transfers are under way. */
+  sendParts(transfer: PartTransfer): boolean {
+    if (this.#parts.full) return false;
+    this.#parts.add(transfer);
+    return true;
+  }
+
+  /** Whether parts were being sent for that ask. */
+  cancelParts(askId: string): boolean {
+    return this.#parts.cancel(askId);
+  }
+
+  /** What waveforms may still cost today, and when that is renewed. */
+  waveformBudget(): { leftBytes: number; renewsInS: number } {
+    return { leftBytes: this.#ledger.waveformsLeftBytes(), renewsInS: this.#ledger.renewsInS() };
   }
 
   /** Throws where the embedded broker cannot open its port; a broker elsewhere is waited for. */
@@ -236,6 +271,7 @@ export class Uplink {
       },
       down: (_, end) => {
         this.#ledger.follow(null);
+        this.#parts.detach();
         void this.#drainer.detach(end);
         down(end);
       },
@@ -267,6 +303,7 @@ export class Uplink {
     for (const topic of this.#settings.commandTopics) await this.#subscribe(connection, [topic]);
     await this.#host.store.releaseRefused();
     this.#drainer.attach(connection);
+    this.#parts.attach(connection);
     if (!brokerKept(await marker, this.#host.ids.storeId, last)) {
       await this.#host.store.resendRetained();
       this.#drainer.kick();
@@ -329,7 +366,8 @@ export class Uplink {
     }
   }
 
-  async #answer(askId: string, body: Readonly<Record<string, unknown>>): Promise<void> {
+  /** Puts an answer into the outbox; also a further one, where an ask that was answered fails later. */
+  async answer(askId: string, body: Readonly<Record<string, unknown>>): Promise<void> {
     const { ids, store } = this.#host;
     await store.commit({ outbox: [outboxMessage(ids, 'answer', this.topics.answer(askId), body)] });
     this.kick();

@@ -69,7 +69,7 @@ describe('the byte ledger', () => {
 
   it('books a message under its class and the rest under the link, headers of IP and TCP included', () => {
     Object.assign(meter, { sent: 0, received: 0, packetsOut: 0, packetsIn: 0 });
-    const ledger = new ByteLedger(100_000, () => 10);
+    const ledger = new ByteLedger(100_000, 0, () => 10);
     ledger.follow(counters);
     ledger.published('reading', 900);
     // 100 bytes of TLS about the packet, an acknowledgement of 40; a segment each way, and one of headers for each.
@@ -85,7 +85,7 @@ describe('the byte ledger', () => {
 
   it('stops what can wait at nine tenths, all but alarms at the ceiling, and begins anew after 24 h of run time', () => {
     let nowS = 86_400 * 3 + 5;
-    const ledger = new ByteLedger(1000, () => nowS);
+    const ledger = new ByteLedger(1000, 0, () => nowS);
     ledger.published('alarm', 5000);
     expect(ledger.leftBytes()).toBe(1000);
     expect(ledger.allowedClasses()).toEqual(messageClasses);
@@ -99,10 +99,10 @@ describe('the byte ledger', () => {
     nowS += 86_400;
     expect(ledger.day).toBe(4);
     expect(ledger.leftBytes()).toBe(1000);
-    const restarted = new ByteLedger(1000, () => 86_400 * 3 + 50);
+    const restarted = new ByteLedger(1000, 0, () => 86_400 * 3 + 50);
     restarted.restore(kept);
     expect(restarted.allowedClasses()).toEqual(['alarm']);
-    const nextDay = new ByteLedger(1000, () => nowS);
+    const nextDay = new ByteLedger(1000, 0, () => nowS);
     nextDay.restore(kept);
     expect(nextDay.leftBytes()).toBe(1000);
   });
@@ -239,7 +239,14 @@ describe('the outbox drainer', () => {
           }),
       }) as unknown as Connection;
     const drainer = new OutboxDrainer(
-      { store, allowedClasses: () => messageClasses, published: () => undefined, log: () => undefined },
+      {
+        store,
+        allowedClasses: () => messageClasses,
+        published: () => undefined,
+        beside: () => ({ messages: 0, bytes: 0 }),
+        settled: () => undefined,
+        log: () => undefined,
+      },
       {
         maxInFlight: 16,
         maxPacketBytes: 1e6,
