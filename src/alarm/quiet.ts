@@ -7,7 +7,7 @@
  * Ages advance with ticks. What was sent since the last tick is taken to be as young as that tick can make it.
  */
 
-import { machineFacts, machinePayload } from './machine-state.ts';
+import { type MachineFacts, machineFacts, machinePayload } from './machine-state.ts';
 import { alarmPayload } from './payload.ts';
 import type { AlarmDefinition } from './plan.ts';
 import { type AlarmRow, type QuietRow, signature } from './state.ts';
@@ -18,6 +18,10 @@ const MACHINE_MESSAGES = 6;
 /** One of them is kept for the state topic, so that the lamp follows in a flood, and two more from mere detail. */
 const MACHINE_ALARMS = MACHINE_MESSAGES - 1;
 const MACHINE_DETAILS = MACHINE_MESSAGES - 3;
+/** Of the state topic: at most this many, so that two alarms always find room, */
+const MACHINE_STATES = MACHINE_MESSAGES - 2;
+/** and fewer where only zone, finding or the like changed, so that the lamp follows the alarm. */
+const STATE_DETAILS = 2;
 /** More than 10 in 10 minutes is a flood to one operator (ISA-18.2 and IEC 62682, as reproduced). */
 const STATION_WINDOW_S = 600;
 const STATION_ANNOUNCED = 10;
@@ -116,7 +120,9 @@ function publishState(work: StepWork, machineId: string): void {
   if (row.told === '' && facts.running === null && facts.severity === 0) return;
   if (told === row.told && row.sinceToldS < STATE_AT_LEAST_S) return;
   const sent = work.quiet.sent[machineId] ?? [];
-  if (sent.length >= MACHINE_MESSAGES) return;
+  const states = sent.filter((message) => !message.alarm).length;
+  const lamp = row.told === '' || (JSON.parse(row.told) as MachineFacts).severity !== facts.severity;
+  if (sent.length >= MACHINE_MESSAGES || states >= (lamp ? MACHINE_STATES : STATE_DETAILS)) return;
   const payload = machinePayload(facts, row, work.allocateId(), work.t);
   work.effects.push({ kind: 'publish', class: 'state', topic: `${machineId}/state`, payload });
   work.setMachine(machineId, { ...row, told, sinceToldS: 0 }, true);
