@@ -110,6 +110,10 @@ export class MemoryStore implements StoreEngine {
     row.tries++;
     if (!poison) return;
     row.aside ??= reason;
+    if (reason.startsWith('refused') && row.class === 'alarm') {
+      for (const other of this.#pending())
+        if (other.class === 'alarm' && other.topic === row.topic) other.aside = reason;
+    }
     const aside = this.#aside();
     for (const old of aside.slice(0, Math.max(0, aside.length - this.#limits.setAsideRows))) this.#drop(old);
   }
@@ -228,6 +232,11 @@ export class MemoryStore implements StoreEngine {
   }
 
   #add(message: OutboxMessage, runS: number): void {
+    if (message.class === 'alarm') {
+      for (const row of this.#rows.values())
+        if (row.class === 'alarm' && row.topic === message.topic && row.aside?.startsWith('refused'))
+          row.aside = null;
+    }
     if (superseded.includes(message.class)) {
       for (const row of this.#pending()) {
         if (row.topic !== message.topic || row.class !== message.class || row.n >= message.n) continue;

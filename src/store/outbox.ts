@@ -44,6 +44,8 @@ export class Outbox {
         const gone = this.#sql.supersede.run(message.topic, code(message.class), message.n).changes;
         if (gone > 0) this.#count('superseded', gone);
       }
+      // A new alarm is a new try for those of its topic that were refused: one after the other, the oldest first.
+      if (message.class === 'alarm') this.#sql.releaseTopic.run(code('alarm'), message.topic);
       this.#sql.insert.run({
         n: message.n,
         class: code(message.class),
@@ -95,6 +97,8 @@ export class Outbox {
       return;
     }
     this.#sql.setAside.run(reason, n);
+    // Whoever was refused one alarm must not hear of the next one first.
+    if (reason.startsWith('refused')) this.#sql.setTopicAside.run({ reason, n, alarm: code('alarm') });
     const surplus = this.#total('aside').rows - this.#limits.setAsideRows;
     if (surplus > 0) this.#dropEach(this.#sql.oldestAside.all(surplus) as { n: number; class: number }[]);
   }
@@ -219,6 +223,9 @@ const statements = {
   forget: 'DELETE FROM retained WHERE topic = ?',
   tried: 'UPDATE outbox SET tries = tries + 1 WHERE n = ?',
   setAside: 'UPDATE outbox SET aside = ?, tries = tries + 1 WHERE n = ? AND aside IS NULL',
+  setTopicAside: `UPDATE outbox SET aside = :reason WHERE aside IS NULL AND class = :alarm
+    AND topic = (SELECT topic FROM outbox WHERE n = :n AND class = :alarm)`,
+  releaseTopic: "UPDATE outbox SET aside = NULL WHERE aside LIKE 'refused%' AND class = ? AND topic = ?",
   release: "UPDATE outbox SET aside = NULL WHERE aside LIKE 'refused%' AND class = ?",
   resend: `INSERT INTO outbox (n, class, topic, payload, qos, retain, made_s, bytes)
     SELECT n, class, topic, payload, qos, 1, ?, length(topic) + length(payload) + 64 FROM retained AS r

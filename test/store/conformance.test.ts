@@ -145,6 +145,24 @@ for (const [kind, { make, clock }] of Object.entries(kinds)) {
       expect((await store.counters()).setAside.rows).toBe(2);
     });
 
+    it('never lets a later alarm of a topic pass one that was refused', async () => {
+      await open();
+      const on = (n: number, topic: string) => message(n, { topic });
+      await store.commit({ outbox: [on(1, 'a'), on(2, 'a'), on(3, 'b')] });
+      await store.reject(1, 'refused by the broker: 135', { poison: true });
+      expect(numbers(await store.batch(every))).toEqual([3]);
+      expect((await store.counters()).setAside.rows).toBe(2);
+      // The next one is a new try for all of them, in their order.
+      await store.commit({ outbox: [on(4, 'a')] });
+      expect(numbers(await store.batch(every))).toEqual([1, 3]);
+      await store.accept([1]);
+      expect(numbers(await store.batch(every))).toEqual([2, 3]);
+      await store.reject(2, 'refused by the broker: 135', { poison: true });
+      expect(numbers(await store.batch(every))).toEqual([3]);
+      expect(await store.releaseRefused()).toBe(2);
+      expect(numbers(await store.batch(every))).toEqual([2, 3]);
+    });
+
     it('keeps so many set-aside rows and counts the older ones as dropped', async () => {
       await open({ setAsideRows: 2 });
       await store.commit({ outbox: [1, 2, 3, 4].map((n) => message(n, { class: 'reading' })) });
