@@ -1,11 +1,14 @@
 /** From a record of samples to a reading. */
 
 import { severityApplies, severityLimits, severityZone, type Zone } from '../machine/severity.ts';
-import { statistics } from '../signal/statistics.ts';
+import { meanFrequency, statistics } from '../signal/statistics.ts';
+import { biasDrift, DRIFT_SPOILS_BELOW_HZ } from './bias-drift.ts';
 import { type DecimatedRecord, decimateRecord } from './decimated.ts';
 import { measureEnvelope } from './envelope.ts';
+import { isSilent } from './mount.ts';
 import { NO_ORDERS, orderFigures } from './orders.ts';
 import { expectedShaftHz, overallBandHz, type PointPlan } from './plan.ts';
+import { range } from './plan-notes.ts';
 import type { Reading } from './reading.ts';
 import type { SampleRecord } from './record.ts';
 import { foundShaft, givenShaft, type ShaftFigures } from './shaft.ts';
@@ -39,31 +42,37 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
     why.push(`rate uncertain: ${rateHz.toFixed(1)} Hz within ${(record.rate.ppm / 10_000).toFixed(1)} %`);
   }
   if (decimated.short !== null) why.push(decimated.short);
+  const given = givenShaft(plan, record);
+  const { rms, peak, crest, kurtosis } = statistics(acceleration);
+  const drift = biasDrift(decimated, overallBandHz(speedHz(plan, given), decimated.fmaxHz)[0], rms);
+  if (drift !== null) {
+    why.push(
+      `bias drift: the mean moves by ${drift.toPrecision(2)} g, nothing from below ${DRIFT_SPOILS_BELOW_HZ} Hz is told`,
+    );
+  }
+  const leastHz = drift === null ? 0 : DRIFT_SPOILS_BELOW_HZ;
   const take = (figure: Figure): number | null => {
     if (figure.why !== null) why.push(figure.why);
     return figure.value;
   };
+  const velocity = (bandHz: readonly [number, number], name: string): number | null =>
+    bandHz[0] < leastHz ? null : take(velocityRms(decimated, bandHz, name));
 
-  const given = givenShaft(plan, record);
-  const running = isRunning(plan, record, given, decimated);
+  const running = isRunning(plan, record, given, decimated, leastHz);
   const shaft = given ?? foundShaft(plan, decimated, acceleration, rateHz);
   // A machine at rest has no speed to be missed. It is looked for all the same: a smooth machine may vibrate less than
   // the threshold and still have a bearing that tells something.
   if (running !== false) why.push(...shaft.why);
 
   const bandHz = overallBandHz(shaft.hz ?? expectedShaftHz(plan), decimated.fmaxHz);
-  const overall = take(velocityRms(decimated, bandHz, 'overall velocity'));
+  const overall = velocity(bandHz, 'overall velocity');
   const displacement = overall === null ? null : displacementRms(decimated, bandHz).value;
   const bands: Record<string, number | null> = {};
   for (const { id, range } of plan.point.measure.bands) {
     const unitHz = 'hz' in range ? 1 : shaft.hz;
     const edges = 'hz' in range ? range.hz : range.orders;
-    bands[id] =
-      unitHz === null
-        ? null
-        : take(velocityRms(decimated, [edges[0] * unitHz, edges[1] * unitHz], `band ${id}`));
+    bands[id] = unitHz === null ? null : velocity([edges[0] * unitHz, edges[1] * unitHz], `band ${id}`);
   }
-  const { rms, peak, crest, kurtosis } = statistics(acceleration);
   const p2p = overall === null ? null : take(displacementPeakToPeak(decimated, bandHz));
   const { ratio } = plan.point;
   const otherHz = shaft.hz === null || ratio === 1 ? [] : [shaft.hz / ratio];
@@ -71,8 +80,14 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
   // Without a speed it says so too: once is enough, and of a machine at rest it is no news.
   const known = running === false || shaft.why.length > 0;
   const envelopeWhy = envelope.why.filter((text) => !(known && text.startsWith('speed unknown')));
+  const silent =
+    running !== false && envelope.reading !== null && isSilent(envelope.reading, gPerCount(record), rateHz);
+  if (silent) {
+    const band = range(envelope.reading.band_hz);
+    why.push(`no envelope: ${band} holds nothing but rounding of the counts; is the sensor loose?`);
+  }
   const uncertain = why.length > 0 || (envelope.uncertain && envelopeWhy.length > 0);
-  why.push(...envelopeWhy);
+  if (!silent) why.push(...envelopeWhy);
   const phase = shaft.source === 'tachometer' && hasPhase(plan, record) ? shaft.tachometer : null;
   return {
     quality: uncertain ? 'uncertain' : 'good',
@@ -91,10 +106,18 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
       rms: displacement,
       p2p,
     },
-    orders: shaft.hz === null ? NO_ORDERS : orderFigures(decimated, shaft.hz, phase),
+    orders: shaft.hz === null ? NO_ORDERS : orderFigures(decimated, shaft.hz, phase, leastHz),
     tones: shaft.hz === null ? NO_TONES : toneFigures(plan, decimated, shaft.hz),
-    acceleration: { unit: 'g', band_hz: [...plan.accelerationHz], rms, peak, crest, kurtosis },
-    envelope: envelope.reading,
+    acceleration: {
+      unit: 'g',
+      band_hz: [...plan.accelerationHz],
+      rms,
+      peak,
+      crest,
+      kurtosis,
+      mean_hz: meanFrequency(acceleration, rateHz),
+    },
+    envelope: silent ? null : envelope.reading,
     zone: zoneFor(plan, running, shaft.hz, overall, displacement),
   };
 }
@@ -111,16 +134,24 @@ function accelerationG(record: SampleRecord): Float64Array {
   return acceleration;
 }
 
+/** Before it is looked for in the record. */
+function speedHz(plan: PointPlan, given: ShaftFigures | null): number | null {
+  return given?.hz ?? expectedShaftHz(plan);
+}
+
+/** @param leastHz velocity from below this cannot be told. */
 function isRunning(
   plan: PointPlan,
   record: SampleRecord,
   given: ShaftFigures | null,
   decimated: DecimatedRecord,
+  leastHz: number,
 ): boolean | null {
   const rule = plan.machine.running;
   switch (rule.kind) {
     case 'velocity': {
-      const bandHz = overallBandHz(given?.hz ?? expectedShaftHz(plan), decimated.fmaxHz);
+      const bandHz = overallBandHz(speedHz(plan, given), decimated.fmaxHz);
+      if (bandHz[0] < leastHz) return null;
       const overall = velocityRms(decimated, bandHz, 'overall velocity').value;
       return overall === null ? null : overall > rule.aboveMmS;
     }
@@ -174,6 +205,7 @@ function badReading(plan: PointPlan, record: SampleRecord, why: string[]): Readi
       peak: null,
       crest: null,
       kurtosis: null,
+      mean_hz: null,
     },
     envelope: null,
     zone: null,

@@ -14,17 +14,19 @@ export const NO_ORDERS: Reading['orders'] = { '1': NOTHING, '2': NOTHING, '3': N
 /**
  * @param shaftHz speed of the shaft at the point.
  * @param tachometer on the same node, one pulse a turn of this very shaft; null: no phase.
+ * @param leastHz orders below this cannot be told.
  */
 export function orderFigures(
   record: DecimatedRecord,
   shaftHz: number,
   tachometer: TachometerSpeed | null,
+  leastHz: number,
 ): Reading['orders'] {
   const orders = { ...NO_ORDERS };
   for (const order of ORDERS) {
     const hz = order * shaftHz;
     // Where the line would not lie clear of the edge.
-    if (hz + 2 * record.spectrum.lineHz > record.fmaxHz) continue;
+    if (hz < leastHz || hz + 2 * record.spectrum.lineHz > record.fmaxHz) continue;
     orders[order] = {
       mm_s: lineVelocity(record.spectrum, hz, record.spectrum.lineHz)?.mmS ?? null,
       deg: tachometer === null ? null : lagDegrees(record, order, tachometer),

@@ -84,6 +84,8 @@ export interface Reading {
     peak: number | null;
     crest: number | null;
     kurtosis: number | null;
+    /** Frequency at which a lone tone would change as fast for its size; it falls when the sensor comes loose. */
+    mean_hz: number | null;
   };
   envelope: EnvelopeReading | null;
   zone: Zone | null;

@@ -63,3 +63,28 @@ export function statistics(x: Float64Array): Statistics {
     skewness: moves ? third / n / (variance * rms) : null,
   };
 }
+
+/**
+ * Mean frequency: that of the sine which changes as much from sample to sample for its size. It does not depend on the
+ * level, and rises and falls with where the power lies.
+ *
+ * @param x Samples, their mean removed, at least two.
+ * @param rateHz Sample rate, Hz.
+ * @returns Hz, 0 to half the rate; null where nothing moves.
+ * @throws SignalRangeError for fewer than two samples.
+ * @see Rice 1944, Bell System Technical Journal 23: root of the ratio of spectral moments (from memory).
+ * @example A sine of 100 Hz gives 100; white noise at rate R gives R/4.
+ */
+export function meanFrequency(x: Float64Array, rateHz: number): number | null {
+  requireCount('x.length', x.length, 2);
+  let square = 0;
+  let steps = 0;
+  for (let i = 1; i < x.length; i++) {
+    const step = x[i]! - x[i - 1]!;
+    steps += step * step;
+    // Both ends of the step, so that the ends of the stretch weigh alike.
+    square += (x[i]! * x[i]! + x[i - 1]! * x[i - 1]!) / 2;
+  }
+  if (!(square > 0)) return null;
+  return (rateHz / Math.PI) * Math.asin(Math.min(1, Math.sqrt(steps / square) / 2));
+}

@@ -51,6 +51,7 @@ const reading = z.looseObject({
     peak: figure,
     crest: figure,
     kurtosis: figure,
+    mean_hz: figure.optional(),
   }),
   envelope: z
     .looseObject({

@@ -134,6 +134,7 @@ export function makeReading(shown: Shown): Reading {
       peak: null,
       crest: null,
       kurtosis: null,
+      mean_hz: null,
     },
     envelope: measured
       ? {

@@ -1,7 +1,7 @@
 import fc from 'fast-check';
-import { expect, it } from 'vitest';
+import { describe, expect, it } from 'vitest';
 import { SignalRangeError } from '../../src/signal/range-error.ts';
-import { statistics } from '../../src/signal/statistics.ts';
+import { meanFrequency, statistics } from '../../src/signal/statistics.ts';
 import { noise, sine } from './support.ts';
 
 it('gives the worked example', () => {
@@ -67,4 +67,22 @@ it('has no ratios where nothing moves, and refuses no samples', () => {
     skewness: null,
   });
   expect(() => statistics(new Float64Array())).toThrow(SignalRangeError);
+});
+
+describe('mean frequency', () => {
+  it('is that of a lone sine, at any level, and a quarter of the rate for white noise', () => {
+    for (const hz of [10, 100, 3000, 4990]) {
+      for (const amplitude of [1e-3, 40]) {
+        const x = sine(10_000, { rateHz: 10_000, hz, amplitude });
+        expect(Math.abs(meanFrequency(x, 10_000)! / hz - 1)).toBeLessThan(1e-3);
+      }
+    }
+    // Expectation of the squared step is twice the variance; 100 000 samples know it to half a percent.
+    expect(Math.abs(meanFrequency(noise(100_000, 5), 10_000)! / 2500 - 1)).toBeLessThan(0.01);
+  });
+
+  it('is null where nothing moves', () => {
+    expect(meanFrequency(new Float64Array(10), 100)).toBeNull();
+    expect(() => meanFrequency(new Float64Array(1), 100)).toThrow(SignalRangeError);
+  });
 });
