@@ -29,6 +29,8 @@ import { ReadingPost } from './reading-post.ts';
 import { needsRestart, sameUplink, uplinkSettings } from './reload.ts';
 import { riseInputs } from './rises.ts';
 import type { ServiceManager } from './service-manager.ts';
+import { SnapshotAsks } from './snapshot-asks.ts';
+import { SnapshotKeeper } from './snapshot-keeper.ts';
 import { answerAsks } from './station-asks.ts';
 import { ringSecondsOf, StationLinks, setupOf } from './station-links.ts';
 import { Supervision } from './supervision.ts';
@@ -40,7 +42,7 @@ const HEALTH_EVERY_S = 6 * 3600;
 const CLOCK_CHECK_S = 600;
 const RISES_EVERY_S = 3600;
 /** What each part of a stop may take; together less than 5 s. What is not sent by then stays in the store. */
-const STOP_MS = { links: 800, judging: 800, uplink: 2000, store: 800 };
+const STOP_MS = { links: 800, judging: 800, snapshots: 800, uplink: 2000, store: 800 };
 
 export interface AgentOptions {
   version: string;
@@ -68,6 +70,8 @@ export class Agent {
     judging: Judging;
     post: ReadingPost;
     learning: Learning;
+    keeper: SnapshotKeeper;
+    snapshots: SnapshotAsks;
   } | null = null;
   #openedS = 0;
   #runSAtOpen = 0;
@@ -165,6 +169,7 @@ export class Agent {
         STOP_MS.judging,
         parts.judge.stop().then(() => parts.learning.stop()),
       );
+      await within(STOP_MS.snapshots, parts.keeper.stop());
       await within(STOP_MS.uplink + 200, parts.uplink.stop(STOP_MS.uplink));
     }
     await within(STOP_MS.store, this.#store.close());
@@ -219,6 +224,7 @@ export class Agent {
     const begin = async (station: Station) => {
       parts.uplink = this.#makeUplink(station, parts.ids);
       answerAsks(parts.uplink, { ...parts, store: this.#store, now: () => this.#now() });
+      parts.snapshots.answer(parts.uplink);
       await parts.uplink.start();
     };
     try {
@@ -243,6 +249,7 @@ export class Agent {
     const judging = new Judging(plan, restored.state, () => ids.idOf(ids.take()));
     const uplink = this.#makeUplink(station, ids);
     const kick = () => (this.#parts?.uplink ?? uplink).kick();
+    const keeper = this.#makeKeeper(judging);
     const judge = new LiveJudge(judging, {
       commit: (commit) => store.commit({ ...commit, nextN: ids.nextN }),
       topic: topics.below,
@@ -251,7 +258,8 @@ export class Agent {
         kick();
         this.#storeWorks();
       },
-      evidence: () => undefined,
+      evidence: (effect, reading) => keeper.evidence(effect, reading),
+      snapshotOf: (alarm, state) => keeper.snapshotOf(alarm, state),
       commitFailed: (error) => this.#storeFailed(error),
       inputFailed: (error) => this.#log.error('an alarm input could not be judged', error),
       monotonicS: () => this.#clock.monotonicS(),
@@ -275,14 +283,39 @@ export class Agent {
       now: () => this.#now(),
     });
     answerAsks(uplink, { judge, post, store, ids, judging, learning, now: () => this.#now() });
-    return { uplink, ids, judge, judging, post, learning };
+    const snapshots = new SnapshotAsks({
+      keeper,
+      station: () => this.#station,
+      wallMs: () => this.#clock.wallMs(),
+    });
+    snapshots.answer(uplink);
+    return { uplink, ids, judge, judging, post, learning, keeper, snapshots };
+  }
+
+  #makeKeeper(judging: Judging): SnapshotKeeper {
+    return new SnapshotKeeper(this.#options.version, {
+      station: () => this.#station,
+      source: (link) => this.#links.source(link),
+      wallMs: () => this.#clock.wallMs(),
+      monotonicS: () => this.#clock.monotonicS(),
+      runS: () => this.#runS(),
+      clock: () => this.#clockSays,
+      unacknowledged: (alarm) =>
+        ['unacknowledged', 'returned-unacknowledged'].includes(judging.state.alarms[alarm]?.life.state ?? ''),
+      running: (machine) => judging.state.machines[machine]?.running ?? null,
+      log: (message, details) => this.#log.warn(message, details),
+    });
+  }
+
+  #runS(): number {
+    return this.#runSAtOpen + this.#clock.monotonicS() - this.#openedS;
   }
 
   #makeUplink(station: Station, ids: MessageIds): Uplink {
     return new Uplink(uplinkSettings(station), {
       store: this.#store,
       ids,
-      runS: () => this.#runSAtOpen + this.#clock.monotonicS() - this.#openedS,
+      runS: () => this.#runS(),
       now: () => this.#now(),
       agent: () => ({
         version: this.#options.version,
@@ -306,7 +339,8 @@ export class Agent {
     const parts = this.#parts;
     if (!parts) return;
     const t = new Date(wallMs).toISOString();
-    const { learning, judging } = parts;
+    const { learning, judging, keeper } = parts;
+    keeper.noteReading(point.machineId, reading);
     const baseline = learning.baselineOf(point.key);
     void parts.judge
       .take({ kind: 'reading', pointKey: point.key, reading, t, elapsedS, baseline })
@@ -322,6 +356,7 @@ export class Agent {
     void this.#parts?.judge.take({ kind: 'tick', elapsedS, t: this.#now() });
     this.#parts?.learning.tick(elapsedS);
     this.#parts?.post.tick();
+    this.#parts?.keeper.tick();
     this.#supervision?.tick();
     this.#tickS = nowS;
     if (nowS - this.#healthS >= HEALTH_EVERY_S) {

@@ -4,7 +4,9 @@
  */
 
 import type { AlarmEffect, AlarmInput } from '../alarm/effects.ts';
+import type { AlarmPayload } from '../alarm/payload.ts';
 import type { AlarmPlan } from '../alarm/plan.ts';
+import type { Reading } from '../measure/reading.ts';
 import type { Commit, JournalEntry, MessageClass, OutboxMessage } from '../store/types.ts';
 import { journalEntryOf, numberOf } from './journal-entry.ts';
 import type { Judging } from './judging.ts';
@@ -18,7 +20,10 @@ export interface JudgeHost {
   emptying(name: MessageClass, topic: string): OutboxMessage;
   /** Rows for the broker are in the outbox. */
   committed(): void;
-  evidence(effect: Extract<AlarmEffect, { kind: 'evidence' }>): void;
+  /** A reading is over a limit, or what came of it: told of a beginning before the commit, so that none is missed. */
+  evidence(effect: Extract<AlarmEffect, { kind: 'evidence' }>, reading: Reading | null): void;
+  /** The waveform that an alarm in this state refers to. */
+  snapshotOf(alarm: string, state: string): string | null;
   commitFailed(error: unknown): void;
   /** The input was given up. */
   inputFailed(error: unknown): void;
@@ -119,10 +124,13 @@ export class LiveJudge {
   async #judge(next: Waiting): Promise<void> {
     const { effects, keep } =
       'plan' in next ? this.#judging.replan(next.plan) : this.#judging.step(next.input);
+    const reading = 'input' in next && next.input.kind === 'reading' ? next.input.reading : null;
+    const evidence = effects.filter((effect) => effect.kind === 'evidence');
+    for (const effect of evidence) if (effect.what === 'begin') this.#host.evidence(effect, reading);
     const durable = await this.#commit(effects);
     if (durable) keep();
     next.resolve(durable ? effects : []);
-    for (const effect of effects) if (effect.kind === 'evidence') this.#host.evidence(effect);
+    for (const effect of evidence) if (effect.what !== 'begin') this.#host.evidence(effect, reading);
   }
 
   /** Until it is durable, or the agent stops. */
@@ -154,18 +162,25 @@ export class LiveJudge {
           urgent ||= effect.urgent;
           break;
         case 'journal':
-          journal.push(journalEntryOf(effect.entry));
+          journal.push(
+            journalEntryOf({ ...effect.entry, payload: this.#named(effect.entry.key, effect.entry.payload) }),
+          );
           break;
-        case 'publish':
+        case 'publish': {
+          const payload =
+            effect.class === 'alarm'
+              ? this.#named(effect.topic.replace('/alarm/', '/'), effect.payload)
+              : effect.payload;
           outbox.push({
             n: numberOf(effect.payload.id),
             class: effect.class,
             topic: this.#host.topic(effect.topic),
-            payload: Buffer.from(JSON.stringify(effect.payload)),
+            payload: Buffer.from(JSON.stringify(payload)),
             qos: 1,
             retain: true,
           });
           break;
+        }
         case 'withdraw':
           outbox.push(this.#host.emptying('alarm', this.#host.topic(effect.topic)));
           break;
@@ -173,6 +188,12 @@ export class LiveJudge {
     }
     if (!urgent && journal.length === 0 && outbox.length === 0 && !this.#idleDue()) return null;
     return { alarmStates: this.#takeIdleRows(), journal, outbox };
+  }
+
+  /** With the waveform that it refers to. */
+  #named(alarm: string, payload: AlarmPayload): AlarmPayload {
+    if (payload.test) return payload;
+    return { ...payload, snapshot: this.#host.snapshotOf(alarm, payload.state) };
   }
 
   #idleDue(): boolean {

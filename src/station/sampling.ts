@@ -220,7 +220,7 @@ export class LinkSampling {
 }
 
 /** The rate as it is published, so that a replay can be given the very same one. */
-function usedRate(estimate: RateEstimate | null, nominalHz: number): RateUsed {
+export function usedRate(estimate: RateEstimate | null, nominalHz: number): RateUsed {
   if (!estimate) return { hz: nominalHz, source: 'nominal', ppm: null };
   return { hz: Number(estimate.hz.toPrecision(9)), source: estimate.source, ppm: estimate.ppm };
 }

@@ -5,7 +5,7 @@
 
 import type { LinkCondition as LinkAlarmCondition } from '../alarm/sensor.ts';
 import type { LinkSettings, Machine, Point, Station } from '../config/station.ts';
-import { Link } from '../link/link.ts';
+import { type EpochStart, Link } from '../link/link.ts';
 import type { LinkCondition, LinkHealth } from '../link/link-health.ts';
 import { systemClock } from '../link/system-clock.ts';
 import { measureRecord } from '../measure/measure.ts';
@@ -13,7 +13,9 @@ import { planPoint } from '../measure/plan.ts';
 import type { Reading } from '../measure/reading.ts';
 import type { MeasuringSetup } from './measure-job.ts';
 import type { MeasuringRoom } from './measuring-room.ts';
-import { type DueRecord, LinkSampling, type Unfed } from './sampling.ts';
+import { type DueRecord, LinkSampling, type Unfed, usedRate } from './sampling.ts';
+import { BEFORE_S } from './snapshot-keeper.ts';
+import type { LinkSource } from './snapshot-making.ts';
 import type { ToldValues } from './told.ts';
 
 export interface StationLinksHost {
@@ -43,6 +45,8 @@ interface Joined {
   settings: LinkSettings;
   link: Link;
   sampling: LinkSampling;
+  /** Of the epoch that runs; null: no samples yet. */
+  start: EpochStart | null;
 }
 
 export class StationLinks {
@@ -120,6 +124,16 @@ export class StationLinks {
     for (const id of kept) this.#report(id, this.#joined.get(id)?.sampling.unfed ?? []);
   }
 
+  /** Where the samples of a link are; null: it has none. */
+  source(id: string): LinkSource | null {
+    const joined = this.#joined.get(id);
+    const standing = joined?.sampling.standing;
+    if (!joined?.start || !standing) return null;
+    const { memory, epoch, firstIndex: epochFirst, description } = joined.start;
+    const rate = usedRate(joined.link.rate, description.nominalRateHz);
+    return { link: id, memory, epoch, epochFirst, head: standing.head, description, rate };
+  }
+
   health(): Record<string, LinkHealth> {
     return Object.fromEntries([...this.#joined].map(([id, { link }]) => [id, link.health()]));
   }
@@ -145,6 +159,7 @@ export class StationLinks {
         ...systemClock,
         onEpoch: (start) => {
           this.#room.addRing(id, start.memory);
+          joined.start = start;
           sampling.begin(start);
           this.#report(id, sampling.unfed);
         },
@@ -155,7 +170,8 @@ export class StationLinks {
         },
       },
     );
-    this.#joined.set(id, { settings, link, sampling });
+    const joined: Joined = { settings, link, sampling, start: null };
+    this.#joined.set(id, joined);
     return link;
   }
 
@@ -260,7 +276,8 @@ function longestRecordS(station: Station, linkId: string): number {
   const format = station.links.find(({ id }) => id === linkId)?.format;
   const told = format?.kind === 'columns' ? format.sampleRateHz : format?.expect.sampleRateHz;
   const rateHz = told ?? ASSUMED_RATE_HZ;
-  let longest = 0;
+  // A snapshot reaches so far back.
+  let longest = BEFORE_S;
   for (const machine of station.machines) {
     for (const point of machine.points.filter(({ link }) => link === linkId)) {
       const { recordSamples } = planPoint(point, machine, rateHz, station.site.mainsHz);

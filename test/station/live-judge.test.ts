@@ -30,6 +30,7 @@ function bench(failures = 0) {
     }),
     committed: () => undefined,
     evidence: () => undefined,
+    snapshotOf: () => null,
     commitFailed: (error) => failed.push(error),
     inputFailed: (error) => inputsFailed.push(error),
     monotonicS: () => 0,

@@ -1,0 +1,360 @@
+/**
+ * Keeps the waveforms that prove something. The first reading over a limit freezes the ring around its record; when
+ * the alarm comes of it the stretch becomes a snapshot, else it is dropped. Starts and coast-downs are kept as well,
+ * and what somebody asks for. A second alarm within a stretch refers to it, or makes it longer; nothing is kept twice.
+ *
+ * An alarm names its snapshot when it is published, so the name is given at the freezing; to name it is to keep it.
+ */
+
+import { randomBytes } from 'node:crypto';
+import { join } from 'node:path';
+import type { AlarmEffect } from '../alarm/effects.ts';
+import type { Machine, Point, Station } from '../config/station.ts';
+import { planPoint } from '../measure/plan.ts';
+import type { Reading } from '../measure/reading.ts';
+import { FlacRoom } from '../snapshot/flac-room.ts';
+import { Shelf, type Shelved } from '../snapshot/shelf.ts';
+import type { ShaftTag, SnapshotKind, SnapshotTags } from '../snapshot/tags.ts';
+import { SnapshotIndex } from './snapshot-index.ts';
+import { type LinkSource, Making } from './snapshot-making.ts';
+
+export interface KeeperHost {
+  station(): Station;
+  /** null: the link has no samples. */
+  source(link: string): LinkSource | null;
+  wallMs(): number;
+  monotonicS(): number;
+  /** Run time of the gateway over all starts, in seconds. */
+  runS(): number;
+  clock(): 'synchronised' | 'free';
+  unacknowledged(alarm: string): boolean;
+  /** null: unknown. */
+  running(machine: string): boolean | null;
+  log(message: string, details: Record<string, unknown>): void;
+}
+
+/** A machine runs up within seconds, and the reading that shows it ends a record later. */
+const RUN_BEFORE_S = 20;
+export const BEFORE_S = 10;
+const AFTER_S = 5;
+/** However many alarms follow each other, a snapshot is no longer than this. */
+const LONGEST_S = 30;
+/** What a node still owes after this is not waited for. */
+const LATE_S = 10;
+/** Stretches frozen for alarms that may yet come of them. */
+const MAX_FROZEN_BYTES = 48 * 1024 * 1024;
+/** Stretches written, for alarms that follow to refer to. */
+const MAX_RECENT = 16;
+const MAX_NUMBER = 200;
+const MAX_AGE_S = 365 * 86_400;
+/** Of the space that the agent may have. */
+const SHARE_OF_STORAGE = 0.25;
+
+export class SnapshotKeeper {
+  readonly shelf: Shelf;
+  readonly flac: FlacRoom;
+  /** Snapshots named and not kept: no room, no samples, or the disk refused them. */
+  lost = 0;
+  readonly #version: string;
+  readonly #host: KeeperHost;
+  readonly #index: SnapshotIndex;
+  /** Stretches that grow, or wait for their alarm, or are being written. */
+  readonly #making = new Map<string, Making>();
+  readonly #dueS = new Map<string, number>();
+  readonly #writing = new Map<string, Promise<Shelved | null>>();
+  readonly #recent: Making[] = [];
+  /** Alarms over their limit, and the stretch that holds their first reading. */
+  readonly #pending = new Map<string, string>();
+  readonly #shafts = new Map<string, ShaftTag>();
+  readonly #ran = new Map<string, boolean>();
+
+  /** Reads what is there and removes what was only half written. @param flac left out, the built worker. */
+  constructor(version: string, host: KeeperHost, flac = new FlacRoom()) {
+    this.#version = version;
+    this.#host = host;
+    this.flac = flac;
+    const { directory, maxMb } = host.station().storage;
+    const folder = join(directory, 'snapshots');
+    const limits = { number: MAX_NUMBER, bytes: maxMb * 1e6 * SHARE_OF_STORAGE, ageS: MAX_AGE_S };
+    this.shelf = new Shelf(folder, limits, {
+      runS: () => host.runS(),
+      needed: (id) => this.#index.alarmsOf(id).some((alarm) => host.unacknowledged(alarm)),
+    });
+    this.#index = new SnapshotIndex(folder);
+  }
+
+  /** Whether it is still growing or being written. */
+  isMaking(id: string): boolean {
+    return this.#making.has(id) || this.#writing.has(id);
+  }
+
+  counters(): Record<string, number> {
+    const { shelf } = this;
+    return {
+      kept: shelf.all.length,
+      bytes: shelf.bytes,
+      making: this.#making.size + this.#writing.size,
+      lost: this.lost,
+      dropped: shelf.dropped,
+      cleaned: shelf.cleaned,
+    };
+  }
+
+  noteReading(machine: string, { shaft }: Reading): void {
+    if (shaft.hz === null) this.#shafts.delete(machine);
+    else this.#shafts.set(machine, { machine, hz: shaft.hz, source: shaft.source ?? 'unknown' });
+  }
+
+  /** @param reading the one that the alarms were just judged by; null: none was. */
+  evidence(
+    { alarm, pointKey, what }: Extract<AlarmEffect, { kind: 'evidence' }>,
+    reading: Reading | null,
+  ): void {
+    if (what === 'begin') this.#begin(alarm, pointKey, reading);
+    else if (what === 'keep') this.#refer(alarm, this.#pending.get(alarm));
+    else this.#letGo(alarm);
+  }
+
+  /** The snapshot that an alarm, or the alarm of its machine as a whole, is to name; null: none. */
+  snapshotOf(alarm: string, state: string): string | null {
+    if (state === 'normal') return null;
+    if (state === 'unacknowledged')
+      this.#refer(alarm, this.#pending.get(alarm) ?? this.#pendingOfGroup(alarm));
+    const id = this.#index.get(alarm);
+    return id !== null && (this.isMaking(id) || this.shelf.get(id) !== null) ? id : null;
+  }
+
+  /** Once a second. */
+  tick(): void {
+    const nowS = this.#host.monotonicS();
+    this.#watchRuns();
+    for (const making of this.#making.values()) {
+      making.capture.advance();
+      if (nowS > (this.#dueS.get(making.id) ?? nowS) + LATE_S) making.capture.cut();
+      if (making.capture.done && making.wanted) void this.#write(making);
+    }
+  }
+
+  /**
+   * The newest samples of a node, now.
+   * @returns the snapshot once it is on the disk.
+   * @throws RangeError in words for whoever asked.
+   */
+  async take(link: string, seconds: number, cause: string): Promise<Shelved> {
+    const source = this.#host.source(link);
+    if (source === null) throw new RangeError(`link ${link} has no samples at present`);
+    const machine = this.#machineOn(link);
+    const first = source.head - Math.round(seconds * source.rate.hz);
+    const making = this.#make(source, machine, first, source.head, 'asked', cause);
+    if (making === null || making.capture.samples === 0)
+      throw new RangeError('there is no room for it at present');
+    const shelved = await this.#write(making);
+    if (shelved === null) throw new RangeError('it could not be written; the log of the agent says why');
+    return shelved;
+  }
+
+  /** Writes what there is of what is wanted. */
+  async stop(): Promise<void> {
+    for (const making of this.#making.values()) {
+      making.capture.advance();
+      making.capture.cut();
+      if (making.wanted) void this.#write(making);
+    }
+    await Promise.all(this.#writing.values());
+  }
+
+  #begin(alarm: string, pointKey: string, reading: Reading | null): void {
+    const found = this.#find(pointKey);
+    const present = found && this.#host.source(found.point.link);
+    if (!found || !present) return;
+    // The rate of the reading that is over the limit, so that a replay of the snapshot gives that very reading.
+    const source = { ...present, rate: reading?.rate ?? present.rate };
+    this.#letGo(alarm);
+    const { first, end } = this.#recordOf(found.machine, found.point, source, reading);
+    const rate = source.rate.hz;
+    const until = end + Math.round(AFTER_S * rate);
+    const making = [...this.#making.values()].find(
+      (one) => one.holds(source, first, end) || one.reaches(source, first),
+    );
+    if (making) {
+      making.capture.extend(Math.min(until, making.capture.first + Math.round(LONGEST_S * rate)));
+      this.#expect(making, source);
+      this.#hold(alarm, making.id, making);
+      return;
+    }
+    const recent = this.#recent.find((one) => one.holds(source, first, end));
+    if (recent) {
+      this.#hold(alarm, recent.id, recent);
+      return;
+    }
+    const from = Math.min(first, end - Math.round(BEFORE_S * rate));
+    const made = this.#make(source, found.machine, from, until, 'alarm', `alarm ${alarm}`);
+    if (made) this.#hold(alarm, made.id, made);
+  }
+
+  #hold(alarm: string, id: string, making: Making): void {
+    this.#pending.set(alarm, id);
+    making.holders.add(alarm);
+  }
+
+  #recordOf(machine: Machine, point: Point, source: LinkSource, reading: Reading | null) {
+    if (reading === null) return { first: source.head, end: source.head };
+    const { mainsHz } = this.#host.station().site;
+    const { recordSamples } = planPoint(point, machine, source.description.nominalRateHz, mainsHz);
+    const end = Math.min(source.head, reading.first_index + recordSamples);
+    return { first: Math.min(reading.first_index, end), end };
+  }
+
+  #make(
+    source: LinkSource,
+    machine: Machine | null,
+    first: number,
+    until: number,
+    kind: SnapshotKind,
+    cause: string,
+  ): Making | null {
+    const bytes = Math.max(0, until - first) * source.description.channels.length * 4;
+    this.#makeRoom(bytes);
+    if (this.#frozenBytes() + bytes > MAX_FROZEN_BYTES) {
+      this.lost++;
+      this.#host.log('no memory for another snapshot', { cause });
+      return null;
+    }
+    const wallMs = this.#host.wallMs();
+    const id = nameOf(wallMs, machine?.id ?? source.link);
+    const making = new Making(this.#host.station(), source, first, until, { id, kind, cause, wallMs });
+    this.#making.set(id, making);
+    this.#expect(making, source);
+    return making;
+  }
+
+  #expect(making: Making, source: LinkSource): void {
+    const leftS = Math.max(0, making.capture.until - source.head) / source.rate.hz;
+    this.#dueS.set(making.id, this.#host.monotonicS() + leftS);
+  }
+
+  /** The oldest that no alarm has come of goes first. */
+  #makeRoom(bytes: number): void {
+    for (const making of this.#making.values()) {
+      if (this.#frozenBytes() + bytes <= MAX_FROZEN_BYTES) return;
+      if (!making.wanted) this.#forget(making);
+    }
+  }
+
+  #frozenBytes(): number {
+    return [...this.#making.values()].reduce((sum, { capture }) => sum + capture.bytes, 0);
+  }
+
+  #letGo(alarm: string): void {
+    const making = this.#making.get(this.#pending.get(alarm) ?? '');
+    this.#pending.delete(alarm);
+    making?.holders.delete(alarm);
+    if (making && making.holders.size === 0 && !making.wanted) this.#forget(making);
+  }
+
+  #forget(making: Making): void {
+    this.#making.delete(making.id);
+    this.#dueS.delete(making.id);
+    for (const [alarm, id] of this.#pending) if (id === making.id) this.#pending.delete(alarm);
+  }
+
+  #refer(alarm: string, id: string | undefined): void {
+    if (id === undefined) return;
+    this.#making.get(id)?.alarms.add(alarm);
+    try {
+      this.#index.set(alarm, id, (other) => this.isMaking(other) || this.shelf.get(other) !== null);
+    } catch (error) {
+      this.#host.log('the index of the snapshots cannot be written', { err: error });
+    }
+  }
+
+  /** `pump-1/machine.zone` stands for `pump-1/<point>.zone`. */
+  #pendingOfGroup(alarm: string): string | undefined {
+    const [machine, rule] = alarm.split('/machine.');
+    if (machine === undefined || rule === undefined) return undefined;
+    const members = [...this.#pending].filter(
+      ([key]) => key.startsWith(`${machine}/`) && key.endsWith(`.${rule}`),
+    );
+    return members.at(-1)?.[1];
+  }
+
+  #write(making: Making): Promise<Shelved | null> {
+    const { id } = making;
+    const { counts, gaps } = making.capture.take();
+    this.#making.delete(id);
+    this.#dueS.delete(id);
+    this.#recent.push(making);
+    if (this.#recent.length > MAX_RECENT) this.#recent.shift();
+    const writing = this.#put(making, counts, gaps).finally(() => this.#writing.delete(id));
+    this.#writing.set(id, writing);
+    return writing;
+  }
+
+  async #put(making: Making, counts: Int32Array[], gaps: SnapshotTags['gaps']): Promise<Shelved | null> {
+    const { id } = making;
+    try {
+      if ((counts[0]?.length ?? 0) === 0) throw new RangeError('its samples are gone');
+      const context = {
+        clock: this.#host.clock(),
+        shafts: [...this.#shafts.values()],
+        version: this.#version,
+        takenRunS: Math.round(this.#host.runS()),
+      };
+      const tags = making.tags(this.#host.station(), context, gaps);
+      await this.flac.run({ kind: 'write', path: this.shelf.pathOf(id), counts, tags });
+      return this.shelf.add(id);
+    } catch (error) {
+      this.lost++;
+      this.#recent.splice(0, this.#recent.length, ...this.#recent.filter((other) => other !== making));
+      this.#host.log('a snapshot could not be written', { id, err: error });
+      return null;
+    }
+  }
+
+  #watchRuns(): void {
+    for (const machine of this.#host.station().machines) {
+      const running = this.#host.running(machine.id);
+      if (running === null) continue;
+      const ran = this.#ran.get(machine.id);
+      this.#ran.set(machine.id, running);
+      if (ran !== undefined && ran !== running) this.#keepRun(machine, running ? 'start' : 'coast-down');
+    }
+  }
+
+  #keepRun(machine: Machine, kind: 'start' | 'coast-down'): void {
+    for (const link of new Set(machine.points.map((point) => point.link))) {
+      const source = this.#host.source(link);
+      if (!source) continue;
+      const rate = source.rate.hz;
+      const first = source.head - Math.round(RUN_BEFORE_S * rate);
+      this.#make(
+        source,
+        machine,
+        first,
+        source.head + Math.round(AFTER_S * rate),
+        kind,
+        `${kind} of ${machine.id}`,
+      );
+    }
+  }
+
+  #find(pointKey: string): { machine: Machine; point: Point } | null {
+    for (const machine of this.#host.station().machines) {
+      const point = machine.points.find(({ key }) => key === pointKey);
+      if (point) return { machine, point };
+    }
+    return null;
+  }
+
+  #machineOn(link: string): Machine | null {
+    return (
+      this.#host.station().machines.find(({ points }) => points.some((point) => point.link === link)) ?? null
+    );
+  }
+}
+
+/** `20260302T101530Z-pump-1-3f2a`: time, whose, and four digits by chance against a clock that was set back. */
+function nameOf(wallMs: number, of: string): string {
+  const time = new Date(wallMs).toISOString().replace(/[-:]/g, '').replace(/\.\d+/, '');
+  return `${time}-${of}-${randomBytes(2).toString('hex')}`;
+}

@@ -1,0 +1,122 @@
+/** A snapshot in the making: what is copied out of the ring, for whom, and what its tags will say. */
+
+import type { Station } from '../config/station.ts';
+import type { NodeDescription } from '../link/description.ts';
+import type { RateUsed } from '../measure/reading.ts';
+import { Capture, type CaptureSource } from '../snapshot/capture.ts';
+import type { SnapshotChannel, SnapshotKind, SnapshotTags } from '../snapshot/tags.ts';
+
+/** Where the samples of a link are, at this moment. */
+export interface LinkSource extends CaptureSource {
+  link: string;
+  /** Index after the newest sample. */
+  head: number;
+  description: NodeDescription;
+  rate: RateUsed;
+}
+
+/** FLAC knows no more. */
+const MAX_CHANNELS = 8;
+
+export interface MakingFacts {
+  id: string;
+  kind: SnapshotKind;
+  cause: string;
+  /** Wall time of the sample at the head of the ring. */
+  wallMs: number;
+}
+
+export class Making {
+  readonly id: string;
+  readonly link: string;
+  readonly capture: Capture;
+  /** Alarms whose reading it holds. */
+  readonly holders = new Set<string>();
+  /** Alarms that came of it. */
+  readonly alarms = new Set<string>();
+  readonly #facts: MakingFacts;
+  readonly #source: LinkSource;
+  readonly #channels: readonly { index: number; channel: SnapshotChannel }[];
+  readonly #startMs: number;
+
+  constructor(station: Station, source: LinkSource, first: number, until: number, facts: MakingFacts) {
+    this.id = facts.id;
+    this.link = source.link;
+    this.#facts = facts;
+    this.#source = source;
+    this.#channels = channelsOf(station, source);
+    const indices = this.#channels.map(({ index }) => index);
+    this.capture = new Capture(source, indices, first, until);
+    this.#startMs = facts.wallMs - ((source.head - this.capture.first) / source.rate.hz) * 1000;
+  }
+
+  /** To be kept whether or not an alarm comes of it. */
+  get wanted(): boolean {
+    return this.#facts.kind !== 'alarm' || this.alarms.size > 0;
+  }
+
+  /** Whether it holds these samples, or will. */
+  holds(source: LinkSource, first: number, end: number): boolean {
+    const { capture } = this;
+    return this.#sameEpoch(source) && capture.first <= first && end <= capture.until;
+  }
+
+  /** Whether it is still growing over these samples. */
+  reaches(source: LinkSource, first: number): boolean {
+    const { capture } = this;
+    return this.#sameEpoch(source) && !capture.done && capture.first <= first && first <= capture.until;
+  }
+
+  tags(
+    station: Station,
+    context: Pick<SnapshotTags, 'clock' | 'shafts' | 'version' | 'takenRunS'>,
+    gaps: SnapshotTags['gaps'],
+  ): SnapshotTags {
+    const { description, rate } = this.#source;
+    const channels = this.#channels.map(({ channel }) => channel);
+    const machines = [...new Set(channels.flatMap(({ points }) => points.map((key) => key.split('/')[0]!)))];
+    return {
+      ...context,
+      shafts: context.shafts.filter(({ machine }) => machines.includes(machine)),
+      id: this.id,
+      site: station.site.id,
+      machines,
+      link: this.link,
+      nominalRateHz: description.nominalRateHz,
+      rate,
+      start: new Date(this.#startMs).toISOString(),
+      firstIndex: this.capture.first,
+      nodeSerial: description.serialNumber,
+      cause: this.#facts.cause,
+      kind: this.#facts.kind,
+      alarms: [...this.alarms],
+      config: station.configHash,
+      gaps,
+      channels,
+    };
+  }
+
+  #sameEpoch(source: LinkSource): boolean {
+    return this.link === source.link && this.capture.epoch === source.epoch;
+  }
+}
+
+/** All channels of the node; where it has more than FLAC can hold, those that points use first. */
+function channelsOf(
+  station: Station,
+  { link, description }: LinkSource,
+): { index: number; channel: SnapshotChannel }[] {
+  const points = station.machines.flatMap((machine) => machine.points).filter((point) => point.link === link);
+  const all = description.channels.map((described, index) => {
+    const { name, unit, unitsPerCount, countRange } = described;
+    const keys = points.filter(({ channel }) => channel === name).map(({ key }) => key);
+    return { index, channel: { name, unit, unitsPerCount, countRange, points: keys } };
+  });
+  if (all.length <= MAX_CHANNELS) return all;
+  const rank = ({ channel }: (typeof all)[number]) =>
+    channel.points.length > 0 ? 0 : channel.unit === 'logic' ? 1 : 2;
+  return all
+    .toSorted((a, b) => rank(a) - rank(b) || a.index - b.index)
+    .slice(0, MAX_CHANNELS)
+    .sort((a, b) => a.index - b.index);
+}
