@@ -6,7 +6,7 @@ import { loadStation } from '../config/load.ts';
 import type { Point, Station } from '../config/station.ts';
 import type { RateUsed } from '../measure/reading.ts';
 import { openRecording, type Recording } from '../snapshot/recording.ts';
-import { type ReplayChannel, type ReplayEvent, replay } from '../station/replaying.ts';
+import { type ReplayChannel, type ReplayEvent, type ReplayOptions, replay } from '../station/replaying.ts';
 import { readingBody } from '../uplink/payload.ts';
 import { lineFor } from './event-text.ts';
 
@@ -21,7 +21,7 @@ export interface ReplayCommandOptions {
   json?: boolean;
 }
 
-interface Output {
+export interface Output {
   write(text: string): unknown;
 }
 
@@ -38,16 +38,7 @@ export async function replayCommand(
   const station = withEvery(loadStation(options.config), options.every);
   const recording = openRecording(file);
   try {
-    const { tags } = recording;
-    const channels = channelsFor(station, recording, options.points, options.fullScaleG ?? null);
-    const rate = rateOf(recording, options.rateHz);
-    const events = replay(station, recording, {
-      channels,
-      nominalRateHz: tags?.nominalRateHz ?? nominalRate(station, channels, recording.rateHz, err),
-      rate,
-      firstIndex: options.firstIndex ?? tags?.firstIndex ?? 0,
-      startMs: startOf(options.start ?? tags?.start),
-    });
+    const events = replay(station, recording, replayOptionsFor(station, recording, options, err));
     for (const event of events) {
       const line = lineOf(event);
       if (line) out.write(`${options.json ? JSON.stringify(line) : lineFor(line)}\n`);
@@ -58,10 +49,28 @@ export async function replayCommand(
   }
 }
 
+/** How a recording is replayed: which channel is which point, at what rate, from when on. */
+export function replayOptionsFor(
+  station: Station,
+  recording: Recording,
+  options: Omit<ReplayCommandOptions, 'config' | 'every' | 'json'>,
+  err: Output,
+): ReplayOptions {
+  const { tags } = recording;
+  const channels = channelsFor(station, recording, options.points, options.fullScaleG ?? null);
+  return {
+    channels,
+    nominalRateHz: tags?.nominalRateHz ?? nominalRate(station, channels, recording.rateHz, err),
+    rate: rateOf(recording, options.rateHz),
+    firstIndex: options.firstIndex ?? tags?.firstIndex ?? 0,
+    startMs: startOf(options.start ?? tags?.start),
+  };
+}
+
 /** The payload of topics.md with what says whose it is; null for what is not printed. */
 export type PrintedLine = { kind: string; machine: string } & Record<string, unknown>;
 
-function lineOf(event: ReplayEvent): PrintedLine | null {
+export function lineOf(event: ReplayEvent): PrintedLine | null {
   if (event.kind === 'effect') return alarmOrFindingLine(event.effect);
   const { machine, point, id, t, reading } = event;
   return { kind: 'reading', machine, point, id, ...readingBody(t, reading) };
@@ -90,7 +99,7 @@ function rateOf({ rateHz, tags }: Recording, givenHz: number | undefined): RateU
   return tags?.rate ?? { hz: rateHz, source: 'nominal', ppm: null };
 }
 
-function withEvery(station: Station, everyS: number | undefined): Station {
+export function withEvery(station: Station, everyS: number | undefined): Station {
   if (everyS === undefined) return station;
   const machines = station.machines.map((machine) => ({
     ...machine,
