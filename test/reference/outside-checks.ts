@@ -66,7 +66,7 @@ export function runCheck(check: OutsideCheck): CheckResult {
 }
 
 function short(value: number): string {
-  return String(Number(value.toPrecision(7)));
+  return Number.isInteger(value) ? String(value) : String(Number(value.toPrecision(7)));
 }
 
 const RATE_HZ = 40_960;
