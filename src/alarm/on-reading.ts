@@ -11,7 +11,7 @@ import type { LifeState } from './life-cycle.ts';
 import { judge, type Verdict } from './limits.ts';
 import type { PointAlarm, PointPlan } from './plan.ts';
 import { riseOver } from './rise.ts';
-import { GAPS, hasGap, sensorFault } from './sensor.ts';
+import { GAPS, hasGap, LINK_CONDITIONS, sensorFault } from './sensor.ts';
 import {
   agentClearedReason,
   agentWords,
@@ -207,7 +207,8 @@ function tellEvidence(
 }
 
 function judgeSensor(work: StepWork, { sensor }: PointPlan, reading: Reading, elapsedS: number | null): void {
-  if (sensor === null) return;
+  // Where samples are missing the counts stand still, and that is not the sensor.
+  if (sensor === null || hasGap(reading)) return;
   const fault = sensorFault(reading);
   const says = { alert: fault !== null, danger: false };
   const row = work.alarm(sensor.key);
@@ -225,6 +226,11 @@ function judgeSensor(work: StepWork, { sensor }: PointPlan, reading: Reading, el
 function judgeGaps(work: StepWork, { point }: PointPlan, reading: Reading, elapsedS: number | null): void {
   const alarm = work.plan.alarms.get(`agent/${point.link}.${GAPS}`);
   if (alarm === undefined) return;
+  // The hole that a lost node leaves is told already.
+  const lost = LINK_CONDITIONS.some(
+    (c) => work.alarm(`agent/${point.link}.${c}`).condition.alert.since !== null,
+  );
+  if (lost) return;
   const says = { alert: hasGap(reading), danger: false };
   const row = work.alarm(alarm.key);
   const condition = stepCondition(row.condition, alarm.timing, { over: says, near: says }, elapsedS, work.t);

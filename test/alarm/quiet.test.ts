@@ -10,6 +10,7 @@ import {
   makePoint,
   makeStation,
   onePoint,
+  sensorRule,
   statesIn,
   zoneRule,
 } from './support.ts';
@@ -27,7 +28,7 @@ function many(
       Array.from({ length: points }, (_, p) => makePoint(id, `p${p + 1}`, `node-${m + 1}`)),
     ),
   );
-  const bench = new Bench(makeStation(made, [rule]));
+  const bench = new Bench(makeStation(made, [rule, sensorRule]));
   const all = (mmS: number) => Object.fromEntries([...bench.plan.points.keys()].map((key) => [key, { mmS }]));
   return { bench, all };
 }
@@ -111,6 +112,30 @@ describe('one cause, one alarm', () => {
     bench.put({ kind: 'link', link: 'node-1', conditions: ['silent'], detail: null, t: bench.t });
     for (let i = 0; i < 100; i++) bench.tick(10);
     expect(alarmsIn(bench.effects)).toHaveLength(1);
+  });
+
+  test('the hole that a lost node leaves is neither the fault of its sensors nor news', () => {
+    const { bench, all } = many(1, 12);
+    const hole = Object.fromEntries(
+      Object.keys(all(0)).map((key) => [
+        key,
+        {
+          mmS: null,
+          why: ['gap: 9000 samples missing', 'flat line: the counts stand still for 9000 samples'],
+        },
+      ]),
+    );
+    for (let i = 0; i < 4; i++) bench.read(all(2));
+    bench.put({ kind: 'link', link: 'node-1', conditions: ['refused'], detail: null, t: bench.t });
+    for (let i = 0; i < 10; i++) bench.tick(10);
+    bench.put({ kind: 'link', link: 'node-1', conditions: [], detail: null, t: bench.t });
+    for (let i = 0; i < 3; i++) bench.read(hole, 1);
+    for (let i = 0; i < 40; i++) bench.read(all(2));
+    expect(brief(alarmsIn(bench.effects))).toEqual(['unacknowledged alert', 'returned-unacknowledged alert']);
+    // Without a lost node, the same readings are a link that loses samples; and still no sensor's fault.
+    for (let i = 0; i < 3; i++) bench.read(hole);
+    const told = Object.entries(bench.state.alarms).filter(([, { life }]) => life.state === 'unacknowledged');
+    expect(told.map(([key]) => key)).toEqual(['agent/node-1.gaps']);
   });
 });
 
