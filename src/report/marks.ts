@@ -21,9 +21,9 @@ export interface Mark {
 const SHAFT_ORDERS = 10;
 const ENVELOPE_SHAFT_ORDERS = 3;
 const BEARING_HARMONICS = 5;
-/** Sidebands on either side of the fundamental and its second harmonic. */
+/** Sidebands on either side of the fundamental and its first harmonics. */
 const SIDEBANDS = 2;
-const SIDEBAND_TEETH = 2;
+const SIDEBAND_TEETH = 3;
 
 const FAMILY: Readonly<Record<LineName, MarkFamily>> = {
   bpfo: 'outer',

@@ -178,11 +178,12 @@ function roundedReading({ key, t, reading }: ReportReading): ReportReading {
   return { key, t, reading: { ...roundedFigures(reading), first_index, rate } };
 }
 
-/** The last of the readings that say most: trusted before not, running before stopped, a defect, a higher zone. */
+/** The last of the readings that say most: trusted, running, its speed known, a defect, a higher zone. */
 function mostTelling(readings: readonly ReportReading[]): ReportReading | null {
   const rank = ({ reading }: ReportReading) =>
     (reading.quality === 'bad' ? 0 : 1000) +
     (reading.running === false ? 0 : 100) +
+    (reading.shaft.hz === null ? 0 : 50) +
     (reading.envelope?.defect ? 10 : 0) +
     (reading.zone === null ? 0 : 1 + 'ABCD'.indexOf(reading.zone));
   return readings.reduce<ReportReading | null>(

@@ -44,6 +44,9 @@ function cascadeChart(index: number, key: string): Markup {
 function bearingTable({ point, shown, plan }: PointReport): Markup | null {
   const { envelope } = shown.reading;
   if (envelope === null || plan.bearings.length === 0) return null;
+  if (envelope.bearing === undefined) {
+    return html`<p class="note">Without a shaft speed no line of ${plan.bearings.map(({ id }) => id).join(', ')} can be looked for.</p>`;
+  }
   const row = (name: (typeof lineNames)[number]) => {
     const line = envelope[name];
     const of = (key: string) => `${point.key}/envelope.${name}.${key}`;
@@ -52,38 +55,47 @@ function bearingTable({ point, shown, plan }: PointReport): Markup | null {
 <td class="number" data-figure="${of('line')}">${figure(line?.line)}</td><td class="number" data-figure="${of('over_floor_db')}">${figure(line?.over_floor_db)}</td>
 <td class="number" data-figure="${of('modulation')}">${figure(line?.modulation)}</td><td class="number" data-figure="${of('harmonics')}">${figure(line?.harmonics)}</td></tr>`;
   };
-  return html`<h3>Bearing ${envelope.bearing ?? ''}: ${envelope.defect ? `accuses the ${defectNames[envelope.defect]}` : 'no part accused'}</h3>
+  return html`<h3>Bearing ${envelope.bearing}: ${envelope.defect ? `accuses the ${defectNames[envelope.defect]}` : 'no part accused'}</h3>
 <div class="scroll"><table><thead><tr><th>Line</th><th>Expected, Hz</th><th>Found, Hz</th><th>Line, g²</th><th>Over floor, dB</th><th>Of the mean</th><th>Harmonics</th></tr></thead>
 <tbody>${lineNames.map(row)}</tbody></table></div>`;
 }
 
-/** Every figure of the reading, under the path that an alarm rule would watch it by. */
+/** Every other figure of the reading, under the path that an alarm rule would watch it by. */
 function figures({ point, shown }: PointReport, index: number): Markup {
-  const { velocity, displacement, orders, acceleration, envelope, shaft, rate } = shown.reading;
-  const rows: [string, number | null | undefined, string][] = [
-    ['shaft.hz', shaft.hz, 'Hz'],
-    ['velocity.overall', velocity.overall, 'mm/s RMS'],
-    ['displacement.rms', displacement.rms, 'µm RMS'],
-    ['displacement.p2p', displacement.p2p, 'µm peak to peak'],
-    ...(['1', '2', '3'] as const).flatMap((order): [string, number | null, string][] => [
-      [`orders.${order}.mm_s`, orders[order].mm_s, 'mm/s RMS'],
-      ...(orders[order].deg === null
-        ? []
-        : [[`orders.${order}.deg`, orders[order].deg, '°'] as [string, number, string]]),
-    ]),
-    ['acceleration.rms', acceleration.rms, 'g RMS'],
-    ['acceleration.peak', acceleration.peak, 'g'],
-    ['acceleration.crest', acceleration.crest, ''],
-    ['acceleration.kurtosis', acceleration.kurtosis, ''],
-    ['envelope.mean', envelope?.mean, 'g²'],
-    ['envelope.floor', envelope?.floor, 'g²'],
-    ['rate.hz', Number(rate.hz.toPrecision(9)), 'Hz'],
-  ];
-  return html`<h3 id="figures-${index}">Figures of the reading of ${time(shown.t)}</h3>
+  const { velocity, envelope, rate, first_index, ...rest } = shown.reading;
+  const rows = leavesOf('', {
+    ...rest,
+    velocity: { overall: velocity.overall },
+    envelope: envelope && { mean: envelope.mean, floor: envelope.floor },
+    rate: { hz: Number(rate.hz.toPrecision(9)), ppm: rate.ppm },
+  });
+  return html`<h3 id="figures-${index}">Figures of the reading of ${time(shown.t)}, from sample ${first_index}</h3>
 <dl class="figures">${rows.map(
-    ([path, value, unit]) =>
-      html`<div><dt>${path}</dt><dd><span data-figure="${point.key}/${path}">${figure(value)}</span> ${value === null || value === undefined ? '' : unit}</dd></div>`,
+    ([path, value]) =>
+      html`<div><dt>${path}</dt><dd><span data-figure="${point.key}/${path}">${figure(value)}</span>${value === null ? '' : ` ${unitOf(path)}`}</dd></div>`,
   )}</dl>`;
+}
+
+/** Numbers within a reading, and nulls where one could be; `a.b` names b of a. */
+function leavesOf(prefix: string, value: unknown): [string, number | null][] {
+  if (typeof value === 'number' || value === null) return [[prefix, value]];
+  if (typeof value !== 'object' || Array.isArray(value)) return [];
+  return Object.entries(value as object).flatMap(([key, part]) =>
+    NO_FIGURES.has(key) ? [] : leavesOf(prefix === '' ? key : `${prefix}.${key}`, part),
+  );
+}
+
+/** Words, though they may be null. */
+const NO_FIGURES: ReadonlySet<string> = new Set(['zone', 'source', 'running', 'defect']);
+
+function unitOf(path: string): string {
+  const key = path.slice(path.lastIndexOf('.') + 1);
+  if (path.startsWith('displacement.')) return key === 'p2p' ? 'µm p-p' : 'µm RMS';
+  if (path.startsWith('envelope.')) return 'g²';
+  if (path === 'velocity.overall' || key === 'mm_s') return 'mm/s RMS';
+  if (path === 'acceleration.rms') return 'g RMS';
+  if (key.endsWith('_hz')) return 'Hz';
+  return { 'acceleration.peak': 'g' }[path] ?? { hz: 'Hz', deg: '°', ppm: 'ppm' }[key] ?? '';
 }
 
 const MOST_READINGS = 60;

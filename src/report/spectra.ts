@@ -62,11 +62,7 @@ export function recordCurves(
 /** Velocity of each bin, mm/s RMS. */
 export function velocityCurve(spectrum: Spectrum, fmaxHz: number): Curve {
   const weights = velocityWeights(spectrum, 'g');
-  // Nearer to 0 Hz a line cannot be told from what is left of the mean, which integration makes large.
-  const least = (mainLobeHalfWidthBins(spectrum.window) * spectrum.lineHz) / spectrum.binHz;
-  const lines = lineAmplitudes(spectrum).map((g, k) =>
-    k < least ? 0 : (g / Math.SQRT2) * Math.sqrt(weights[k]!),
-  );
+  const lines = lineAmplitudes(spectrum).map((g, k) => (g / Math.SQRT2) * Math.sqrt(weights[k]!));
   return curveOf(spectrum, lines, fmaxHz);
 }
 
@@ -102,7 +98,7 @@ function curveOf(spectrum: Spectrum, lines: Float64Array, fmaxHz: number): Curve
   const { binHz: stepHz, lineHz, averages } = spectrum;
   const bins = Math.min(lines.length, Math.floor(fmaxHz / stepHz) + 1);
   const values = Float32Array.from(lines.subarray(0, bins));
-  // At 0 Hz there is only what is left of the mean.
-  values[0] = 0;
+  // Nearer to 0 Hz a line cannot be told from drift.
+  values.fill(0, 0, Math.ceil((mainLobeHalfWidthBins(spectrum.window) * lineHz) / stepHz));
   return { stepHz, lineHz, averages, values };
 }

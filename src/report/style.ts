@@ -6,7 +6,7 @@ export const style = `
 :root{--ink:#17222b;--soft:#5a6772;--line:#d5d9d4;--paper:#fcfbf7;--wash:#f1f1ea;--accent:#14505c;
 --zone-a:#e4eee9;--zone-b:#b5cfc9;--zone-c:#e3a63f;--zone-d:#8c2a1c;color-scheme:light}
 *{box-sizing:border-box}
-html{scroll-behavior:smooth;scroll-padding-top:3.2rem}
+html{scroll-padding-top:3.2rem}
 body{margin:0;background:var(--paper);color:var(--ink);font:15px/1.5 system-ui,"Segoe UI","DejaVu Sans",sans-serif}
 main,header,footer{max-width:1120px;margin:0 auto;padding:0 1.25rem}
 header{padding-top:1.6rem}
@@ -61,6 +61,7 @@ tr.shown td{background:var(--wash);font-weight:600}
 .figures dt{color:var(--soft)}.figures dd{margin:0;font-variant-numeric:tabular-nums}
 details{margin:1rem 0}summary{cursor:pointer;font-weight:600;font-size:.95rem}
 .chart{margin:1.3rem 0 0;break-inside:avoid}
+.chart:not([data-filled]){min-height:360px}
 figcaption{font-size:.9rem;margin-bottom:.3rem}
 .tools{display:flex;flex-wrap:wrap;gap:.3rem .5rem;align-items:center;font-size:.85rem;margin-bottom:.25rem}
 .tools button{font:inherit;min-width:2.1rem;min-height:2rem;padding:.1rem .55rem;border:1px solid var(--soft);background:#fff;color:var(--ink);border-radius:3px;cursor:pointer}

@@ -10,7 +10,7 @@ const looks = new Map([
   ['shaft', { title: 'shaft', colour: '#a6480f', dash: [7, 3] }],
   ['vanes', { title: 'vane pass', colour: '#4c6b12', dash: [2, 3] }],
   ['mains', { title: 'mains', colour: '#6b3f91', dash: [9, 3, 2, 3] }],
-  ['outer', { title: 'outer race', colour: '#00697a', dash: [] }],
+  ['outer', { title: 'outer race', colour: '#00697a', dash: [4, 1] }],
   ['inner', { title: 'inner race', colour: '#8d1d4f', dash: [5, 2] }],
   ['rolling-element', { title: 'rolling element', colour: '#3c55a5', dash: [9, 3, 2, 3] }],
   ['cage', { title: 'cage', colour: '#6a5a00', dash: [2, 2] }],

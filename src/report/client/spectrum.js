@@ -59,7 +59,8 @@ export function spectrumChart(figure, data, { unit, factor, on, shaftHz }) {
       ],
       series: [{}, { stroke: trace, width: 1.2, points: { show: false } }],
       hooks: {
-        draw: [(u) => drawMarks(u, marks, families), () => showCursor()],
+        drawAxes: [(u) => drawMarks(u, marks, families)],
+        draw: [() => showCursor()],
         setCursor: [
           (u) => {
             const { left } = u.cursor;
@@ -180,7 +181,7 @@ export function spectrumChart(figure, data, { unit, factor, on, shaftHz }) {
     if (k === 0) made.classList.add('apart');
   });
   if (shaftHz !== null) {
-    button(host, '10x', 'Show up to the tenth order', () => {
+    button(host, 'to 10x', 'Show up to the tenth order', () => {
       plot.setScale('x', { min: 0, max: Math.min(lastHz, 10.5 * shaftHz) });
     });
   }
