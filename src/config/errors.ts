@@ -20,6 +20,8 @@ export const errorCatalogue = {
   'config.not-available-yet': 'Take it out of the station file until a later version brings it.',
   'config.needs-restart': 'Restart the agent for this change, or take it back.',
   'file.unreadable': 'Check the path and that this user may read it.',
+  'file.exists': 'Give another name, or --force to replace it.',
+  'file.unwritable': 'Check that the folder is there, that this user may write to it and that there is room.',
   'recording.malformed':
     'Export the recording again as FLAC or as PCM WAV, 16 to 32 bit, and check that it was copied whole.',
   'command.usage': 'See `forebay help`.',
@@ -44,6 +46,16 @@ export const errorCatalogue = {
   'uplink.no-answer':
     'Check that the agent runs and is connected, and that the broker lets this user write ask/ and read answer/.',
   'uplink.refused': 'Check `username`, `password_file` and what the broker allows this client.',
+  'pull.no-station':
+    'Check --site and --broker, and that this user may read `forebay/<site>/#` at the broker.',
+  'pull.offline': 'Wait until the station is back; what it measures meanwhile is kept there.',
+  'pull.refused':
+    'Mend what the station names; `ask/snapshots` lists what there is, `asks` in its file what it answers.',
+  'pull.budget':
+    'Run the same command again after that time: what has arrived is kept. Or raise `snapshot_bytes_per_day`.',
+  'pull.stalled': 'Run the same command again: what has arrived is kept.',
+  'pull.damaged': 'Run the same command again; the damaged file has been removed.',
+  'recording.untagged': 'Export a snapshot of a station: only its tags say what a count is.',
 } as const satisfies Record<string, string>;
 
 export type ErrorCode = keyof typeof errorCatalogue;
