@@ -8,10 +8,10 @@
 const LEAST = 3;
 /** Half a plateau's length beside a smooth top the counts have dropped by at most 4 to 6; beside a clipped one more. */
 const SMOOTH_DROP = 8;
-/** How much denser than nearby the extreme of a natural record may be (the edge of a sine's distribution). */
-const EDGE_DENSITY = 8;
 /** A pile of samples on the extreme less likely than this is a rail. */
 const RAIL_PROBABILITY = 1e-6;
+/** The pile is held against what lies within so many counts below it. */
+const REACHES = [1, 3, 8, 15, 35, 63, 255, 1023] as const;
 
 /** How many samples of the record stand at a rail; 0: none do. */
 export function clippedSamples(counts: Int32Array): number {
@@ -27,17 +27,22 @@ function atRail(counts: Int32Array, sign: 1 | -1): number {
     if (level > extreme) extreme = level;
     if (level < opposite) opposite = level;
   }
-  const reach = Math.max(16, Math.round((extreme - opposite) / 64));
   const places: number[] = [];
-  let near = 0;
+  const near = REACHES.map(() => 0);
+  const farthest = REACHES.at(-1)!;
   for (let i = 0; i < counts.length; i++) {
     const below = extreme - sign * counts[i]!;
     if (below === 0) places.push(i);
-    else if (below <= reach) near++;
+    else if (below <= farthest) {
+      for (let r = REACHES.length - 1; r >= 0 && below <= REACHES[r]!; r--) near[r] = near[r]! + 1;
+    }
   }
   if (places.length < LEAST) return 0;
-  const clipped =
-    hasPlateau(counts, places) || (isPiledUp(places.length, near, reach) && isUneven(counts, places));
+  const height = (extreme - opposite) / 2;
+  const piledUp = REACHES.some(
+    (reach, r) => reach <= height / 2 && isPiledUp(places.length, near[r]!, reach),
+  );
+  const clipped = hasPlateau(counts, places) || (piledUp && isUneven(counts, places, height));
   return clipped ? places.length : 0;
 }
 
@@ -60,25 +65,45 @@ function hasPlateau(counts: Int32Array, places: readonly number[]): boolean {
   return false;
 }
 
-/** Poisson: as many as these on one count, where its neighbourhood has so few. */
+/**
+ * Whether so many samples on the extreme are more than chance makes of any natural edge. The steepest one is that of a
+ * sine: of the samples within d counts of its top there are √d as many, so the topmost count has at most 1/(√(1+r) − 1)
+ * of what lies within r counts below it.
+ */
 function isPiledUp(samples: number, near: number, reach: number): boolean {
-  const expected = (EDGE_DENSITY * Math.max(1, near)) / reach;
+  const expected = Math.max(1, near) / (Math.sqrt(1 + reach) - 1);
   if (expected >= samples) return false;
-  // P(n ≥ samples) is at most a geometric tail from its first term.
+  // Poisson: P(n ≥ samples) is at most a geometric tail from its first term.
   let logTerm = -expected;
   for (let k = 1; k <= samples; k++) logTerm += Math.log(expected / k);
   return logTerm - Math.log(1 - expected / (samples + 1)) < Math.log(RAIL_PROBABILITY);
 }
 
-/** Tops of a tone all have the same curvature; clipped ones are cut at different heights. */
-function isUneven(counts: Int32Array, places: readonly number[]): boolean {
-  let least = Number.POSITIVE_INFINITY;
-  let most = 0;
+/**
+ * Tops of a tone are alike: all have one curvature, and their neighbours differ by no more than the phase leaves within
+ * one count of the top, 2·√(2·height) either way, or all by the same where the tone fits the rate. Clipped ones are cut at
+ * different heights, and so at different distances from their top.
+ */
+function isUneven(counts: Int32Array, places: readonly number[], height: number): boolean {
+  const neighbours = new Set<number>();
+  const curvature = { least: Number.POSITIVE_INFINITY, most: Number.NEGATIVE_INFINITY };
+  const lean = { least: Number.POSITIVE_INFINITY, most: Number.NEGATIVE_INFINITY };
   for (const i of places) {
     if (i === 0 || i === counts.length - 1) continue;
-    const curvature = Math.abs(2 * counts[i]! - counts[i - 1]! - counts[i + 1]!);
-    least = Math.min(least, curvature);
-    most = Math.max(most, curvature);
+    const [before, here, after] = [counts[i - 1]!, counts[i]!, counts[i + 1]!];
+    note(curvature, Math.abs(2 * here - before - after));
+    note(lean, after - before);
+    if (neighbours.size < LEAST) neighbours.add(before * 2 ** 25 + after);
   }
-  return most - least > Math.max(SMOOTH_DROP, most / 16);
+  // A tone that fits the rate may meet its top twice a period, at two places.
+  if (neighbours.size < LEAST) return false;
+  return (
+    curvature.most - curvature.least > SMOOTH_DROP ||
+    lean.most - lean.least > SMOOTH_DROP + 5 * Math.sqrt(2 * height)
+  );
+}
+
+function note(range: { least: number; most: number }, value: number): void {
+  range.least = Math.min(range.least, value);
+  range.most = Math.max(range.most, value);
 }

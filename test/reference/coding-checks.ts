@@ -1,6 +1,7 @@
 /** Checksums, framing and limits of formats against published vectors. A vector that must be met exactly counts as 0 bytes off. */
 import { cobsDecode } from '../../src/link/cobs.ts';
 import { crc32c } from '../../src/link/crc32c.ts';
+import { type FlacFormat, readFlacHead } from '../../src/snapshot/flac-head.ts';
 import type { OutsideCheck } from './outside-checks.ts';
 
 const bytes = (length: number, value: (i: number) => number) =>
@@ -54,4 +55,46 @@ const cobsChecks = cobsTable.map(
   }),
 );
 
-export const codingChecks: readonly OutsideCheck[] = [...crcChecks, ...cobsChecks];
+/** A head with nothing but STREAMINFO, its fields as the RFC lays them out, written here bit by bit. */
+function flacHead(rateHz: number, channels: number, bits: number, frames: bigint): FlacFormat {
+  const info = [
+    [16, 4096n],
+    [16, 4096n],
+    [24, 0n],
+    [24, 0n],
+    [20, BigInt(rateHz)],
+    [3, BigInt(channels - 1)],
+    [5, BigInt(bits - 1)],
+    [36, frames],
+    [128, 0n],
+  ] as const;
+  const binary = info.map(([width, value]) => value.toString(2).padStart(width, '0')).join('');
+  const body = Array.from({ length: 34 }, (_, i) => Number.parseInt(binary.slice(8 * i, 8 * i + 8), 2));
+  const head = Buffer.from([...Buffer.from('fLaC'), 0x80, 0, 0, 34, ...body]);
+  return readFlacHead(head, (what) => {
+    throw new Error(what);
+  }).format;
+}
+
+const flacChecks = (
+  [
+    ['rate-max', 1_048_575, 'Hz', () => flacHead(1_048_575, 8, 32, 2n ** 36n - 1n).rateHz],
+    ['channels-max', 8, '', () => flacHead(1_048_575, 8, 32, 2n ** 36n - 1n).channels],
+    ['channels-min', 1, '', () => flacHead(1, 1, 4, 1n).channels],
+    ['bits-max', 32, 'bit', () => flacHead(1_048_575, 8, 32, 2n ** 36n - 1n).bitsPerSample],
+    ['bits-min', 4, 'bit', () => flacHead(1, 1, 4, 1n).bitsPerSample],
+    ['samples-max', 2 ** 36 - 1, '', () => flacHead(1, 1, 4, 2n ** 36n - 1n).frames],
+  ] as const
+).map(
+  ([name, value, unit, measure]): OutsideCheck => ({
+    id: `flac.${name}`,
+    source: 'RFC 9639, limits of the format',
+    status: 'seen',
+    value,
+    tolerance: 0,
+    unit,
+    measure,
+  }),
+);
+
+export const codingChecks: readonly OutsideCheck[] = [...crcChecks, ...cobsChecks, ...flacChecks];
