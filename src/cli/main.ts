@@ -16,6 +16,12 @@ function positive(text: string): number {
   return value;
 }
 
+function notNegative(text: string): number {
+  const value = Number(text);
+  if (!(Number.isFinite(value) && value >= 0)) throw new InvalidArgumentError('a number from 0 is wanted');
+  return value;
+}
+
 function wholeNumber(text: string): number {
   const value = Number(text);
   if (!(Number.isSafeInteger(value) && value >= 0))
@@ -53,6 +59,24 @@ function runs<Args extends unknown[]>(action: (...args: Args) => Promise<number>
   };
 }
 
+interface PullFlags {
+  broker: string;
+  site: string;
+  snapshot?: string;
+  point?: string;
+  seconds?: number;
+  fromS?: number;
+  channels?: string;
+  out: string;
+  force?: boolean;
+  username?: string;
+  passwordFile?: string;
+  caFile?: string;
+  certFile?: string;
+  keyFile?: string;
+  protocol?: '5' | '3.1.1';
+}
+
 const program = new Command('forebay');
 program
   .description(
@@ -62,6 +86,16 @@ program
   .version(version)
   .exitOverride()
   .showHelpAfterError('(forebay help shows the commands)');
+
+/** What `replay` and `report` may be told of a recording. */
+function withRecordingOptions(command: Command): Command {
+  return command
+    .option('--full-scale-g <g>', 'what integer full scale is, in g', positive)
+    .option('--every <s>', 'start a record so often, in seconds', positive)
+    .option('--rate-hz <hz>', 'the true sample rate, instead of the one in the file', positive)
+    .option('--first-index <i>', "the node's index of the first sample", wholeNumber)
+    .option('--start <time>', 'wall time of the first sample, ISO 8601');
+}
 
 const stationOption = () => new Option('-c, --config <file>', 'the station file').makeOptionMandatory();
 
@@ -114,22 +148,94 @@ program
     }),
   );
 
-program
-  .command('replay')
-  .description('runs a recording through the same measuring, finding and alarm code as the agent')
-  .argument('<file>', 'a WAV recording')
-  .addOption(stationOption())
-  .requiredOption('--points <list>', 'a channel each: MACHINE/POINT, LINK/CHANNEL for a tachometer, or -')
-  .option('--full-scale-g <g>', 'what integer full scale is, in g', positive)
-  .option('--every <s>', 'start a record so often, in seconds', positive)
-  .option('--rate-hz <hz>', 'the true sample rate, instead of the one in the file', positive)
-  .option('--first-index <i>', "the node's index of the first sample", wholeNumber)
-  .option('--start <time>', 'wall time of the first sample, ISO 8601')
+withRecordingOptions(
+  program
+    .command('replay')
+    .description('runs a recording through the same measuring, finding and alarm code as the agent')
+    .argument('<file>', 'a recording: WAV, or a snapshot in FLAC')
+    .addOption(stationOption())
+    .requiredOption('--points <list>', 'a channel each: MACHINE/POINT, LINK/CHANNEL for a tachometer, or -'),
+)
   .option('--json', 'one JSON object a line')
   .action(
     runs(async (file: string, options: Record<string, unknown> & { config: string; points: string }) => {
       const { replayCommand } = await import('./replay.ts');
       return replayCommand(file, options);
+    }),
+  );
+
+withRecordingOptions(
+  program
+    .command('report')
+    .description('one self-contained page of a recording: waveform, spectra, findings')
+    .argument('<file>', 'a snapshot in FLAC, or a WAV recording')
+    .option('-c, --config <file>', 'the station file; a snapshot can do without')
+    .option('--points <list>', 'a channel each, as in replay; a snapshot says them itself')
+    .requiredOption('-o, --out <file>', 'the page to write'),
+)
+  .option('--journal <file>', 'lines of `forebay journal --json` to show beside it')
+  .option('--force', 'write over a file that is there')
+  .action(
+    runs(async (file: string, options: Record<string, unknown> & { config?: string; out: string }) => {
+      const { reportCommand } = await import('./report.ts');
+      return reportCommand({ ...options, file, config: options.config ?? null, version });
+    }),
+  );
+
+program
+  .command('pull')
+  .description('gets the waveform of an alarm, or a new one, over MQTT; resumes and verifies')
+  .requiredOption('--broker <url>', 'mqtt://, mqtts://, ws:// or wss:// with host and port')
+  .requiredOption('--site <id>', 'the site of the station')
+  .option('--snapshot <id>', 'a snapshot that the station keeps: see the alarm, or ask/snapshots')
+  .option('--point <m/p>', 'take one now, at this point')
+  .option('--seconds <n>', 'of a point: how much to take; of a snapshot: how much of it', positive)
+  .option('--from-s <n>', 'of a snapshot: from where on, in seconds', notNegative)
+  .option('--channels <list>', 'of a snapshot: only these, by name or point')
+  .requiredOption('-o, --out <file>', 'the FLAC file to write')
+  .option('--force', 'write over a file that is there')
+  .option('--username <name>')
+  .option('--password-file <file>', 'the password alone in a file')
+  .option('--ca-file <file>')
+  .option('--cert-file <file>')
+  .option('--key-file <file>')
+  .addOption(new Option('--protocol <version>', 'left out, 5 is tried first').choices(['5', '3.1.1']))
+  .action(
+    runs(async (options: PullFlags) => {
+      const { pullCommand } = await import('./pull.ts');
+      return pullCommand({
+        broker: options.broker,
+        site: options.site,
+        snapshot: options.snapshot ?? null,
+        point: options.point ?? null,
+        seconds: options.seconds ?? null,
+        fromS: options.fromS ?? null,
+        channels: options.channels?.split(',') ?? null,
+        file: options.out,
+        force: options.force ?? false,
+        username: options.username ?? null,
+        passwordFile: options.passwordFile ?? null,
+        caFile: options.caFile ?? null,
+        certFile: options.certFile ?? null,
+        keyFile: options.keyFile ?? null,
+        protocol: options.protocol === undefined ? null : options.protocol === '5' ? 5 : 4,
+        err: process.stderr,
+      });
+    }),
+  );
+
+program
+  .command('export')
+  .description('a snapshot for other tools, in physical units')
+  .argument('<file>', 'a snapshot in FLAC')
+  .addOption(new Option('--to <format>').choices(['wav', 'csv', 'uff']).makeOptionMandatory())
+  .requiredOption('-o, --out <file>', 'the file to write')
+  .option('--force', 'write over a file that is there')
+  .action(
+    runs(async (from: string, options: { to: 'wav' | 'csv' | 'uff'; out: string; force?: boolean }) => {
+      const { exportCommand } = await import('./export.ts');
+      const { to, out: file, force = false } = options;
+      return exportCommand({ from, to, file, force, err: process.stderr });
     }),
   );
 

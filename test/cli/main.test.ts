@@ -16,7 +16,18 @@ describe('the command line', () => {
   it('shows its commands and that it only advises', () => {
     const { status, stdout } = forebay('--help');
     expect(status).toBe(0);
-    for (const name of ['run', 'check', 'listen', 'replay', 'journal', 'demo'])
+    for (const name of [
+      'run',
+      'check',
+      'listen',
+      'learn',
+      'replay',
+      'journal',
+      'pull',
+      'export',
+      'report',
+      'demo',
+    ])
       expect(stdout).toContain(`  ${name} `);
     expect(stdout).toMatch(/not a machine protection system/);
   });
