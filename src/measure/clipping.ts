@@ -15,7 +15,26 @@ const REACHES = [1, 3, 8, 15, 35, 63, 255, 1023] as const;
 
 /** How many samples of the record stand at a rail; 0: none do. */
 export function clippedSamples(counts: Int32Array): number {
+  const found = atRails(counts);
+  if (found === 0) return 0;
+  // Twelve bits sent as sixteen step by 16 counts: what is told by single counts is told again by steps.
+  const step = smallestStep(counts);
+  return step === 1 ? found : atRails(counts.map((count) => Math.round(count / step)));
+}
+
+function atRails(counts: Int32Array): number {
   return atRail(counts, 1) + atRail(counts, -1);
+}
+
+/** Smallest distance of two different counts. */
+function smallestStep(counts: Int32Array): number {
+  const sorted = counts.slice().sort();
+  let smallest = Number.POSITIVE_INFINITY;
+  for (let i = 1; i < sorted.length && smallest > 1; i++) {
+    const step = sorted[i]! - sorted[i - 1]!;
+    if (step > 0 && step < smallest) smallest = step;
+  }
+  return Number.isFinite(smallest) ? smallest : 1;
 }
 
 /** @param sign 1 for the upper extreme, −1 for the lower one. */

@@ -114,6 +114,20 @@ describe('clipping before the converter', () => {
     );
   });
 
+  it.each([16, 7])('goes by the steps of a converter that steps by %d counts', (step) => {
+    const stepped = (counts: Int32Array) => counts.map((count) => count * step);
+    for (const noise of [0.3, 1, 2, 5, 40]) {
+      for (const amplitude of [0, 20, 900]) {
+        for (const hz of [5, 24.7, 3300]) {
+          const whole = stepped(sine(hz, amplitude, noise));
+          expect(clippedSamples(whole), `${amplitude} with ${noise} at ${hz} Hz`).toBe(0);
+        }
+      }
+    }
+    expect(clippedSamples(stepped(clip(sine(24.7, 900, 1), 800)))).toBeGreaterThan(0);
+    expect(clippedSamples(stepped(clip(sine(3300, 900, 1), 800)))).toBeGreaterThan(0);
+  });
+
   it('is not seen in noise, nor in tones with noise, from less than a count to thousands', () => {
     for (const noise of [0.3, 1, 3, 10, 100, 3000]) {
       for (const amplitude of [0, 20, 900, 20_000]) {
