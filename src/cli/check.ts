@@ -3,7 +3,6 @@
 import { accessSync, constants } from 'node:fs';
 import { ForebayError } from '../config/errors.ts';
 import { loadStation } from '../config/load.ts';
-import { notAvailableYet } from '../config/not-available.ts';
 import type { Station } from '../config/station.ts';
 import { PlanError } from '../measure/plan.ts';
 import { type CheckWarning, reportLinks, reportUplink } from './check-load.ts';
@@ -25,13 +24,7 @@ export async function checkCommand(options: CheckOptions): Promise<number> {
     const { points, plans, warnings } = reportPoints(station);
     const { links, warnings: linkWarnings } = reportLinks(station, plans);
     const { uplink, warnings: uplinkWarnings } = reportUplink(station);
-    const all = [
-      ...warnings,
-      ...linkWarnings,
-      ...uplinkWarnings,
-      ...laterWarnings(station),
-      ...fileWarnings(station),
-    ];
+    const all = [...warnings, ...linkWarnings, ...uplinkWarnings, ...fileWarnings(station)];
     const rings = links.map((link) => link.ring_bytes);
     const memory = {
       kind: 'memory',
@@ -75,14 +68,6 @@ export async function checkCommand(options: CheckOptions): Promise<number> {
     err.write(`${error.message}${fix}\n`);
     return 2;
   }
-}
-
-function laterWarnings(station: Station): CheckWarning[] {
-  return notAvailableYet(station).map(({ place, what }) => ({
-    kind: 'warning',
-    where: place,
-    text: `${what}; the agent will not start with it`,
-  }));
 }
 
 function fileWarnings(station: Station): CheckWarning[] {

@@ -17,7 +17,6 @@ export const errorCatalogue = {
   'config.reserved-id': 'Choose another id: this one is a topic of the agent.',
   'config.impossible': 'Check the figure against the nameplate or the data sheet.',
   'config.secret': 'Move the secret into a file of its own and name that in broker.password_file.',
-  'config.not-available-yet': 'Take it out of the station file until a later version brings it.',
   'config.needs-restart': 'Restart the agent for this change, or take it back.',
   'file.unreadable': 'Check the path and that this user may read it.',
   'file.exists': 'Give another name, or --force to replace it.',

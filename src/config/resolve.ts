@@ -42,7 +42,6 @@ export function resolveStation(file: StationFile, text: string, baseDir: string)
     machines: file.machines.map((machine) => resolveMachine(file, machine, links)),
     rules: file.alarms === undefined ? defaultRules : [...file.alarms.map(resolveRule), sensorRule],
     asks: file.asks ?? defaultAsks,
-    asksListed: file.asks !== undefined,
     configHash: createHash('sha256').update(text, 'utf8').digest('hex').slice(0, 12),
   });
 }

@@ -18,8 +18,6 @@ export interface Station {
   /** The alarm rules in force: those of the file, or the default set. */
   readonly rules: readonly Rule[];
   readonly asks: readonly string[];
-  /** Whether the file lists the asks itself, or they are the default. */
-  readonly asksListed: boolean;
   /** First 12 hex digits of the SHA-256 of the file's text: `config` in the `agent` topic. */
   readonly configHash: string;
 }

@@ -208,7 +208,6 @@ describe('warnings', () => {
       '  bytes_per_day: 20000\n  username',
       /uplink: even a quiet day takes/,
     ],
-    ['what is not available yet', 'acknowledge]', 'fetch]', /asks\.1: ask fetch is not available yet/],
     [
       'rules of thumb',
       '{id: de, elements: 9, element_mm: 7.938, pitch_mm: 39.04}',

@@ -4,7 +4,6 @@ import { join } from 'node:path';
 import { describe, expect, it } from 'vitest';
 import { ForebayError } from '../../src/config/errors.ts';
 import { ConfigError, loadStation } from '../../src/config/load.ts';
-import { notAvailableYet } from '../../src/config/not-available.ts';
 import { edited, goodText, stationOf } from './station-text.ts';
 
 const least = `site: {id: weir}
@@ -68,10 +67,6 @@ describe('a station file with the least in it', () => {
       { id: 'sensor', watch: '', onDelayS: 30, offDelayS: 60, readings: null },
     ]);
     expect(station.rules[0]!.deadband).toEqual({ pct: 10 });
-  });
-
-  it('has nothing that is not available yet', () => {
-    expect(notAvailableYet(station)).toEqual([]);
   });
 });
 
@@ -156,17 +151,6 @@ describe('a station file with one of everything', () => {
     // By sha256sum of GNU coreutils over the same bytes.
     expect(stationOf(least).configHash).toBe('7c3115cc29e2');
     expect(stationOf(`${least}# a note\n`).configHash).not.toBe('7c3115cc29e2');
-  });
-});
-
-describe('what is not available yet', () => {
-  it('names asks that are listed, and no rule', () => {
-    const learning = edited(
-      '  - {id: high',
-      '  - {id: shift, watch: acceleration.rms, baseline: {alert: 2}}\n  - {id: trend, watch: acceleration.rms, rise: {alert_pct: 50}}\n  - {id: high',
-      edited('asks: [readings, acknowledge]', 'asks: [readings, fetch]'),
-    );
-    expect(notAvailableYet(stationOf(learning)).map(({ place }) => place)).toEqual(['asks.1']);
   });
 });
 
