@@ -48,6 +48,12 @@ const FULL_SCORE = 1.5;
 /** How near the next best may come, and one that is a whole multiple or part of the best and meets some of its lines. */
 const NEXT_BEST_SHARE = 0.8;
 const RELATED_SHARE = 0.9;
+/**
+ * A first harmonic this near outside of the range, of full height and this far above the one inside, is the true speed:
+ * the settings, or the sample rate, are a few percent wrong.
+ */
+const JUST_OUTSIDE = 0.05;
+const OUTSHINES_DB = 12;
 /** Even an idling motor slips by more than this (an unloaded one in the open recordings: 0.04 %). */
 const LEAST_SLIP = 0.0002;
 
@@ -85,6 +91,12 @@ export function findShaftSpeed(spectra: readonly SpeedLines[], range: SpeedRange
   if (best.hz < lowHz || best.hz > highHz) {
     return unknown(`the line at ${best.hz.toFixed(2)} Hz lies just outside of what the settings allow`);
   }
+  const outside = outshining(spectra, range, best.hz);
+  if (outside !== null) {
+    return unknown(
+      `the line at ${outside.toFixed(2)} Hz outshines ${best.hz.toFixed(2)} Hz but lies outside of what the settings allow`,
+    );
+  }
   const apartHz = Math.max(...spectra.map((spectrum) => spectrum.lineHz));
   const others = ranked.filter(({ hz }) => Math.abs(hz - best.hz) > apartHz);
   const next = others.find(({ hz }) => !areRelated(hz, best.hz));
@@ -94,6 +106,25 @@ export function findShaftSpeed(spectra: readonly SpeedLines[], range: SpeedRange
   if (rival !== undefined) return unknown(`${best.hz.toFixed(2)} Hz and ${rival.hz.toFixed(2)} Hz compete`);
   const nextShare = (next?.score ?? 0) / best.score;
   return { hz: best.hz, confidence: (1 - nextShare) * Math.min(1, best.score / FULL_SCORE), reason: null };
+}
+
+/** A line just outside of the range that far outshines the first harmonic found inside; null: none. */
+function outshining(spectra: readonly SpeedLines[], range: SpeedRange, foundHz: number): number | null {
+  const { lowHz, highHz, mainsHz } = range;
+  for (const { lines, lineHz } of spectra) {
+    const reachHz = TOOTH_LINES * lineHz;
+    const found = lines.filter(({ hz }) => Math.abs(hz - foundHz) < reachHz);
+    const leastDb = Math.max(ALL_DB, ...found.map(({ overFloorDb }) => overFloorDb + OUTSHINES_DB));
+    const outside = lines.find(
+      ({ hz, overFloorDb }) =>
+        overFloorDb >= leastDb &&
+        !isMains(hz, mainsHz, lineHz) &&
+        ((hz > highHz + reachHz && hz < highHz * (1 + JUST_OUTSIDE)) ||
+          (hz < lowHz - reachHz && hz > lowHz * (1 - JUST_OUTSIDE))),
+    );
+    if (outside !== undefined) return outside.hz;
+  }
+  return null;
 }
 
 function unknown(reason: string): SpeedFinding {
@@ -116,9 +147,8 @@ interface Comb {
 
 /** Lines that can speak for a speed, with heights from 0 to 1, by rising frequency. */
 function prepare({ lines, lineHz, fmaxHz }: SpeedLines, { highHz, mainsHz }: SpeedRange): Comb {
-  const isMains = (hz: number) => [1, 2].some((k) => Math.abs(hz - k * mainsHz) < lineHz);
   const usable = lines
-    .filter(({ hz, overFloorDb }) => overFloorDb > NOTHING_DB && !isMains(hz))
+    .filter(({ hz, overFloorDb }) => overFloorDb > NOTHING_DB && !isMains(hz, mainsHz, lineHz))
     .sort((a, b) => a.hz - b.hz);
   return {
     hz: Float64Array.from(usable, (line) => line.hz),
@@ -127,6 +157,11 @@ function prepare({ lines, lineHz, fmaxHz }: SpeedLines, { highHz, mainsHz }: Spe
     reachHz: TOOTH_LINES * lineHz,
     topHz: Math.min(fmaxHz, HARMONICS * highHz),
   };
+}
+
+/** Lines at the mains frequency and at twice it are pickup and magnetic pull. */
+function isMains(hz: number, mainsHz: number, lineHz: number): boolean {
+  return [1, 2].some((k) => Math.abs(hz - k * mainsHz) < lineHz);
 }
 
 /** How far a level has come from one to another, from 0 to 1. */

@@ -136,6 +136,21 @@ describe('shaft speed from lines', () => {
     expect(findShaftSpeed([spectrum([[24.7, 30]])], wide).hz).toBeCloseTo(24.7, 6);
   });
 
+  it('is unknown where a line just outside of the range far outshines what is met inside', () => {
+    const inside = [
+      [24.5, 25],
+      [49, 25],
+      [73.5, 20],
+    ] as const;
+    expect(findShaftSpeed([spectrum([...inside])], range).hz).toBeCloseTo(24.5, 6);
+    expect(findShaftSpeed([spectrum([...inside, [26.2, 60]])], range).reason).toMatch(
+      /the line at 26.20 Hz outshines 24.50 Hz but lies outside of what the settings allow/,
+    );
+    // As strong as that inside, it is another machine; far away, another order.
+    expect(findShaftSpeed([spectrum([...inside, [26.2, 30]])], range).hz).toBeCloseTo(24.5, 6);
+    expect(findShaftSpeed([spectrum([...inside, [29, 60]])], range).hz).toBeCloseTo(24.5, 6);
+  });
+
   it('says so where the best line lies just outside of the range', () => {
     expect(findShaftSpeed([spectrum([[25.5, 30]])], range).reason).toMatch(/just outside/);
   });
