@@ -7,7 +7,7 @@ import { changeAlarm, type Words } from './change.ts';
 import { type ConditionState, conditionLevel, stepCondition } from './condition.ts';
 import type { AlarmInput } from './effects.ts';
 import { groupOf, underGroup, updateGroup } from './group.ts';
-import type { LifeState } from './life-cycle.ts';
+import { type LifeInput, type LifeState, stepLife } from './life-cycle.ts';
 import { judge, type Verdict } from './limits.ts';
 import type { PointAlarm, PointPlan } from './plan.ts';
 import { riseOver } from './rise.ts';
@@ -156,7 +156,8 @@ function applyCondition(
     patch: { condition: next, chatter, ...guided.patch },
     ...(reading === null ? {} : { reading }),
   };
-  const chattering = chatter.agesS.length + 1 >= CHATTER_COUNT && level !== null && chatter.quietS === null;
+  const third = chatter.agesS.length + 1 >= CHATTER_COUNT && chatter.quietS === null;
+  const chattering = third && announces(row.life, guided.inputs, alarm.latched);
   const reason =
     chattering && words.reason !== undefined ? chatterReason(words.reason, CHATTER_WINDOW_S) : words.reason;
   const said = { ...words, ...(reason === undefined ? {} : { reason }), ...guided.words };
@@ -173,6 +174,15 @@ function applyCondition(
   tellEvidence(work, alarm, was, next, announced);
   const group = groupOf(work, alarm);
   if (group !== null) updateGroup(work, group);
+}
+
+function announces(from: LifeState, inputs: readonly LifeInput[], latched: boolean): boolean {
+  let life = from;
+  return inputs.some((input) => {
+    const step = stepLife(life, input, latched);
+    life = step.state;
+    return step.announced;
+  });
 }
 
 function heldLevel(life: LifeState): Level | null {
