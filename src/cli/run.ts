@@ -17,7 +17,13 @@ export async function runCommand({ config, version }: { config: string; version:
     process.once('SIGTERM', resolve);
     process.once('SIGINT', resolve);
   });
-  await agent.start();
+  try {
+    await agent.start();
+  } catch (error) {
+    // Its threads would keep the process for ever.
+    await agent.stop();
+    throw error;
+  }
   process.on('SIGHUP', () => void agent.reload(() => loadStation(config)));
   if (agent.embeddedPort !== null) log.info('embedded broker on loopback', { port: agent.embeddedPort });
   await stopped;

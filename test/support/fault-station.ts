@@ -3,14 +3,14 @@
  * a control room that asks and takes note. What must arrive is known from a ledger inside the agent's own database: a
  * trigger of this test writes down each alarm message in the transaction that makes it.
  */
-import { mkdirSync } from 'node:fs';
+import { mkdirSync, writeFileSync } from 'node:fs';
 import { join } from 'node:path';
 import SqliteDatabase from 'better-sqlite3';
 import mqtt, { type MqttClient } from 'mqtt';
 import { AgentProcess } from './agent.ts';
 import { until } from './broker-rig.ts';
 import { Mosquitto } from './mosquitto.ts';
-import { FaultyLink, sleep } from './proxy.ts';
+import { FaultyLink } from './proxy.ts';
 import { Cable, nodeRateHz, pacedNode } from './replug.ts';
 import type { PacedSender } from './sender.ts';
 
@@ -81,11 +81,11 @@ export interface Alarms {
 /** The subscriber: keeps numbers, not payloads, so that it can listen for hours. */
 class Listener {
   readonly client: MqttClient;
-  /** By topic, numbers in the order in which each was first heard. */
-  readonly alarms = new Map<string, number[]>();
+  /** By topic, ids in the order in which each was first heard. */
+  readonly alarms = new Map<string, string[]>();
   readonly #seen = new Set<string>();
-  /** By point: first index of each good reading. */
-  readonly readings = new Map<string, Set<number>>();
+  /** By point: good readings, and records that their samples make up. */
+  readonly readings = new Map<string, Records>();
   /** Monotonic ms of the last good and the last figureless reading by point. */
   readonly goodMs = new Map<string, number>();
   readonly blankMs = new Map<string, number>();
@@ -107,10 +107,6 @@ class Listener {
     this.client.on('message', (topic, payload) => this.#take(topic, payload));
   }
 
-  get connected(): boolean {
-    return this.client.connected;
-  }
-
   #take(topic: string, payload: Buffer): void {
     if (this.text !== null) this.text += `${topic} ${payload}\n`;
     if (payload.length === 0) return;
@@ -120,24 +116,50 @@ class Listener {
       if (this.#seen.has(body.id)) this.repeats++;
       else {
         this.#seen.add(body.id);
-        const n = Number(body.id.split('-')[1]);
-        this.alarms.set(topic, [...(this.alarms.get(topic) ?? []), n]);
+        const ids = this.alarms.get(topic) ?? [];
+        ids.push(body.id);
+        this.alarms.set(topic, ids);
       }
     }
-    if (!name.endsWith('/reading')) this.latest.set(name, body);
-    else this.#reading(name.slice(0, -'/reading'.length), body);
+    if (name.endsWith('/reading')) this.#reading(name.slice(0, -'/reading'.length), body);
+    else this.latest.set(name, body);
   }
 
-  #reading(point: string, body: Record<string, unknown>): void {
+  #reading(point: string, body: Record<string, unknown> & { id: string }): void {
+    const records = this.readings.get(point) ?? new Records();
+    this.readings.set(point, records);
+    if (!records.isNew(body.id)) return;
     const { overall } = body.velocity as { overall: number | null };
-    const now = performance.now();
-    if (overall === null) {
-      this.blankMs.set(point, now);
-      return;
+    if (overall === null) this.blankMs.set(point, performance.now());
+    else {
+      this.goodMs.set(point, performance.now());
+      records.take(body.first_index as number);
     }
-    this.goodMs.set(point, now);
-    const indices = this.readings.get(point) ?? new Set();
-    this.readings.set(point, indices.add(body.first_index as number));
+  }
+}
+
+/** Which records of a point's samples came to a reading; the index begins anew where the node does. */
+class Records {
+  good = 0;
+  expected = 0;
+  #last: number | null = null;
+  #store = '';
+  #n = 0;
+
+  isNew(id: string): boolean {
+    const [store = '', digits] = id.split('-');
+    const n = Number(digits);
+    if (store === this.#store && n <= this.#n) return false;
+    this.#store = store;
+    this.#n = n;
+    return true;
+  }
+
+  take(firstIndex: number): void {
+    const steps = this.#last === null ? 1 : (firstIndex - this.#last) / stepSamples;
+    this.good++;
+    this.expected += steps > 0 ? steps : 1;
+    this.#last = firstIndex;
   }
 }
 
@@ -151,6 +173,8 @@ export class FaultStation {
   /** Where the database is. */
   directory: string;
   #asks = 0;
+  #pastLedger: string[] = [];
+  readonly #undo: (() => void)[] = [];
 
   private constructor(agent: AgentProcess, broker: Mosquitto, link: FaultyLink, room: Listener) {
     this.agent = agent;
@@ -176,9 +200,10 @@ export class FaultStation {
       options.brokerFiles,
     );
     const link = await FaultyLink.start(broker.port);
-    const agent = new AgentProcess(stationText(link.port, options.station));
+    const text = stationText(link.port, options.station);
+    const agent = new AgentProcess(text.replace('127.0.0.1:PORT', `127.0.0.1:${link.port}`));
     const station = new FaultStation(agent, broker, link, new Listener(broker.port));
-    await until(() => station.room.connected, 'the control room to connect');
+    await until(() => station.room.client.connected, 'the control room to connect');
     options.prepare?.(station);
     await station.#makeLedger();
     for (const cable of station.cables) await cable.plug();
@@ -209,26 +234,61 @@ export class FaultStation {
     return new SqliteDatabase(join(this.directory, 'forebay.db'), { timeout: 5000 });
   }
 
-  /** What is in the ledger. */
-  ledger(): { n: number; topic: string }[] {
+  /** Ids of all alarm messages that were ever made. */
+  ledger(): string[] {
     const db = this.#open();
     try {
-      return db.prepare('SELECT n, topic FROM test_ledger ORDER BY n').all() as {
-        n: number;
-        topic: string;
-      }[];
+      const sql =
+        "SELECT (SELECT value FROM meta WHERE key = 'store') || '-' || n FROM test_ledger ORDER BY n";
+      return [...this.#pastLedger, ...(db.prepare(sql).pluck().all() as string[])];
     } finally {
       db.close();
     }
   }
 
-  waitingRows(): number {
-    const db = this.#open();
-    try {
-      return db.prepare('SELECT count(*) FROM outbox WHERE aside IS NULL').pluck().get() as number;
-    } finally {
-      db.close();
-    }
+  /** To be called before the database is broken. */
+  keepLedger(): void {
+    this.#pastLedger = this.ledger();
+  }
+
+  /** Of what is laid out for one fault only; undone at the stop. */
+  onStop(undo: () => void): void {
+    this.#undo.push(undo);
+  }
+
+  moreCable(name: string): Cable {
+    return new Cable(join(this.agent.folder, name));
+  }
+
+  /** Writes the station file anew and tells the agent. */
+  reload(text: string): void {
+    this.agent.configure(text);
+    this.agent.signal('SIGHUP');
+  }
+
+  /** How often the log says so. */
+  count(message: string): number {
+    return this.agent.log.filter(({ msg }) => msg === message).length;
+  }
+
+  get clockFile(): string {
+    return join(this.agent.folder, 'clock');
+  }
+
+  /** Where the agent's wall clock stands, as libfaketime reads it. */
+  setClock(offset: string): void {
+    writeFileSync(this.clockFile, `${offset}\n`);
+  }
+
+  askFor(verb: string): void {
+    const id = `ask-${process.pid}-${this.#asks++}`;
+    this.room.client.publish(`forebay/${site}/ask/${verb}`, JSON.stringify({ id }), { qos: 1 });
+  }
+
+  /** An ask each 120 ms until the returned function is called. */
+  load(): () => void {
+    const timer = setInterval(() => this.ask(1), 120);
+    return () => clearInterval(timer);
   }
 
   /** Alarm load: a shelf set anew is an alarm message each time, and no flood limit holds it back. */
@@ -272,27 +332,22 @@ export class FaultStation {
     const ledger = this.ledger();
     const heard = new Set([...this.room.alarms.values()].flat());
     let disordered = 0;
-    for (const ns of this.room.alarms.values()) {
-      for (let i = 1; i < ns.length; i++) if (ns[i]! < ns[i - 1]!) disordered++;
+    for (const ids of this.room.alarms.values()) {
+      for (let i = 1; i < ids.length; i++) {
+        const [before, after] = [ids[i - 1]!.split('-'), ids[i]!.split('-')];
+        if (before[0] === after[0] && Number(after[1]) < Number(before[1])) disordered++;
+      }
     }
-    const received = ledger.filter(({ n }) => heard.has(n)).length;
+    const received = ledger.filter((id) => heard.has(id)).length;
     return { sent: ledger.length, received, lost: ledger.length - received, disordered };
   }
 
-  /** Records of the node's samples that came to no reading at the subscriber, over the whole time of the points. */
+  /** Records of the nodes' samples that came to no good reading at the subscriber so far. */
   readingsLost(points: readonly string[] = pointKeys): number {
-    let lost = 0;
-    for (const point of points) {
-      const indices = this.room.readings.get(point) ?? new Set<number>();
-      const first = Math.min(...indices);
-      const last = Math.max(...indices);
-      if (indices.size > 0) lost += (last - first) / stepSamples + 1 - indices.size;
-    }
-    return lost;
-  }
-
-  async restartAgent(): Promise<void> {
-    await this.agent.start();
+    return points.reduce((sum, point) => {
+      const records = this.room.readings.get(point);
+      return sum + (records ? records.expected - records.good : 0);
+    }, 0);
   }
 
   async stop(): Promise<void> {
@@ -302,8 +357,7 @@ export class FaultStation {
     await this.room.client.endAsync(true);
     await this.link.stop();
     await this.broker.stop();
+    for (const undo of this.#undo) undo();
     await this.agent.dispose();
   }
 }
-
-export { sleep };

@@ -89,6 +89,10 @@ export class Mosquitto {
     this.#child?.kill('SIGSTOP');
   }
 
+  signal(signal: NodeJS.Signals): void {
+    this.#child?.kill(signal);
+  }
+
   resume(): void {
     this.#child?.kill('SIGCONT');
   }

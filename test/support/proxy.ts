@@ -10,6 +10,8 @@ export class FaultyLink {
   #refusing = false;
   /** Bytes per second each way; null: as fast as it goes. */
   bytesPerS: number | null = null;
+  /** What each piece takes on its way. */
+  delayMs = 0;
 
   private constructor(server: Server, port: number) {
     this.#server = server;
@@ -82,8 +84,13 @@ export class FaultyLink {
     let chain = Promise.resolve();
     from.on('data', (chunk: Buffer) => {
       from.pause();
+      const dueMs = performance.now() + this.delayMs;
       chain = chain
         .then(async () => {
+          // A long way is no narrow one: what comes meanwhile is on its way too.
+          if (this.delayMs > 0) from.resume();
+          const early = dueMs - performance.now();
+          if (early > 0) await sleep(early);
           if (this.bytesPerS !== null) await sleep((chunk.length / this.bytesPerS) * 1000);
           while (this.#stalled) await new Promise((resolve) => from.once('flow', resolve));
           if (!to.destroyed) to.write(chunk);

@@ -90,6 +90,7 @@ export class PumpRig {
   #cable: SocatCable | null = null;
   readonly #ids = new Set<unknown>();
   #asks = 0;
+  #askedMs = 0;
 
   private constructor(broker: TestBroker, client: MqttClient, asks: string) {
     this.#broker = broker;
@@ -113,8 +114,9 @@ export class PumpRig {
     return rig;
   }
 
-  get brokerPort(): number {
-    return this.#broker.port;
+  /** Publishes as a client would, whatever comes of it. */
+  async publish(verb: string, payload: string, retain = false): Promise<void> {
+    await this.#client.publishAsync(`forebay/weir/ask/${verb}`, payload, { qos: 1, retain });
   }
 
   async plug(): Promise<void> {
@@ -167,14 +169,16 @@ export class PumpRig {
     await sleep(1000 * seconds);
   }
 
-  /** The answer to an ask, its body as a record or as raw text. */
+  /** The answer to an ask, its body as a record or as raw text; no more than one a second. */
   async ask(
     verb: string,
     body: Record<string, unknown> | string,
     id = `c-${++this.#asks}`,
   ): Promise<Record<string, unknown>> {
+    await sleep(Math.max(0, this.#askedMs + 1050 - performance.now()));
+    this.#askedMs = performance.now();
     const payload = typeof body === 'string' ? body : JSON.stringify({ id, ...body });
-    await this.#client.publishAsync(`forebay/weir/ask/${verb}`, payload, { qos: 1 });
+    await this.publish(verb, payload);
     return await this.until(`answer/${id}`, { ask: id }, 10);
   }
 

@@ -6,12 +6,23 @@ import { PacedSender, type PaceOptions, type SentNode } from './sender.ts';
 export class Cable {
   readonly device: string;
   #pty: Pty | null = null;
-  /** What the node writes while nobody is plugged in is gone. */
-  readonly write = (bytes: Uint8Array): void => {
-    if (!this.muted) this.#pty?.write(bytes);
-  };
   /** The node is there and says nothing. */
   muted = false;
+  /** What is written is held back for so long, and comes in one piece. */
+  holdMs = 0;
+  #held: Uint8Array[] = [];
+  #release: NodeJS.Timeout | null = null;
+  /** Where the other end of the cable is. */
+  #to: Cable = this;
+  /** What the node writes while nobody is plugged in is gone. */
+  readonly write = (bytes: Uint8Array): void => {
+    if (this.muted) return;
+    if (this.holdMs === 0 && this.#held.length === 0) this.#to.#pty?.write(bytes);
+    else {
+      this.#held.push(bytes.slice());
+      this.#release ??= setTimeout(() => this.#letGo(), this.holdMs);
+    }
+  };
 
   constructor(device: string) {
     this.device = device;
@@ -20,6 +31,21 @@ export class Cable {
   async plug(): Promise<void> {
     this.#pty = await openPty();
     symlinkSync(this.#pty.path, this.device);
+  }
+
+  /** The two nodes are plugged in at each other's device; undone by what is returned. */
+  swapWith(other: Cable): () => void {
+    this.#to = other;
+    other.#to = this;
+    return () => {
+      this.#to = this;
+      other.#to = other;
+    };
+  }
+
+  #letGo(): void {
+    this.#release = null;
+    for (const bytes of this.#held.splice(0)) this.#to.#pty?.write(bytes);
   }
 
   unplug(): void {

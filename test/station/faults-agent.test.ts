@@ -1,0 +1,3 @@
+import { testFaults } from '../support/fault-tests.ts';
+
+testFaults('agent', 20_261);
