@@ -39,5 +39,7 @@ function findingText(line: PrintedLine): string {
 export function lineFor(line: PrintedLine): string {
   if (line.kind === 'reading') return readingText(line);
   if (line.kind === 'finding') return findingText(line);
+  if (line.kind === 'note')
+    return `${line.t} ${line.machine} note${line.by === null ? '' : ` by ${line.by}`}: ${line.text}`;
   return `${line.t} ALARM ${line.machine}/${line.alarm} ${line.state} ${line.level ?? ''} ${line.reason}. ${line.check}`;
 }

@@ -72,7 +72,9 @@ export function answerAsks(uplink: Pick<Uplink, 'handle'>, sources: AskSources):
     );
     return { ...state, points: fitting(Object.fromEntries(shown), 'ask with its `point`') };
   });
-  uplink.handle('journal', async ({ since }) => journalAnswer(await journalSince(sources, since)));
+  uplink.handle('journal', async ({ since }) =>
+    journalAnswer(await journalSince(sources, since), since === undefined),
+  );
   uplink.handle('trend', async ({ point, watch, from, to, points }) => {
     if (!plan().points.has(point)) throw new AskRefused(`there is no point ${point}`);
     const [fromMs, toMs] = [Date.parse(from), Date.parse(to)];
@@ -110,27 +112,32 @@ function trendLine({ wallMs, mean, min, max, count }: TrendPoint): Record<string
   };
 }
 
-/** Entries after an id or from a time on; without either, the newest. */
+/** Entries after an id or from a time on, to be read on from there; without either, the newest. */
 function journalSince({ store, ids }: AskSources, since: string | undefined): Promise<JournalEntry[]> {
-  if (since === undefined) return store.journal({ limit: MAX_JOURNAL });
+  const limit = MAX_JOURNAL;
+  if (since === undefined) return store.journal({ limit });
   if (since.startsWith(`${ids.storeId}-`))
-    return store.journal({ afterN: numberOf(since), limit: MAX_JOURNAL });
+    return store.journal({ afterN: numberOf(since), limit, keep: 'oldest' });
   const ms = Date.parse(since);
   if (Number.isNaN(ms)) throw new AskRefused('`since` is neither a time nor an id of this station');
-  return store.journal({ sinceT: new Date(ms).toISOString(), limit: MAX_JOURNAL });
+  return store.journal({ sinceT: new Date(ms).toISOString(), limit, keep: 'oldest' });
 }
 
-/** As many of the newest entries as fit, oldest first; `more` says that older ones were left out. */
-function journalAnswer(entries: readonly JournalEntry[]): Record<string, unknown> {
+/**
+ * As many entries as fit, oldest first. `more`: others were left out; with `since` later ones, to be asked for since the
+ * last id here, without it older ones.
+ */
+function journalAnswer(entries: readonly JournalEntry[], newest: boolean): Record<string, unknown> {
   const lines: Record<string, unknown>[] = [];
   let bytes = 0;
-  for (const entry of entries.toReversed()) {
+  for (const entry of newest ? entries.toReversed() : entries) {
     const line = journalLine(entry);
     bytes += JSON.stringify(line).length;
     if (bytes > MAX_ANSWER_BYTES) break;
-    lines.unshift(line);
+    lines.push(line);
   }
-  return { journal: lines, more: lines.length < entries.length || entries.length === MAX_JOURNAL };
+  const more = lines.length < entries.length || entries.length === MAX_JOURNAL;
+  return { journal: newest ? lines.reverse() : lines, more };
 }
 
 /** Points as they fit; those that do not are named, with where they can be had. */

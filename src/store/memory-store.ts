@@ -188,7 +188,8 @@ export class MemoryStore implements StoreEngine {
       .filter((entry) => (query.kind ?? entry.kind) === entry.kind && (query.key ?? entry.key) === entry.key)
       .sort((a, b) => a.n - b.n)
       .map(({ madeS: _, ...entry }) => entry);
-    return query.limit <= 0 ? [] : found.slice(-query.limit);
+    if (query.limit <= 0) return [];
+    return query.keep === 'oldest' ? found.slice(0, query.limit) : found.slice(-query.limit);
   }
 
   trend(query: TrendQuery): TrendPoint[] {

@@ -79,14 +79,15 @@ export class Records {
   }
 
   journal(query: JournalQuery): JournalEntry[] {
-    const rows = this.#sql.journal.all({
+    const oldest = query.keep === 'oldest';
+    const rows = this.#sql[oldest ? 'journalFrom' : 'journal'].all({
       after: query.afterN ?? 0,
       since: query.sinceT ?? '',
       kind: query.kind ?? null,
       key: query.key ?? null,
       limit: Math.max(0, query.limit),
     });
-    return (rows as JournalEntry[]).reverse();
+    return oldest ? (rows as JournalEntry[]) : (rows as JournalEntry[]).reverse();
   }
 
   trend(query: TrendQuery): TrendPoint[] {
@@ -128,6 +129,9 @@ const statements = {
   journal: `SELECT n, kind, key, t, json FROM journal
     WHERE n > :after AND t >= :since AND (:kind IS NULL OR kind = :kind) AND (:key IS NULL OR key = :key)
     ORDER BY n DESC LIMIT :limit`,
+  journalFrom: `SELECT n, kind, key, t, json FROM journal
+    WHERE n > :after AND t >= :since AND (:kind IS NULL OR kind = :kind) AND (:key IS NULL OR key = :key)
+    ORDER BY n LIMIT :limit`,
   expireJournal: `DELETE FROM journal WHERE made_s < ? AND n < (SELECT max(n) FROM journal)`,
   dropJournal: 'DELETE FROM journal WHERE n IN (SELECT n FROM journal ORDER BY n LIMIT ?)',
   addTrend: 'INSERT INTO trend (point, watch, wall_ms, made_s, value) VALUES (?, ?, ?, ?, ?)',

@@ -101,8 +101,10 @@ export interface JournalQuery {
   sinceT?: string;
   kind?: string;
   key?: string;
-  /** At most this many, the newest of those that match, oldest first. */
+  /** At most this many of those that match, oldest first. */
   limit: number;
+  /** Which ones where there are more; the newest unless given. */
+  keep?: 'newest' | 'oldest';
 }
 
 export interface TrendQuery {

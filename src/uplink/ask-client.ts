@@ -12,10 +12,15 @@ import { type Topics, topicsOf } from './topics.ts';
 
 const CONNECT_MS = 15_000;
 const ANSWER_MS = 20_000;
+/** The agent takes ten asks at once and one a second in the long run; others may ask as well. */
+const PACE_MS = 1200;
+const AT_ONCE = 4;
 
 export class AskClient {
   readonly #client: MqttClient;
   readonly #topics: Topics;
+  #asked = 0;
+  #askedMs = 0;
 
   private constructor(client: MqttClient, site: string) {
     this.#client = client;
@@ -61,6 +66,9 @@ export class AskClient {
    * @throws AskRefused with the agent's reason; ForebayError where no answer comes.
    */
   async ask(verb: AskVerb, body: Readonly<Record<string, unknown>>): Promise<Record<string, unknown>> {
+    const early = this.#asked++ < AT_ONCE ? 0 : this.#askedMs + PACE_MS - performance.now();
+    if (early > 0) await new Promise((resolve) => setTimeout(resolve, early));
+    this.#askedMs = performance.now();
     const id = `cli-${randomBytes(6).toString('hex')}`;
     const topic = this.#topics.answer(id);
     await this.#client.subscribeAsync(topic, { qos: 1 });

@@ -315,6 +315,15 @@ for (const [kind, { make, clock }] of Object.entries(kinds)) {
       expect(all.map((point) => point.mean)).toEqual([3, 10]);
     });
 
+    it('keeps the oldest of a journal where that is asked for', async () => {
+      await open();
+      const journal = [1, 2, 3, 4, 5].map((n) => ({ n, kind: 'note', key: 'k', t: `t${n}`, json: '{}' }));
+      await store.commit({ journal });
+      expect(numbers(await store.journal({ afterN: 1, limit: 2 }))).toEqual([4, 5]);
+      expect(numbers(await store.journal({ afterN: 1, limit: 2, keep: 'oldest' }))).toEqual([2, 3]);
+      expect(numbers(await store.journal({ sinceT: 't3', limit: 2, keep: 'oldest' }))).toEqual([3, 4]);
+    });
+
     it('bounds the trend, the oldest first', async () => {
       await open({ trendRows: 3 });
       const trend = [1, 2, 3, 4, 5].map((value) => ({ point: 'p', watch: 'w', wallMs: value, value }));
@@ -338,6 +347,37 @@ for (const [kind, { make, clock }] of Object.entries(kinds)) {
     });
 
     if (clock) {
+      it('gives the end of a series by run time, whatever its labels say', async () => {
+        await open();
+        for (const [atS, wallMs, value] of [
+          [0, 9e12, 1],
+          [3600, 0, 2],
+          [7200, 1, 4],
+          [7300, 2, 8],
+        ] as const) {
+          nowS = atS;
+          const watch = 'w';
+          await store.commit({
+            trend: [
+              { point: 'p', watch, wallMs, value },
+              { point: 'q', watch, wallMs, value: 99 },
+            ],
+          });
+        }
+        // The clock goes on while nothing is measured: the series ends with its newest value.
+        nowS = 1e6;
+        const all = await store.recentTrend({ point: 'p', watch: 'w', lastS: 1e5, points: 1000 });
+        expect(all.map(({ runS, mean }) => [runS, mean])).toEqual([
+          [0, 1],
+          [3600, 2],
+          [7200, 4],
+          [7300, 8],
+        ]);
+        const last = await store.recentTrend({ point: 'p', watch: 'w', lastS: 3700, points: 2 });
+        expect(last.map(({ runS, mean, count }) => [runS, mean, count])).toEqual([[7300, 6, 2]]);
+        expect(await store.recentTrend({ point: 'none', watch: 'w', lastS: 1, points: 1 })).toEqual([]);
+      });
+
       it('tells ages in run time, and lets stale answers and old journal entries go', async () => {
         await open({ answerAgeS: 600, journalAgeS: 1000 });
         await store.commit({

@@ -9,6 +9,19 @@ import { sleep } from './proxy.ts';
 
 export const command = fileURLToPath(new URL('../../dist/cli/main.js', import.meta.url));
 
+/** Runs a command to its end; `out` is what it printed, errors included. */
+export async function forebay(...args: string[]): Promise<{ status: number | null; out: string }> {
+  const child = spawn(process.execPath, [command, ...args], { stdio: ['ignore', 'pipe', 'pipe'] });
+  let out = '';
+  for (const stream of [child.stdout, child.stderr]) {
+    stream.on('data', (chunk) => {
+      out += String(chunk);
+    });
+  }
+  const [status] = (await once(child, 'close')) as [number | null];
+  return { status, out };
+}
+
 export class AgentProcess {
   readonly folder: string;
   readonly stationFile: string;
