@@ -1,0 +1,255 @@
+/** What becomes a snapshot, and what does not: the keeper over a real ring and the built FLAC worker. */
+import { existsSync, mkdtempSync, readdirSync, rmSync } from 'node:fs';
+import { tmpdir } from 'node:os';
+import { join } from 'node:path';
+import { afterEach, describe, expect, it } from 'vitest';
+import { RingWriter } from '../../src/link/ring.ts';
+import { FlacRoom } from '../../src/snapshot/flac-room.ts';
+import { openRecording } from '../../src/snapshot/recording.ts';
+import { SnapshotKeeper } from '../../src/station/snapshot-keeper.ts';
+import { makeReading } from '../alarm/support.ts';
+import { stationOf } from '../config/station-text.ts';
+
+const rateHz = 1000;
+/** A record of this point: as long as the interval, for averages need less. */
+const recordS = 10;
+
+const text = `
+site: {id: weir, mains_hz: 50}
+storage: {directory: FOLDER, max_mb: 64}
+measure: {every_s: ${recordS}, velocity: {fmax_hz: 200, lines: 200, averages: 2}, envelope: {band_hz: [50, 350], lines: 100, averages: 2}}
+links: [{id: node-1, serial: {path: /dev/null, baud: 115200}, format: frames}]
+machines:
+  - id: pump-1
+    shaft: {rpm: 1500, tolerance_pct: 3}
+    points: [{id: h, link: node-1, channel: h}, {id: v, link: node-1, channel: v}, {id: a, link: node-1, channel: a}]
+`;
+
+const folders: string[] = [];
+afterEach(() => {
+  for (const folder of folders.splice(0)) rmSync(folder, { recursive: true, force: true });
+});
+
+function rig(folder = mkdtempSync(join(tmpdir(), 'forebay-keeper-'))) {
+  folders.push(folder);
+  const station = stationOf(text.replace('FOLDER', folder));
+  const ring = new RingWriter(4, 25 * rateHz);
+  ring.beginEpoch(1, 0);
+  const state = { epoch: 1, seconds: 0, running: null as boolean | null, unacknowledged: new Set<string>() };
+  const channels = ['h', 'v', 'a', 'tach'].map((name) => ({
+    name,
+    unit: name === 'tach' ? ('logic' as const) : ('g' as const),
+    unitsPerCount: name === 'tach' ? 1 : 0.001,
+    countRange: null,
+  }));
+  const description = { node: 7, serialNumber: 'A1', firmware: '0.9', nominalRateHz: rateHz, channels };
+  const worker = new FlacRoom(new URL('../../dist/snapshot/flac-worker.js', import.meta.url));
+  const logged: string[] = [];
+  const keeper = new SnapshotKeeper(
+    '0.1.0',
+    {
+      station: () => station,
+      source: (link) =>
+        link === 'node-1'
+          ? {
+              link,
+              memory: ring.memory,
+              epoch: state.epoch,
+              epochFirst: 0,
+              head: ring.head,
+              description,
+              rate: { hz: rateHz, source: 'nominal', ppm: null },
+            }
+          : null,
+      wallMs: () => Date.parse('2026-03-02T10:15:30Z') + state.seconds * 1000,
+      monotonicS: () => state.seconds,
+      runS: () => state.seconds,
+      clock: () => 'synchronised',
+      unacknowledged: (alarm) => state.unacknowledged.has(alarm),
+      running: () => state.running,
+      log: (message, details) => logged.push(`${message} ${String(details.err)}`),
+    },
+    worker,
+  );
+  /** Time goes by, with samples or without. */
+  const pass = (seconds: number, samples = true) => {
+    for (let s = 0; s < seconds; s++) {
+      if (samples) {
+        const first = ring.head;
+        const planar = Int32Array.from({ length: 4 * rateHz }, (_, k) => (first + (k % rateHz)) % 30_000);
+        ring.append(planar, rateHz, rateHz);
+      }
+      state.seconds++;
+      keeper.tick();
+    }
+  };
+  /** The reading that ends now. */
+  const reading = () => ({
+    ...makeReading({}),
+    first_index: ring.head - recordS * rateHz,
+    rate: { hz: rateHz, source: 'nominal' as const, ppm: null },
+  });
+  const tell = (what: 'begin' | 'keep' | 'drop', alarm: string) =>
+    keeper.evidence({ kind: 'evidence', alarm, pointKey: alarm.split('.')[0]!, what }, reading());
+  const files = () => readdirSync(join(folder, 'snapshots')).filter((name) => name.endsWith('.flac'));
+  return { folder, keeper, ring, state, worker, logged, pass, tell, files };
+}
+
+describe('the keeper of snapshots', () => {
+  it('freezes the samples about the first reading over a limit, and keeps them when the alarm comes of it', async () => {
+    const { keeper, worker, pass, tell, files } = rig();
+    pass(40);
+    tell('begin', 'pump-1/h.zone');
+    // The ring goes on while the alarm matures: what is kept was frozen at the beginning.
+    pass(60);
+    expect(files()).toEqual([]);
+    const id = keeper.snapshotOf('pump-1/h.zone', 'unacknowledged');
+    expect(id).toMatch(/^20260302T101610Z-pump-1-[0-9a-f]{4}$/);
+    tell('keep', 'pump-1/h.zone');
+    pass(1);
+    await worker.idle();
+    await keeper.stop();
+    const recording = openRecording(keeper.shelf.get(id!)!.path);
+    expect(recording).toMatchObject({ channels: 4, frames: 15 * rateHz });
+    expect(recording.tags).toMatchObject({
+      firstIndex: 30 * rateHz,
+      start: '2026-03-02T10:16:00.000Z',
+      alarms: ['pump-1/h.zone'],
+      channels: [
+        { points: ['pump-1/h'] },
+        { points: ['pump-1/v'] },
+        { points: ['pump-1/a'] },
+        { points: [], unit: 'logic' },
+      ],
+    });
+    expect(recording.read(0, 1).map(([count]) => count)).toEqual([0, 0, 0, 0]);
+    // Acknowledged it is named still, normal no more.
+    expect(keeper.snapshotOf('pump-1/h.zone', 'acknowledged')).toBe(id);
+    expect(keeper.snapshotOf('pump-1/h.zone', 'normal')).toBeNull();
+  });
+
+  it('drops them where the reading passes off, and names nothing', async () => {
+    const { keeper, worker, pass, tell, files } = rig();
+    pass(30);
+    tell('begin', 'pump-1/h.zone');
+    pass(20);
+    tell('drop', 'pump-1/h.zone');
+    pass(5);
+    await worker.idle();
+    expect(files()).toEqual([]);
+    expect(keeper.counters().making).toBe(0);
+    expect(keeper.snapshotOf('pump-1/h.zone', 'unacknowledged')).toBeNull();
+  });
+
+  it('lets a second alarm refer to the same samples, or makes them longer, but keeps nothing twice', async () => {
+    const { keeper, worker, pass, tell } = rig();
+    pass(40);
+    tell('begin', 'pump-1/h.zone');
+    tell('begin', 'pump-1/v.zone');
+    pass(3);
+    tell('begin', 'pump-1/a.zone');
+    const id = keeper.snapshotOf('pump-1/h.zone', 'unacknowledged');
+    expect(keeper.snapshotOf('pump-1/v.zone', 'unacknowledged')).toBe(id);
+    pass(10);
+    await keeper.stop();
+    // Written already: the third, whose reading it holds, refers to it as well.
+    expect(keeper.snapshotOf('pump-1/a.zone', 'unacknowledged')).toBe(id);
+    await worker.idle();
+    expect(keeper.shelf.all.map((one) => one.id)).toEqual([id]);
+    // From 10 s before the first reading's end to 5 s after the last one's.
+    expect(keeper.shelf.get(id!)!.frames).toBe(18 * rateHz);
+  });
+
+  it('begins another where the reading lies beyond, and ends a growing one after 30 s', async () => {
+    const { keeper, worker, pass, tell } = rig();
+    pass(40);
+    tell('begin', 'pump-1/h.zone');
+    keeper.snapshotOf('pump-1/h.zone', 'unacknowledged');
+    for (let k = 0; k < 9; k++) {
+      pass(4);
+      tell('begin', `pump-1/v.r${k}`);
+      keeper.snapshotOf(`pump-1/v.r${k}`, 'unacknowledged');
+    }
+    pass(20);
+    await worker.idle();
+    await keeper.stop();
+    const [first, second] = keeper.shelf.all;
+    expect(keeper.shelf.all.length).toBe(2);
+    expect(first!.frames).toBe(30 * rateHz);
+    expect(second!.tags.firstIndex).toBeGreaterThan(first!.tags.firstIndex);
+  });
+
+  it('gives the alarm of the machine as a whole the waveform of its points', async () => {
+    const { keeper, pass, tell } = rig();
+    pass(30);
+    for (const point of ['h', 'v', 'a']) tell('begin', `pump-1/${point}.zone`);
+    const id = keeper.snapshotOf('pump-1/machine.zone', 'unacknowledged');
+    expect(id).not.toBeNull();
+    expect(keeper.snapshotOf('pump-1/machine.bearing', 'unacknowledged')).toBeNull();
+    expect(keeper.snapshotOf('agent/node-1.silent', 'unacknowledged')).toBeNull();
+    await keeper.stop();
+    expect(keeper.shelf.get(id!)!.tags.alarms).toEqual(['pump-1/machine.zone']);
+  });
+
+  it('takes what there is where the node falls silent or restarts, and where the agent stops', async () => {
+    const { keeper, ring, state, worker, pass, tell } = rig();
+    pass(30);
+    tell('begin', 'pump-1/h.zone');
+    const silent = keeper.snapshotOf('pump-1/h.zone', 'unacknowledged')!;
+    pass(20, false);
+    await worker.idle();
+    await keeper.stop();
+    expect(keeper.shelf.get(silent)!.frames).toBe(10 * rateHz);
+    pass(5);
+    tell('begin', 'pump-1/v.zone');
+    const restarted = keeper.snapshotOf('pump-1/v.zone', 'unacknowledged')!;
+    ring.beginEpoch(2, 0);
+    state.epoch = 2;
+    pass(2);
+    await keeper.stop();
+    expect(keeper.shelf.get(restarted)).not.toBeNull();
+  });
+
+  it('keeps starts and coast-downs by themselves', async () => {
+    const { keeper, state, worker, pass } = rig();
+    state.running = false;
+    pass(30);
+    state.running = true;
+    pass(8);
+    state.running = null;
+    pass(3);
+    state.running = false;
+    pass(8);
+    await worker.idle();
+    await keeper.stop();
+    expect(keeper.shelf.all.map(({ tags }) => [tags.kind, tags.cause])).toEqual([
+      ['start', 'start of pump-1'],
+      ['coast-down', 'coast-down of pump-1'],
+    ]);
+  });
+
+  it('remembers across a restart which waveform an alarm named', async () => {
+    const { folder, keeper, pass, tell } = rig();
+    pass(30);
+    tell('begin', 'pump-1/h.zone');
+    const id = keeper.snapshotOf('pump-1/h.zone', 'unacknowledged');
+    await keeper.stop();
+    const again = rig(folder);
+    expect(again.keeper.snapshotOf('pump-1/h.zone', 'returned-unacknowledged')).toBe(id);
+  });
+
+  it('counts what could not be written, and says so', async () => {
+    const { folder, keeper, worker, logged, pass, tell } = rig();
+    pass(30);
+    tell('begin', 'pump-1/h.zone');
+    const id = keeper.snapshotOf('pump-1/h.zone', 'unacknowledged')!;
+    rmSync(join(folder, 'snapshots'), { recursive: true });
+    pass(10);
+    await worker.idle();
+    await keeper.stop();
+    expect(keeper.counters()).toMatchObject({ lost: 1, kept: 0, making: 0 });
+    expect(logged.join()).toMatch(/a snapshot could not be written.*ENOENT/);
+    expect(keeper.snapshotOf('pump-1/h.zone', 'acknowledged')).toBeNull();
+    expect(existsSync(keeper.shelf.pathOf(id))).toBe(false);
+  });
+});
