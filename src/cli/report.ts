@@ -4,6 +4,7 @@ import { readFileSync, renameSync, rmSync, statSync, writeFileSync } from 'node:
 import { basename } from 'node:path';
 import { ForebayError } from '../config/errors.ts';
 import { loadStation } from '../config/load.ts';
+import type { Station } from '../config/station.ts';
 import { bareStation } from '../report/bare-station.ts';
 import { type AlarmLine, type ReportReading, reportModel } from '../report/model.ts';
 import { reportPage } from '../report/page.ts';
@@ -52,7 +53,7 @@ function pageOf(recording: Recording, options: ReportCommandOptions, err: Output
     throw usage(`${file} does not say what it holds; give the station file with -c and --points`);
   }
   const station = withEvery(config === null ? bareStation(tags!, file) : loadStation(config), options.every);
-  const points = options.points ?? pointsOfTags(recording);
+  const points = options.points ?? pointsOfTags(recording, station);
   if (points === null) throw usage(`${file} does not say which points it holds; give --points`);
   const how = replayOptionsFor(station, recording, { ...options, points }, err);
   const readings: ReportReading[] = [];
@@ -87,11 +88,21 @@ function pageOf(recording: Recording, options: ReportCommandOptions, err: Output
   );
 }
 
-/** As `--points` would name them: of each channel its first point, a tachometer by its link. */
-function pointsOfTags({ tags }: Recording): string | null {
+/** As `--points` would name them: of each channel the first point that the station has, a tachometer by its link. */
+function pointsOfTags({ tags }: Recording, station: Station): string | null {
   if (tags === null) return null;
+  const known = new Set(station.machines.flatMap(({ points }) => points.map(({ key }) => key)));
+  const tachometers = new Set(
+    station.machines.map(({ shaft }) =>
+      shaft?.kind === 'tachometer' ? `${shaft.link}/${shaft.channel}` : '',
+    ),
+  );
   return tags.channels
-    .map(({ points, unit, name }) => points[0] ?? (unit === 'logic' ? `${tags.link}/${name}` : '-'))
+    .map(({ points, name }) => {
+      const tachometer = `${tags.link}/${name}`;
+      const point = points.find((key) => known.has(key)) ?? points[0];
+      return point ?? (tachometers.has(tachometer) ? tachometer : '-');
+    })
     .join(',');
 }
 

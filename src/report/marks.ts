@@ -4,7 +4,7 @@ import { expectedHz, type LineName, lineNames, lineTitles } from '../measure/bea
 import type { PlannedBearing } from '../measure/plan.ts';
 import type { EnvelopeReading } from '../measure/reading.ts';
 
-export type MarkFamily = 'shaft' | 'vanes' | 'mains' | 'outer' | 'inner' | 'rolling-element' | 'cage';
+type MarkFamily = 'shaft' | 'vanes' | 'mains' | 'outer' | 'inner' | 'rolling-element' | 'cage';
 
 export interface Mark {
   readonly hz: number;

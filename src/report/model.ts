@@ -18,7 +18,7 @@ import { envelopeMarks, type Mark, machineMarks } from './marks.ts';
 import { MAX_SAMPLE_BYTES, type PackedSamples, packSamples } from './samples.ts';
 import { type RecordCurves, recordCurves } from './spectra.ts';
 
-export interface ReportChannel {
+interface ReportChannel {
   readonly machine: Machine;
   readonly point: Point;
   /** Which channel of the recording. */
@@ -79,7 +79,7 @@ export interface PointReport {
   readonly cascade: Cascade | null;
 }
 
-export interface MachineReport {
+interface MachineReport {
   readonly machine: Machine;
   readonly findings: readonly Finding[];
 }

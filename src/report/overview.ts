@@ -53,6 +53,7 @@ export function trust(model: ReportModel): Markup {
   if (tags !== null) {
     rows.push(
       ['Cause', tags.cause === '' ? 'not stated' : tags.cause],
+      ['Alarms', tags.alarms.length === 0 ? 'none' : tags.alarms.join(', ')],
       ['Snapshot', tags.id],
       ['Node', `${tags.link}${tags.nodeSerial === null ? '' : `, serial ${tags.nodeSerial}`}`],
       ['Recorded by', `agent ${tags.version}, configuration ${tags.config}`],

@@ -8,8 +8,8 @@ export interface PackedSamples {
   readonly base64: string;
 }
 
-/** Bytes of samples in one page: 10 s of 3 channels at 40 960 Hz take 2.5 MB of 16 bit and 3.7 MB of 24. */
-export const MAX_SAMPLE_BYTES = 5_200_000;
+/** Bytes of samples in one page: 15 s of 3 channels at 40 960 Hz take 3.7 MB of 16 bit and 5.5 MB of 24. */
+export const MAX_SAMPLE_BYTES = 5_600_000;
 
 /**
  * @param counts of one channel.

@@ -1,4 +1,5 @@
 /** The report command: what it takes, what it refuses, and that a page is bounded and harmless. */
+import { execFileSync } from 'node:child_process';
 import { existsSync, readFileSync, statSync, writeFileSync } from 'node:fs';
 import { afterAll, describe, expect, it } from 'vitest';
 import { reportCommand } from '../../src/cli/report.ts';
@@ -125,21 +126,37 @@ describe('the report command', () => {
   });
 
   it.each([
-    [16, 2 ** -11],
-    [24, 2 ** -19],
-  ])('stays under 8 MB with 10 s of three channels at 40 960 Hz in %i bit', async (bits, unitsPerCount) => {
-    const scale = 2 ** (bits - 16);
-    const counts = ['h', 'v', 'a'].map(() => tone(25, 4, 10, 40_960).map((count) => count * scale));
-    const rate = { hz: 40_960, source: 'measured', ppm: 5 } as const;
-    const file = await snapshot(
-      `long-${bits}.flac`,
-      counts,
-      tags({ nominalRateHz: 40_960, rate, channels: three(unitsPerCount) }),
-    );
-    const { path, text } = await report({ file, config: demoStation });
-    expect(statSync(path).size).toBeLessThan(8e6);
-    // Every single sample is in it.
-    expect(text.match(/"block":1,/g)).toHaveLength(3);
+    [10, 16, 2 ** -11],
+    [15, 24, 2 ** -19],
+  ])(
+    'stays under 8 MB with %i s of three channels at 40 960 Hz in %i bit',
+    async (seconds, bits, unitsPerCount) => {
+      const scale = 2 ** (bits - 16);
+      const counts = ['h', 'v', 'a'].map(() => tone(25, 4, seconds, 40_960).map((count) => count * scale));
+      const rate = { hz: 40_960, source: 'measured', ppm: 5 } as const;
+      const file = await snapshot(
+        `long-${bits}.flac`,
+        counts,
+        tags({ nominalRateHz: 40_960, rate, channels: three(unitsPerCount) }),
+      );
+      const { path, text } = await report({ file, config: demoStation });
+      expect(statSync(path).size).toBeLessThan(8e6);
+      // Every single sample is in it.
+      expect(text.match(/"block":1,/g)).toHaveLength(3);
+    },
+  );
+
+  it('works from the built package, which holds all that a page is made of', async () => {
+    const file = await snapshot('built.flac', [tone(25, 0.5, 5)], tags());
+    const built = new URL('../../dist/cli/report.js', import.meta.url).href;
+    const options = { file, config: null, out: inFolder('built.html'), version: '0.0.1' };
+    const program =
+      `import { reportCommand } from ${JSON.stringify(built)};` +
+      `process.exitCode = await reportCommand(${JSON.stringify(options)});`;
+    execFileSync(process.execPath, ['--input-type=module', '-e', program], { stdio: 'pipe' });
+    const { text } = await report({ file, config: null });
+    expect(figuresOf(readFileSync(options.out, 'utf8'))).toEqual(figuresOf(text));
+    expect(readFileSync(options.out, 'utf8')).toContain('new uPlot(');
   });
 
   it('stays under 8 MB with a recording that does not fit, by the extremes of blocks', async () => {

@@ -64,4 +64,22 @@ describe('the demo data', () => {
     expect((last?.findings ?? []).map(({ fault }) => fault)).toEqual(faults);
     expect(lines.filter(({ kind }) => kind === 'reading').length).toBeGreaterThan(8);
   });
+
+  it('shows in its figures what its README says beside the findings', async () => {
+    const last = async (id: string) => {
+      const lines = await replayLines(flacOf(id));
+      return lines.filter(({ kind, point }) => kind === 'reading' && point === 'motor-de-h').at(-1)!;
+    };
+    const [healthy, resonance, cavitation] = [
+      await last('healthy'),
+      await last('resonance'),
+      await last('cavitation'),
+    ];
+    expect(healthy.zone).toBe('A');
+    expect(resonance.zone).toBe('D');
+    const { vane_pass } = resonance.tones as { vane_pass: { mm_s: number } };
+    expect(vane_pass.mm_s / (resonance.velocity as { overall: number }).overall).toBeGreaterThan(0.9);
+    const rms = (line: Line) => (line.acceleration as { rms: number }).rms;
+    expect(rms(cavitation) / rms(healthy)).toBeGreaterThan(3);
+  });
 });

@@ -101,3 +101,18 @@ describe('the figures of a report', () => {
     expect(at('2x mains')).toBe(100);
   });
 });
+
+describe('the record that a report shows', () => {
+  it('is the last whose speed is known where the machine coasts down', async () => {
+    const file = join(demoData, 'coast-down.flac');
+    const { text } = await report({ file, config: demoStation });
+    const lines = (await replayLines(file)).filter(({ kind }) => kind === 'reading');
+    for (const { key, recordS } of dataOf(text).points) {
+      const own = lines.filter(({ point }) => key === `pump-3/${point}`);
+      const known = own.filter((line) => (line.shaft as { hz: number | null }).hz !== null);
+      expect(known.length).toBeGreaterThan(0);
+      expect(known.length).toBeLessThan(own.length);
+      expect(Math.round(recordS[0] * 6400), key).toBe(known.at(-1)!.first_index);
+    }
+  });
+});

@@ -10,7 +10,7 @@ import type { SnapshotTags } from '../../src/snapshot/tags.ts';
 
 export const demoData = fileURLToPath(new URL('../../demo-data', import.meta.url));
 export const demoStation = join(demoData, 'station.yaml');
-export const demoPoints = 'pump-3/motor-de-h,pump-3/motor-de-v,pump-3/motor-de-a';
+const demoPoints = 'pump-3/motor-de-h,pump-3/motor-de-v,pump-3/motor-de-a';
 
 const folder = mkdtempSync(join(tmpdir(), 'forebay-report-'));
 export const inFolder = (name: string) => join(folder, name);

@@ -139,7 +139,7 @@ export function zoomTools(host, plot, { whole, least, centre }) {
     const { min, max } = range();
     const pinned = centre();
     const middle = pinned !== null && pinned >= min && pinned <= max ? pinned : (min + max) / 2;
-    show(middle - ((middle - min) / (max - min)) * (max - min) * factor, (max - min) * factor);
+    show(middle - (middle - min) * factor, (max - min) * factor);
   };
   const move = (/** @type {number} */ share) => {
     const { min, max } = range();

@@ -47,7 +47,7 @@ export function spectrumChart(figure, data, { unit, factor, on, shaftHz }) {
         x: { time: false },
         y: {
           range: (_, __, most) =>
-            isDecibel ? [(most ?? 0) - spanDb, (most ?? 0) + 8] : [0, 1.18 * (most || 1)],
+            isDecibel ? [(most ?? 0) - spanDb, (most ?? 0) + 8] : [0, 1.25 * (most || 1)],
         },
       },
       axes: [
