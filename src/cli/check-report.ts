@@ -257,9 +257,11 @@ function sharedChannels(station: Station): CheckWarning[] {
 function idleRules(station: Station, points: readonly CheckedPoint[]): CheckWarning[] {
   return station.rules.flatMap((rule): CheckWarning[] => {
     const judges = points.some((point) => point.limits.some((limit) => limit.rule === rule.id));
-    if (rule.test.kind !== 'zones' || judges) return [];
-    const text =
-      'no point that it watches has zones: give the machines a severity, or it will never be raised';
+    const learns = rule.test.kind === 'baseline';
+    if (learns ? station.asks.includes('baseline') : rule.test.kind !== 'zones' || judges) return [];
+    const text = learns
+      ? 'baseline is not among the asks of this station: nothing can be learned for it, and it will never be raised'
+      : 'no point that it watches has zones: give the machines a severity, or it will never be raised';
     return [{ kind: 'warning', where: `rule ${rule.id}`, text }];
   });
 }

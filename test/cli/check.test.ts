@@ -209,6 +209,12 @@ describe('warnings', () => {
       /uplink: even a quiet day takes/,
     ],
     [
+      'a rule whose values nobody can learn',
+      '  - {id: high',
+      '  - {id: shift, watch: acceleration.rms, baseline: {alert: 2}}\n  - {id: high',
+      /rule shift: baseline is not among the asks/,
+    ],
+    [
       'rules of thumb',
       '{id: de, elements: 9, element_mm: 7.938, pitch_mm: 39.04}',
       '{id: de, elements: 9}',
