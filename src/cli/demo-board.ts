@@ -15,6 +15,7 @@ interface ReadingHeard {
 }
 
 interface AlarmHeard {
+  snapshot?: string | null;
   state?: string;
   level?: string;
   reason?: string;
@@ -76,6 +77,12 @@ export class DemoBoard {
   /** Alarms of a machine, or of links (`agent`), that were ever raised. */
   alarmsOf(machine: string): [string, AlarmRow][] {
     return [...this.alarms].filter(([key]) => key.startsWith(`${machine}/`));
+  }
+
+  /** Name of the waveform that an alarm of the worsening machine has; null: none has one. */
+  snapshot(): string | null {
+    for (const [, { snapshot }] of this.alarmsOf(worseningMachine)) if (snapshot) return snapshot;
+    return null;
   }
 
   /** What the demo promises and has not been seen; empty: it kept its word. */

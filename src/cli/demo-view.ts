@@ -1,6 +1,7 @@
 /** What the demo writes: a table that refreshes on a terminal, plain lines elsewhere. */
 
 import type { DemoBoard } from './demo-board.ts';
+import type { DemoEvidence } from './demo-evidence.ts';
 import { soundMachine, worseningMachine } from './demo-station.ts';
 
 export interface Traffic {
@@ -130,8 +131,9 @@ export function summaryLines(
   board: DemoBoard,
   traffic: Traffic,
   lost: { frames: number; samples: number },
+  evidence: DemoEvidence,
 ): string[] {
-  const missing = board.missing();
+  const missing = [...board.missing(), ...(evidence.trouble === null ? [] : [evidence.trouble])];
   const raised = [...board.alarms].map(
     ([key, { state, level, reason, atS }]) =>
       `  ${key}, ${level}, now ${state} (changed at ${Math.round(atS)} s): ${reason ?? ''}`,
@@ -149,6 +151,7 @@ export function summaryLines(
       : []),
     ...raised,
     ...(findings.length > 0 ? ['  likely faults:', ...findings.map((line) => `  ${line}`)] : []),
+    ...(evidence.lines.length > 0 ? ['', 'The waveform behind the alarm', ...evidence.lines] : []),
     '',
     'What it cost',
     `  ${trafficLine(board, traffic)}`,
@@ -167,7 +170,8 @@ export function summaryLines(
     '',
     ...(missing.length === 0
       ? [
-          'The demo showed what it promises: the sound pump without alarm, the outer race of the other one found.',
+          'The demo showed what it promises: the sound pump without alarm, the outer race of the other one found and',
+          'its waveform pulled.',
         ]
       : ['The demo did NOT show what it promises:', ...missing.map((line) => `  ${line}`)]),
   ];

@@ -9,6 +9,7 @@ import { SimulatedNode } from '../simulate/node.ts';
 import { bufferedSink } from '../simulate/sinks.ts';
 import { DemoAgent } from './demo-agent.ts';
 import { DemoBoard } from './demo-board.ts';
+import { type DemoEvidence, pullEvidence } from './demo-evidence.ts';
 import { type DemoLines, freePort, openLines } from './demo-lines.ts';
 import { demoEveryS, demoNodes, demoSite, demoStationText } from './demo-station.ts';
 import { DemoView, summaryLines, type Traffic } from './demo-view.ts';
@@ -17,6 +18,8 @@ export interface DemoOptions {
   /** null: what shows all of it and still ends within a minute and a half. */
   readonly seconds: number | null;
   readonly out: Pick<NodeJS.WritableStream, 'write'> & { isTTY?: boolean; columns?: number };
+  /** Of Forebay. */
+  readonly version: string;
 }
 
 const usualSeconds = 75;
@@ -30,7 +33,7 @@ const liveRefreshMs = 1000;
 const plainRefreshMs = 10_000;
 
 /** @returns the exit status: 0 when what the demo promises was seen, else 1. */
-export async function demoCommand({ seconds, out }: DemoOptions): Promise<number> {
+export async function demoCommand({ seconds, out, version }: DemoOptions): Promise<number> {
   const lasts = seconds ?? usualSeconds;
   if (!(lasts >= leastSeconds && lasts <= mostSeconds)) {
     throw new ForebayError(
@@ -43,7 +46,7 @@ export async function demoCommand({ seconds, out }: DemoOptions): Promise<number
   try {
     const lines = await openLines(demoNodes(lasts).length);
     try {
-      return await show(lines, directory, lasts, new DemoView(out), interruption.happened);
+      return await show(lines, directory, lasts, new DemoView(out), interruption.happened, version);
     } finally {
       for (const line of lines.lines) line.close();
     }
@@ -59,6 +62,7 @@ async function show(
   lasts: number,
   view: DemoView,
   interrupted: Promise<'interrupted'>,
+  version: string,
 ): Promise<number> {
   const port = await freePort();
   const stationFile = join(directory, 'station.yaml');
@@ -131,13 +135,33 @@ async function show(
       frames: nodes.reduce((sum, { counts }) => sum + counts.droppedFrames, 0),
       samples: nodes.reduce((sum, { counts }) => sum + counts.lostSamples, 0),
     };
-    view.tell(summaryLines(board, traffic(), lost));
-    return board.missing().length === 0 ? 0 : failed('For whoever looks into it:');
+    const evidence = await evidenceOf(board, port, stationFile, version);
+    view.tell(summaryLines(board, traffic(), lost, evidence));
+    return board.missing().length === 0 && evidence.trouble === null
+      ? 0
+      : failed('For whoever looks into it:');
   } finally {
     for (const timer of timers) clearTimeout(timer);
     for (const node of nodes) node.stop();
     client.end(true);
     await agent.stop();
+  }
+}
+
+/** Pulls the waveform behind the alarm and writes its report, as an engineer far away would. */
+async function evidenceOf(
+  board: DemoBoard,
+  brokerPort: number,
+  stationFile: string,
+  version: string,
+): Promise<DemoEvidence> {
+  const snapshot = board.snapshot();
+  if (snapshot === null) return { lines: [], trouble: 'no alarm came with a waveform' };
+  try {
+    const lines = await pullEvidence({ brokerPort, site: demoSite, snapshot, stationFile, version });
+    return { lines, trouble: null };
+  } catch (error) {
+    return { lines: [], trouble: `the waveform of the alarm: ${(error as Error).message}` };
   }
 }
 

@@ -261,7 +261,7 @@ program
   .action(
     runs(async ({ seconds }: { seconds?: number }) => {
       const { demoCommand } = await import('./demo.ts');
-      return demoCommand({ seconds: seconds ?? null, out: process.stdout });
+      return demoCommand({ seconds: seconds ?? null, out: process.stdout, version });
     }),
   );
 
