@@ -57,7 +57,8 @@ export function judge(rule: Rule, point: Point, reading: Reading, baseline: Base
         const times = test[level];
         if (times !== null) limits[level] = baselineLimit(point, rule.watch, learned.median, times, level);
       }
-      return judgeLimits(rule, reading, limits, 1, `the learned value ${figure4(learned.median)}`);
+      const whose = `the learned value ${figure4(learned.median)}`;
+      return judgeLimits(rule, reading, limits, watchesFall(test) ? -1 : 1, whose);
     }
     case 'rise':
     case 'sensor':
@@ -66,7 +67,7 @@ export function judge(rule: Rule, point: Point, reading: Reading, baseline: Base
 }
 
 /**
- * A multiple of the learned value; for velocities at least a quarter of B/C above it (danger: half of B/C; common
+ * A multiple or share of the learned value; multiples for velocities at least a quarter of B/C above it (danger: half of B/C; common
  * practice, no source), so that a small figure may double in peace, and at most what the table allows
  * (ISO 10816-3 5.4.1, 5.4.2).
  *
@@ -80,11 +81,18 @@ export function baselineLimit(
   level: Level,
 ): number {
   const multiple = times * median;
+  if (times < 1) return multiple;
   if (!watch.startsWith('velocity.') || point.severity === null) return multiple;
   const table = severityLimits(point.severity);
   const highest = level === 'alert' ? table.alarmMaxMmS : table.tripMaxMmS;
   const leastRise = (level === 'alert' ? 0.25 : 0.5) * table.velocityMmS[1];
   return Math.min(Math.max(multiple, median + leastRise), highest);
+}
+
+/** Whether a rule is broken by small figures; a baseline is where its factors are shares of the learned value. */
+export function watchesFall(test: Rule['test']): boolean {
+  if (test.kind === 'baseline') return (test.alert ?? test.danger ?? 1) < 1;
+  return test.kind === 'below';
 }
 
 function judgeLimits(

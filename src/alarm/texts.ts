@@ -5,7 +5,7 @@
 
 import type { Level, Rule } from '../config/station.ts';
 import type { Timing } from './condition.ts';
-import { figure4, type Verdict } from './limits.ts';
+import { figure4, type Verdict, watchesFall } from './limits.ts';
 import type { Rise } from './rise.ts';
 import type { GAPS, GatewayCondition, LinkCondition, SensorFault } from './sensor.ts';
 
@@ -16,6 +16,7 @@ const NEAR_THE_MACHINE =
 const FIGURE_WORDS: Readonly<Record<string, string>> = {
   'envelope.defect': 'bearing lines of the envelope',
   'envelope.mean': 'envelope mean',
+  'acceleration.mean_hz': 'mean frequency of the acceleration',
   'envelope.bpfo.over_floor_db': 'outer race line over the floor',
   'envelope.bpfi.over_floor_db': 'inner race line over the floor',
   'envelope.bsf.over_floor_db': 'rolling element line over the floor',
@@ -43,7 +44,7 @@ export function conditionReason(rule: Rule, verdict: Verdict, level: Level): str
   const long = forHowLong(rule);
   if (rule.test.kind === 'is') return `${what} accuse ${verdict.value ?? 'nothing now'}${long}`;
   const limit = verdict.limit[level];
-  const side = rule.test.kind === 'below' ? 'below' : 'above';
+  const side = watchesFall(rule.test) ? 'below' : 'above';
   const at = limit === null ? '' : ` ${figure4(limit)}${verdict.unit ? ` ${verdict.unit}` : ''}`;
   if (rule.test.kind === 'zones') {
     const shown = verdict.unit === 'µm' ? 'displacement rms' : what;
@@ -75,6 +76,9 @@ export function conditionCheck(watch: string, level: Level): string {
 function lookNext(watch: string): string {
   if (watch.startsWith('envelope.') || watch === 'acceleration.kurtosis' || watch === 'acceleration.crest') {
     return 'Compare the envelope with earlier readings, look at lubrication, and plan the bearing if it persists or grows.';
+  }
+  if (watch === 'acceleration.mean_hz') {
+    return 'See whether the sensor still sits tight and its cable is whole; then compare the other points.';
   }
   if (watch.startsWith('acceleration.')) {
     return 'Compare bearing lines and flow conditions: bearing, lubrication and cavitation raise it first.';

@@ -125,16 +125,48 @@ function checkKind(
 function checkLimits(rule: LooseRule, path: KeyPath, report: Report): void {
   for (const key of ['above', 'below', 'baseline'] as const) {
     const levels = rule[key];
-    if (levels) checkOrder(levels.alert, levels.danger, key, [...path, key], 'danger', report);
+    if (!levels) continue;
+    const falls = key === 'below' || (key === 'baseline' && isFall(levels));
+    if (key === 'baseline' && !hasOneSide(levels, [...path, key], report)) continue;
+    checkOrder(levels.alert, levels.danger, falls, [...path, key], 'danger', report);
   }
   const rise = rule.rise;
-  if (rise) checkOrder(rise.alert_pct, rise.danger_pct, 'rise', [...path, 'rise'], 'danger_pct', report);
+  if (rise) checkOrder(rise.alert_pct, rise.danger_pct, false, [...path, 'rise'], 'danger_pct', report);
+}
+
+type Levels = { alert?: number | undefined; danger?: number | undefined };
+
+/** Of a baseline: shares of the learned value instead of multiples. */
+function isFall({ alert, danger }: Levels): boolean {
+  return (alert ?? danger ?? 1) < 1;
+}
+
+/** A rule watches for a rise or for a fall, and the learned value itself is neither. */
+function hasOneSide(levels: Levels, path: KeyPath, report: Report): boolean {
+  for (const key of ['alert', 'danger'] as const) {
+    const times = levels[key];
+    if (times === undefined) continue;
+    if (times === 1) {
+      report(
+        'config.impossible',
+        [...path, key],
+        'is 1, the learned value itself; take more, or less for a fall',
+      );
+      return false;
+    }
+    if (times < 1 !== isFall(levels)) {
+      const message = `is ${times}, alert is ${levels.alert}: one watches for a rise, the other for a fall`;
+      report('config.impossible', [...path, key], message);
+      return false;
+    }
+  }
+  return true;
 }
 
 function checkOrder(
   alert: number | undefined,
   danger: number | undefined,
-  test: string,
+  falls: boolean,
   path: KeyPath,
   dangerKey: string,
   report: Report,
@@ -145,8 +177,8 @@ function checkOrder(
     return;
   }
   if (alert === undefined || danger === undefined) return;
-  const inverted = test === 'below' ? danger > alert : danger < alert;
+  const inverted = falls ? danger > alert : danger < alert;
   if (!inverted) return;
-  const message = `is ${danger}, danger lies ${test === 'below' ? 'below' : 'above'} alert (${alert}); are they swapped?`;
+  const message = `is ${danger}, danger lies ${falls ? 'below' : 'above'} alert (${alert}); are they swapped?`;
   report('config.impossible', [...path, dangerKey], message);
 }

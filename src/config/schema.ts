@@ -174,7 +174,10 @@ const rule = z.strictObject({
     .enum(['alert', 'danger'])
     .optional()
     .meta({ description: 'Level of an `is` rule, alert or danger' }),
-  baseline: levels(z.number().gt(1).max(1000), 'Raised above so many times the learned value'),
+  baseline: levels(
+    z.number().gt(0).max(1000),
+    'Raised above so many times the learned value; of less than 1, below that share of it',
+  ),
   rise: z
     .strictObject({
       alert_pct: num(1, 100_000, 'Rise that is an alert, %').optional(),

@@ -89,6 +89,33 @@ describe('baseline limits', () => {
     expect(baselineLimit(point, 'acceleration.rms', 0.01, 2, 'alert')).toBeCloseTo(0.02, 12);
   });
 
+  test('below 1 they are shares: a mean frequency that falls to 0.4 of what it was is told as a loose sensor', () => {
+    const rule = {
+      ...zoneRule,
+      id: 'mount',
+      watch: 'acceleration.mean_hz',
+      test: { kind: 'baseline', alert: 0.5, danger: null } as const,
+      onDelayS: 0,
+    };
+    const bench = new Bench(onePoint([rule]));
+    const figures = { 'acceleration.mean_hz': { median: 4000, mad: 100, readings: 99 } };
+    const baseline: Baseline = { version: 1, ranges: [{ hz: null, figures }] };
+    const put = (meanHz: number) => {
+      const reading = makeReading({ meanHz });
+      return alarmsIn(
+        bench.put({ kind: 'reading', pointKey: 'pump-1/de-h', reading, t: bench.t, elapsedS: 10, baseline }),
+      );
+    };
+    expect(put(4400)).toEqual([]);
+    expect(put(2100)).toEqual([]);
+    const [alarm] = put(1600);
+    expect(alarm).toMatchObject({ level: 'alert', value: 1600, limit: 2000, unit: 'Hz' });
+    expect(alarm!.reason).toBe(
+      'mean frequency of the acceleration below 2000 Hz: alert limit of the learned value 4000, factor 0.5',
+    );
+    expect(alarm!.check).toMatch(/sensor still sits tight/);
+  });
+
   test('0.3 mm/s doubling to 0.6 stays quiet; a true rise is told with what was learned', () => {
     const rule = {
       ...zoneRule,

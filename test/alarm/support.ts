@@ -100,6 +100,7 @@ export interface Shown {
   shaftHz?: number | null;
   quality?: Reading['quality'];
   g?: number;
+  meanHz?: number;
   severity?: Point['severity'];
 }
 
@@ -134,7 +135,7 @@ export function makeReading(shown: Shown): Reading {
       peak: null,
       crest: null,
       kurtosis: null,
-      mean_hz: null,
+      mean_hz: shown.meanHz ?? null,
     },
     envelope: measured
       ? {
