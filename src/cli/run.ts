@@ -12,7 +12,15 @@ export async function runCommand({ config, version }: { config: string; version:
   const manager = new ServiceManager(process.env, (error) =>
     log.warn('the service manager could not be told', { err: error }),
   );
-  const agent = new Agent(station, { version, log, manager });
+  const agent = new Agent(station, {
+    version,
+    log,
+    manager,
+    fatal: (error) => {
+      log.error('the agent ends, to be started anew', error);
+      void agent.stop().finally(() => process.exit(1));
+    },
+  });
   const stopped = new Promise<void>((resolve) => {
     process.once('SIGTERM', resolve);
     process.once('SIGINT', resolve);

@@ -1,7 +1,6 @@
 /** The agent: store, uplink, links, measuring and judging of one station, started, watched and stopped together. */
 
 import { mkdirSync } from 'node:fs';
-import { monitorEventLoopDelay } from 'node:perf_hooks';
 import type { AlarmInput, StoredRow } from '../alarm/effects.ts';
 import { restoreAlarms } from '../alarm/engine.ts';
 import { planAlarms } from '../alarm/plan.ts';
@@ -33,9 +32,12 @@ import { SnapshotAsks } from './snapshot-asks.ts';
 import { SnapshotKeeper } from './snapshot-keeper.ts';
 import { answerAsks } from './station-asks.ts';
 import { ringSecondsOf, StationLinks, setupOf } from './station-links.ts';
+import { StoreWatch } from './store-watch.ts';
 import { Supervision } from './supervision.ts';
 import { ToldValues, toldTopics } from './told.ts';
 import { trendWatches } from './trend-watches.ts';
+import { Vitals } from './vitals.ts';
+import { within } from './within.ts';
 
 const TICK_MS = 1000;
 const HEALTH_EVERY_S = 6 * 3600;
@@ -48,6 +50,8 @@ export interface AgentOptions {
   version: string;
   log: Log;
   clock?: StationClock;
+  /** Something broke that only a new start mends. */
+  fatal(error: Error): void;
   /** Whoever started the agent and wants to know how it is. */
   manager?: ServiceManager;
 }
@@ -62,7 +66,8 @@ export class Agent {
   readonly #links: StationLinks;
   readonly #told: ToldValues;
   readonly #supervision: Supervision | null;
-  readonly #loopDelay = monitorEventLoopDelay({ resolution: 10 });
+  readonly #vitals: Vitals;
+  readonly #watch: StoreWatch;
   #parts: {
     uplink: Uplink;
     ids: MessageIds;
@@ -73,17 +78,13 @@ export class Agent {
     keeper: SnapshotKeeper;
     snapshots: SnapshotAsks;
   } | null = null;
-  #openedS = 0;
-  #runSAtOpen = 0;
   #clockSays: 'synchronised' | 'free' = 'free';
   #timer: NodeJS.Timeout | null = null;
   #tickS = 0;
   #healthS = 0;
   #clockS = 0;
   #risesS = 0;
-  #storeTrouble = false;
   #reloading: Promise<void> = Promise.resolve();
-  #cpu = { usage: process.cpuUsage(), atS: 0 };
 
   constructor(station: Station, options: AgentOptions) {
     this.#station = station;
@@ -95,7 +96,15 @@ export class Agent {
       directory,
       maxMb,
       limits: storeLimits(maxMb),
-      onDown: (error) => void this.#reopenStore(error),
+      onDown: (error) => void this.#watch.reopen(error),
+    });
+    this.#vitals = new Vitals(() => this.#clock.monotonicS());
+    this.#watch = new StoreWatch({
+      store: this.#store,
+      log: this.#log,
+      monotonicS: () => this.#clock.monotonicS(),
+      disk: (trouble) => this.#gateway('disk', trouble !== null, trouble),
+      fatal: (error) => this.#options.fatal(error),
     });
     this.#told = new ToldValues(toldTopics(station.machines), () => this.#clock.monotonicS());
     this.#room = new MeasuringRoom(setupOf(station), {
@@ -130,8 +139,7 @@ export class Agent {
   /** @throws ForebayError where the storage is locked or unwritable or the embedded broker's port is busy. */
   async start(): Promise<void> {
     mkdirSync(this.#station.storage.directory, { recursive: true });
-    const report = await this.#store.open();
-    this.#opened(report);
+    const report = await this.#watch.open();
     this.#clockSays = await clockState();
     const parts = await this.#assemble(report);
     this.#parts = parts;
@@ -145,9 +153,8 @@ export class Agent {
       this.#gateway(condition, false, null);
     await parts.uplink.start();
     this.#links.start();
-    this.#loopDelay.enable();
+    this.#vitals.start();
     this.#tickS = this.#clock.monotonicS();
-    this.#cpu = { usage: process.cpuUsage(), atS: this.#tickS };
     // The first health follows once the links have had time to speak.
     this.#healthS = this.#tickS - HEALTH_EVERY_S + 30;
     this.#risesS = this.#tickS - RISES_EVERY_S;
@@ -173,7 +180,7 @@ export class Agent {
       await within(STOP_MS.uplink + 200, parts.uplink.stop(STOP_MS.uplink));
     }
     await within(STOP_MS.store, this.#store.close());
-    this.#loopDelay.disable();
+    this.#vitals.stop();
     this.#log.info('stopped');
   }
 
@@ -256,11 +263,11 @@ export class Agent {
       emptying: (name, topic) => emptyingMessage(ids, name, topic),
       committed: () => {
         kick();
-        this.#storeWorks();
+        this.#watch.works();
       },
       evidence: (effect, reading) => keeper.evidence(effect, reading),
       snapshotOf: (alarm, state) => keeper.snapshotOf(alarm, state),
-      commitFailed: (error) => this.#storeFailed(error),
+      commitFailed: (error) => this.#watch.failed(error),
       inputFailed: (error) => this.#log.error('an alarm input could not be judged', error),
       monotonicS: () => this.#clock.monotonicS(),
     });
@@ -269,7 +276,7 @@ export class Agent {
       committed: kick,
       message: (pointKey, body) => outboxMessage(ids, 'reading', topics.reading(pointKey), body),
       monotonicS: () => this.#clock.monotonicS(),
-      lost: (error) => this.#storeFailed(error),
+      lost: (error) => this.#watch.failed(error),
     });
     await judge.restore(restored.effects);
     await emptyForgotten(store, ids, ownTopics(station, plan, topics));
@@ -279,7 +286,7 @@ export class Agent {
         const journal = note ? [noteEntry(ids, note.machine, note, this.#now())] : [];
         return store.commit({ ...commit, journal });
       },
-      failed: (error) => this.#storeFailed(error),
+      failed: (error) => this.#watch.failed(error),
       now: () => this.#now(),
     });
     answerAsks(uplink, { judge, post, store, ids, judging, learning, now: () => this.#now() });
@@ -298,7 +305,7 @@ export class Agent {
       source: (link) => this.#links.source(link),
       wallMs: () => this.#clock.wallMs(),
       monotonicS: () => this.#clock.monotonicS(),
-      runS: () => this.#runS(),
+      runS: () => this.#watch.runS,
       clock: () => this.#clockSays,
       unacknowledged: (alarm) =>
         ['unacknowledged', 'returned-unacknowledged'].includes(judging.state.alarms[alarm]?.life.state ?? ''),
@@ -307,15 +314,11 @@ export class Agent {
     });
   }
 
-  #runS(): number {
-    return this.#runSAtOpen + this.#clock.monotonicS() - this.#openedS;
-  }
-
   #makeUplink(station: Station, ids: MessageIds): Uplink {
     return new Uplink(uplinkSettings(station), {
       store: this.#store,
       ids,
-      runS: () => this.#runS(),
+      runS: () => this.#watch.runS,
       now: () => this.#now(),
       agent: () => ({
         version: this.#options.version,
@@ -328,11 +331,6 @@ export class Agent {
         else this.#log.warn(message, details);
       },
     });
-  }
-
-  #opened(report: OpenReport): void {
-    this.#runSAtOpen = report.runS;
-    this.#openedS = this.#clock.monotonicS();
   }
 
   #reading(point: Point, reading: Reading, wallMs: number, elapsedS: number | null): void {
@@ -361,7 +359,7 @@ export class Agent {
     this.#tickS = nowS;
     if (nowS - this.#healthS >= HEALTH_EVERY_S) {
       this.#healthS = nowS;
-      this.#sendHealth().catch((error) => this.#storeFailed(error));
+      this.#sendHealth().catch((error) => this.#watch.failed(error));
     }
     if (nowS - this.#clockS >= CLOCK_CHECK_S) {
       this.#clockS = nowS;
@@ -369,7 +367,7 @@ export class Agent {
     }
     if (nowS - this.#risesS >= RISES_EVERY_S) {
       this.#risesS = nowS;
-      this.#watchRises().catch((error) => this.#storeFailed(error));
+      this.#watchRises().catch((error) => this.#watch.failed(error));
     }
   }
 
@@ -410,27 +408,13 @@ export class Agent {
           alarm_inputs_dropped: parts.judge.dropped,
           told_unreadable: this.#told.unreadable,
         },
-        eventLoopP99Ms: this.#loopP99(),
+        eventLoopP99Ms: this.#vitals.loopP99Ms(),
         directory: this.#station.storage.directory,
-        cpuPct: this.#cpuPct(),
+        cpuPct: this.#vitals.cpuPct(),
       }),
     );
     await this.#store.commit({ outbox: [message] });
     parts.uplink.kick();
-  }
-
-  #loopP99(): number {
-    const p99 = this.#loopDelay.percentile(99) / 1e6;
-    this.#loopDelay.reset();
-    return Number(p99.toPrecision(3));
-  }
-
-  #cpuPct(): number | null {
-    const usage = process.cpuUsage(this.#cpu.usage);
-    const elapsedS = this.#clock.monotonicS() - this.#cpu.atS;
-    this.#cpu = { usage: process.cpuUsage(), atS: this.#clock.monotonicS() };
-    if (elapsedS <= 0) return null;
-    return Number(((usage.user + usage.system) / (elapsedS * 1e4)).toPrecision(3));
   }
 
   #gateway(
@@ -443,33 +427,6 @@ export class Agent {
     if (holds) this.#healthS = Math.min(this.#healthS, this.#clock.monotonicS() - HEALTH_EVERY_S + 5);
   }
 
-  #storeFailed(error: unknown): void {
-    this.#log.warn('the database did not take a commit', { err: error });
-    if (this.#storeTrouble) return;
-    this.#storeTrouble = true;
-    this.#gateway('disk', true, error instanceof Error ? error.message : String(error));
-  }
-
-  #storeWorks(): void {
-    if (!this.#storeTrouble) return;
-    this.#storeTrouble = false;
-    this.#gateway('disk', false, null);
-  }
-
-  /** The store worker died: what was under way failed and is tried again by whoever asked. */
-  async #reopenStore(error: Error): Promise<void> {
-    this.#log.error('the store worker ended', error);
-    for (;;) {
-      try {
-        this.#opened(await this.#store.open());
-        return;
-      } catch (again) {
-        this.#storeFailed(again);
-        await new Promise((resolve) => setTimeout(resolve, 1000));
-      }
-    }
-  }
-
   #logLinks(): void {
     for (const [link, health] of Object.entries(this.#links.health())) {
       const { frames, errors, gaps, missingSamples, head } = health;
@@ -480,14 +437,4 @@ export class Agent {
   #now(): string {
     return new Date(this.#clock.wallMs()).toISOString();
   }
-}
-
-/** Waits for it, but not longer. */
-async function within(ms: number, work: Promise<unknown>): Promise<void> {
-  let timer: NodeJS.Timeout | undefined;
-  const over = new Promise<void>((resolve) => {
-    timer = setTimeout(resolve, ms);
-  });
-  await Promise.race([work.catch(() => undefined), over]);
-  clearTimeout(timer);
 }

@@ -4,7 +4,7 @@
  * prints the table of the README.
  */
 import { spawnSync } from 'node:child_process';
-import { existsSync, mkdirSync, truncateSync, writeFileSync } from 'node:fs';
+import { closeSync, existsSync, mkdirSync, openSync, truncateSync, writeFileSync, writeSync } from 'node:fs';
 import { join } from 'node:path';
 import { until } from './broker-rig.ts';
 import { type FaultStation, pointKeys, stationText } from './fault-station.ts';
@@ -427,6 +427,27 @@ export const faults: readonly Fault[] = [
       },
     }),
   ),
+  {
+    name: 'database destroyed while running',
+    room: 'agent',
+    times: 1,
+    costs: 25,
+    start: fresh,
+    inject: async (station) => {
+      await station.alarms();
+      station.keepLedger();
+      for (const suffix of ['', '-wal']) {
+        const file = openSync(join(station.directory, `forebay.db${suffix}`), 'r+');
+        writeSync(file, Buffer.alloc(2_000_000, 'no database '));
+        closeSync(file);
+      }
+      // The agent ends by itself; whoever started it, here as systemd would, starts it anew.
+      await until(() => !station.agent.running, 'the agent to end', 30_000);
+      await station.agent.start();
+      station.addLedger();
+      await stands(station, 'gateway.database');
+    },
+  },
   {
     name: 'wall clock jumps by 10 years, there and back',
     room: 'agent',
