@@ -88,6 +88,12 @@ describe("the demo's station", () => {
 });
 
 describe("the demo's board", () => {
+  it('passes over asks, answers and the parts of a waveform', () => {
+    const board = new DemoBoard('lock-seven');
+    expect(board.accept('forebay/lock-seven/answer/abc/0', 'fLaC\0 not JSON', 9000, 1)).toEqual([]);
+    expect(board.messages).toBe(0);
+  });
+
   it('misses nothing when the sound pump is quiet and the outer race of the other is found and alarmed', () => {
     expect(promised().missing()).toEqual([]);
   });
