@@ -157,8 +157,8 @@ export function summaryLines(
     `  ${trafficLine(board, traffic)}`,
     '  (PUBLISH packets as a subscriber got them, without TCP/IP. Every reading was sent, for the table to move; by',
     '  default one is sent when a figure has moved, and every 2 h.)',
-    lost.frames > 0
-      ? `  The line had no room for ${lost.frames} frames (${lost.samples} samples a channel): this machine was busy.`
+    lost.samples > 0
+      ? `  ${lost.samples} samples a channel never reached the line (${lost.frames} frames had no room on it): this machine was busy.`
       : '  No frame was lost on the way in.',
     '',
     'Where to look next',

@@ -229,7 +229,7 @@ describe("the demo's view", () => {
       { lines: [], trouble: 'no alarm came with a waveform' },
     ).join('\n');
     expect(failed).toMatch(/did NOT show.*\n.*points of pump-1/);
-    expect(failed).toMatch(/no room for 3 frames/);
+    expect(failed).toMatch(/900 samples a channel never reached the line \(3 frames/);
   });
 
   it('points at files and commands that exist', () => {
