@@ -246,6 +246,18 @@ export class FaultStation {
     }
   }
 
+  /** State of an alarm by the newest entry of the journal, which no flood limit holds back; null: none. */
+  journalState(key: string): string | null {
+    const db = this.#open();
+    try {
+      const sql = "SELECT json FROM journal WHERE kind = 'alarm' AND key = ? ORDER BY n DESC LIMIT 1";
+      const json = db.prepare(sql).pluck().get(key) as string | undefined;
+      return json === undefined ? null : (JSON.parse(json) as { state: string }).state;
+    } finally {
+      db.close();
+    }
+  }
+
   /** To be called before the database is broken. */
   keepLedger(): void {
     this.#pastLedger = this.ledger();

@@ -69,11 +69,12 @@ function oversize(protocol: '5' | '3.1.1'): Start {
   };
 }
 
-const agentAlarm = (station: FaultStation, name: string) =>
-  station.room.latest.get(`agent/alarm/${name}`)?.state;
-
 const stands = (station: FaultStation, name: string, withinMs = 15_000) =>
-  until(() => agentAlarm(station, name) === 'unacknowledged', `the alarm ${name}`, withinMs);
+  until(
+    () => station.journalState(`agent/${name}`) === 'unacknowledged',
+    `the alarm ${name} in the journal`,
+    withinMs,
+  );
 
 const said = (station: FaultStation, text: string) => station.agent.text.includes(text);
 
