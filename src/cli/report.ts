@@ -1,7 +1,7 @@
 /** `forebay report`: a recording as one page to read, print and pass on. */
 
 import { readFileSync, renameSync, rmSync, statSync, writeFileSync } from 'node:fs';
-import { basename } from 'node:path';
+import { basename, resolve } from 'node:path';
 import { ForebayError } from '../config/errors.ts';
 import { loadStation } from '../config/load.ts';
 import type { Station } from '../config/station.ts';
@@ -33,6 +33,8 @@ export async function reportCommand(
   err: Output = process.stderr,
 ): Promise<number> {
   const { file, out, force = false } = options;
+  if (resolve(out) === resolve(file))
+    throw usage(`${out} is the recording itself; name another file with -o`);
   if (!force && statSync(out, { throwIfNoEntry: false }) !== undefined) {
     throw usage(`${out} exists already; give --force to write over it`);
   }

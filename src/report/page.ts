@@ -82,7 +82,9 @@ function clientData({ input, points }: ReportModel): unknown {
 }
 
 function spectrumData(curve: Curve | null, marks: PointReport['marks']['velocity']): unknown {
-  return curve && { stepHz: curve.stepHz, values: packFloats(curve.values), marks };
+  if (curve === null) return null;
+  const { stepHz, lineHz, window, values } = curve;
+  return { stepHz, lineHz, window, values: packFloats(values), marks };
 }
 
 function cascadeData({ cascade }: PointReport): unknown {

@@ -11,13 +11,14 @@ import { recordTransform } from '../signal/envelope.ts';
 import { nextPowerOfTwo } from '../signal/fft.ts';
 import { velocityWeights } from '../signal/integrate.ts';
 import { averagedSpectrum, lineAmplitudes, type Spectrum } from '../signal/spectrum.ts';
-import { mainLobeHalfWidthBins } from '../signal/window.ts';
+import { mainLobeHalfWidthBins, type WindowName } from '../signal/window.ts';
 
 /** Value k stands at k·stepHz. */
 export interface Curve {
   readonly stepHz: number;
   /** Distance at which two lines can be told apart. */
   readonly lineHz: number;
+  readonly window: WindowName;
   readonly averages: number;
   readonly values: Float32Array;
 }
@@ -95,10 +96,10 @@ function envelopeCurve(
 }
 
 function curveOf(spectrum: Spectrum, lines: Float64Array, fmaxHz: number): Curve {
-  const { binHz: stepHz, lineHz, averages } = spectrum;
+  const { binHz: stepHz, lineHz, averages, window } = spectrum;
   const bins = Math.min(lines.length, Math.floor(fmaxHz / stepHz) + 1);
   const values = Float32Array.from(lines.subarray(0, bins));
   // Nearer to 0 Hz a line cannot be told from drift.
-  values.fill(0, 0, Math.ceil((mainLobeHalfWidthBins(spectrum.window) * lineHz) / stepHz));
-  return { stepHz, lineHz, averages, values };
+  values.fill(0, 0, Math.ceil((mainLobeHalfWidthBins(window) * lineHz) / stepHz));
+  return { stepHz, lineHz, window, averages, values };
 }

@@ -78,7 +78,7 @@ figcaption{font-size:.9rem;margin-bottom:.3rem}
 .plot .u-over{cursor:crosshair}
 .plot .pin{position:absolute;top:0;bottom:0;width:0;border-left:1.5px solid var(--ink);pointer-events:none}
 .plot .pin.harmonic{border-left:1px dotted var(--ink)}
-.plot .pin em{position:absolute;top:2px;left:3px;font:600 11px/1 system-ui,sans-serif;background:#ffffffd9;padding:1px 2px}
+.plot .pin em{position:absolute;bottom:3px;left:3px;font:600 11px/1 system-ui,sans-serif;background:#ffffffd9;padding:1px 2px}
 .plot .dot{position:absolute;width:9px;height:9px;margin:-4.5px;border:2px solid var(--ink);border-radius:50%;background:#fff;pointer-events:none}
 .u-select{background:#14505c26}
 footer{padding:2rem 1.25rem 3rem;color:var(--soft);font-size:.86rem}

@@ -84,6 +84,9 @@ describe('the report command', () => {
     expect(await reportCommand({ ...options, force: true })).toBe(0);
     expect(readFileSync(out, 'utf8')).toContain('<!doctype html>');
     expect(existsSync(`${out}.part`)).toBe(false);
+    await expect(reportCommand({ ...options, out: file, force: true })).rejects.toThrow(
+      /the recording itself/,
+    );
     await expect(reportCommand({ ...options, out: inFolder('no/such/folder.html') })).rejects.toThrow(
       /cannot write/,
     );

@@ -5,13 +5,13 @@ import { bearingMultiples } from '../../src/machine/bearing.ts';
 import type { EnvelopeReading } from '../../src/measure/reading.ts';
 import { cascadeOf } from '../../src/report/cascade.ts';
 import { floatsOf, integersOf } from '../../src/report/client/decode.js';
-import { decibel, placed, significant } from '../../src/report/client/figures.js';
+import { betweenBins, decibel, placed, significant, stepped } from '../../src/report/client/figures.js';
 import { Pyramid } from '../../src/report/client/pyramid.js';
 import { clientScript } from '../../src/report/client-script.ts';
 import { envelopeMarks, machineMarks } from '../../src/report/marks.ts';
 import { html, scriptJson } from '../../src/report/markup.ts';
 import { packFloats, packSamples } from '../../src/report/samples.ts';
-import { averagedSpectrum } from '../../src/signal/spectrum.ts';
+import { averagedSpectrum, lineAmplitudes } from '../../src/signal/spectrum.ts';
 
 describe('samples in a page', () => {
   it.each([
@@ -57,6 +57,22 @@ describe('the pyramid of a waveform', () => {
     );
   });
 
+  it('misses neither end of a stretch: on a ramp both extremes are there', () => {
+    const length = 5000;
+    const ramp = new Pyramid(
+      Int32Array.from({ length }, (_, i) => i),
+      1,
+      length,
+    );
+    fc.assert(
+      fc.property(fc.nat({ max: length - 1 }), fc.nat({ max: length - 1 }), (a, b) => {
+        const [from, last] = [Math.min(a, b), Math.max(a, b)];
+        expect(ramp.extremes(from, last + 1)).toEqual({ low: from, high: last });
+      }),
+      { seed: 17, numRuns: 500 },
+    );
+  });
+
   it('of blocks takes every block that a stretch touches', () => {
     const pairs = Int32Array.of(-1, 1, -2, 5, -9, 3);
     const pyramid = new Pyramid(pairs, 4, 12);
@@ -77,6 +93,29 @@ describe('figures for people', () => {
     expect(decibel(10, 20)).toBe(20);
     expect(decibel(10, 10)).toBe(10);
     expect(decibel(0, 20)).toBe(-300);
+    expect([stepped(2.9965, 0.0005), stepped(1000, 200), stepped(2.5, 2.5)]).toEqual([
+      '2.9965',
+      '1000',
+      '2.5',
+    ]);
+  });
+
+  it('name a line between the bins, as a lone sine gives it', () => {
+    // A sine of amplitude 3 at 50.3 Hz, lines 1 Hz apart, and the same padded to bins of 0.8 Hz.
+    for (const rateHz of [1024, 1000]) {
+      const x = Float64Array.from(
+        { length: 4000 },
+        (_, i) => 3 * Math.sin((2 * Math.PI * 50.3 * i) / rateHz),
+      );
+      const spectrum = averagedSpectrum(x, { rateHz, blockSamples: rateHz, window: 'hann' });
+      const lines = lineAmplitudes(spectrum);
+      const bin = lines.indexOf(Math.max(...lines));
+      const step = spectrum.binHz / spectrum.lineHz;
+      const { offset, height } = betweenBins(lines[bin - 1]!, lines[bin]!, lines[bin + 1]!, step);
+      expect((bin + offset) * spectrum.binHz).toBeCloseTo(50.3, 2);
+      expect(height).toBeCloseTo(3, 2);
+    }
+    expect(betweenBins(2, 1, 0, 1)).toEqual({ offset: 0, height: 1 });
   });
 });
 

@@ -1,5 +1,7 @@
 /** What all charts share: their frame, axes, buttons that zoom, a size that follows the page. */
 
+import { stepped } from './figures.js';
+
 /** @typedef {import('./types.d.ts').ChartHost} ChartHost */
 /** @typedef {import('./types.d.ts').ZoomSettings} ZoomSettings */
 /** @typedef {import('./types.d.ts').Plot} Plot */
@@ -73,7 +75,7 @@ export function toggle(host, label, title, down, action) {
 }
 
 /**
- * @param {string} label
+ * @param {import('uplot').Axis.Label} label
  * @param {Partial<import('uplot').Axis>} more
  * @returns {import('uplot').Axis}
  */
@@ -88,6 +90,7 @@ export function axis(label, more = {}) {
     stroke: soft,
     grid: { stroke: grid, width: 1 },
     ticks: { stroke: grid, width: 1, size: 5 },
+    values: (_, ticks, __, ___, step) => ticks.map((tick) => stepped(tick, step)),
     ...more,
   };
 }

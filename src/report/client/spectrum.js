@@ -2,7 +2,7 @@
 
 import { axis, button, follow, frameOf, onClick, say, sizeOf, toggle, trace, zoomTools } from './chart.js';
 import { floatsOf } from './decode.js';
-import { decibel, placed, significant } from './figures.js';
+import { betweenBins, decibel, placed, significant } from './figures.js';
 import { drawMarks, familiesOf, lookOf, nearestMark } from './marks.js';
 
 /** How far the cursor reaches for the highest line, in CSS pixels. */
@@ -50,13 +50,7 @@ export function spectrumChart(figure, data, { unit, factor, on, shaftHz }) {
             isDecibel ? [(most ?? 0) - spanDb, (most ?? 0) + 8] : [0, 1.25 * (most || 1)],
         },
       },
-      axes: [
-        axis('Hz'),
-        axis(unit, {
-          size: 66,
-          values: (_, ticks) => ticks.map((tick) => String(Number(tick.toPrecision(6)))),
-        }),
-      ],
+      axes: [axis('Hz'), axis(() => (isDecibel ? `dB re 1 ${unit}` : unit), { size: 66 })],
       series: [{}, { stroke: trace, width: 1.2, points: { show: false } }],
       hooks: {
         drawAxes: [(u) => drawMarks(u, marks, families)],
@@ -81,12 +75,23 @@ export function spectrumChart(figure, data, { unit, factor, on, shaftHz }) {
   /** @param {number} left @returns {number} */
   function highestNear(left) {
     const at = (/** @type {number} */ pixels) =>
-      Math.min(linear.length - 1, Math.max(1, Math.round(plot.posToVal(pixels, 'x') / stepHz)));
+      Math.min(linear.length - 2, Math.max(1, Math.round(plot.posToVal(pixels, 'x') / stepHz)));
     let best = at(left);
     for (let k = at(left - snapPixels); k <= at(left + snapPixels); k++) {
       if (/** @type {number} */ (linear[k]) > /** @type {number} */ (linear[best])) best = k;
     }
     return best;
+  }
+
+  /**
+   * The line about a bin; the bin itself where none stands there.
+   * @param {number} k
+   */
+  function lineAt(k) {
+    const [left = 0, centre = 0, right = 0] = linear.subarray(k - 1, k + 2);
+    if (data.window !== 'hann') return { hz: k * stepHz, value: centre };
+    const { offset, height } = betweenBins(left, centre, right, stepHz / data.lineHz);
+    return { hz: (k + offset) * stepHz, value: height };
   }
 
   /** @param {number} at frequency, Hz @param {string} name @param {string} text */
@@ -111,12 +116,11 @@ export function spectrumChart(figure, data, { unit, factor, on, shaftHz }) {
       say(host.readout, []);
       return;
     }
-    const at = bin * stepHz;
+    const { hz: at, value } = lineAt(bin);
     if (withHarmonics) {
       for (let k = 2; k <= mostHarmonics && k * at <= lastHz; k++) upright(k * at, 'pin harmonic', `${k}`);
     }
     upright(at, 'pin', '');
-    const value = /** @type {number} */ (linear[bin]);
     const { min = 0, max = 0 } = plot.scales.x ?? {};
     if (at >= min && at <= max) {
       const dot = document.createElement('div');
@@ -125,7 +129,7 @@ export function spectrumChart(figure, data, { unit, factor, on, shaftHz }) {
       dot.style.top = `${plot.valToPos(isDecibel ? decibel(value, factor) : value, 'y')}px`;
       layer.append(dot);
     }
-    const parts = [`${placed(at, stepHz)} Hz`];
+    const parts = [`${placed(at, stepHz / 10)} Hz`];
     if (shaftHz !== null) parts.push(`order ${(at / shaftHz).toFixed(3)}`);
     parts.push(`${significant(value)} ${unit}`, `${decibel(value, factor).toFixed(1)} dB`);
     const near = nearestMark(marks, at, 1.5 * stepHz);
@@ -148,12 +152,12 @@ export function spectrumChart(figure, data, { unit, factor, on, shaftHz }) {
     if (step === 0) return;
     event.preventDefault();
     const from = bin ?? Math.round((shaftHz ?? lastHz / 2) / stepHz);
-    pin(Math.min(linear.length - 1, Math.max(1, from + step * (event.shiftKey ? 10 : 1))));
+    pin(Math.min(linear.length - 2, Math.max(1, from + step * (event.shiftKey ? 10 : 1))));
   });
   zoomTools(host, plot, {
     whole: [0, lastHz],
     least: 20 * stepHz,
-    centre: () => (isPinned && bin !== null ? bin * stepHz : null),
+    centre: () => (isPinned && bin !== null ? lineAt(bin).hz : null),
   });
   toggle(host, 'dB', 'Decibels instead of a linear scale', false, (down) => {
     isDecibel = down;

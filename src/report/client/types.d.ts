@@ -13,6 +13,9 @@ export interface MarkData {
 
 export interface SpectrumData {
   stepHz: number;
+  /** 1/T. */
+  lineHz: number;
+  window: 'rectangular' | 'hann' | 'flat-top';
   /** Base64 of little-endian 32-bit floats. */
   values: string;
   marks: MarkData[];
