@@ -1,15 +1,16 @@
 /** Shelves that end by themselves, and learned values from refusal to alarm, with the agent as a process. */
-import { afterEach, describe, expect, it } from 'vitest';
+import { describe, it } from 'vitest';
 import { forebay } from '../support/agent.ts';
 import { PumpRig } from '../support/pump-rig.ts';
 import { haveSocat } from '../support/socat.ts';
 
 describe.runIf(haveSocat)('with time', () => {
-  let rig: PumpRig;
-  afterEach(() => rig.dispose());
-
-  it('an alarm comes back from the shelf by itself, and asks to be noticed where its condition holds', async () => {
-    rig = await PumpRig.start();
+  it.concurrent('an alarm comes back from the shelf by itself, and asks to be noticed where its condition holds', async ({
+    expect,
+    onTestFinished,
+  }) => {
+    const rig = await PumpRig.start();
+    onTestFinished(() => rig.dispose());
     rig.mmS[1] = 5;
     const first = await rig.until('pump-1/alarm/h.zone', { state: 'unacknowledged' });
     for (const pump of [1, 3]) {
@@ -26,8 +27,12 @@ describe.runIf(haveSocat)('with time', () => {
     expect(rig.invalid()).toEqual([]);
   }, 150_000);
 
-  it('a baseline is refused in zone C and from too little, learned by the command, kept over kill -9, and judged by', async () => {
-    rig = await PumpRig.start();
+  it.concurrent('a baseline is refused in zone C and from too little, learned by the command, kept over kill -9, and judged by', async ({
+    expect,
+    onTestFinished,
+  }) => {
+    const rig = await PumpRig.start();
+    onTestFinished(() => rig.dispose());
     const machine = 'pump-1';
     rig.mmS[1] = 5;
     await rig.until('pump-1/state', { zone: 'C' }, 90);

@@ -1,16 +1,17 @@
 /** Alarms of the real agent through power cuts and pulled cables, as a subscriber sees them. */
-import { afterEach, describe, expect, it } from 'vitest';
+import { describe, it } from 'vitest';
 import { PumpRig } from '../support/pump-rig.ts';
 import { haveSocat } from '../support/socat.ts';
 
 const zoneOf = (pump: number) => `pump-${pump}/alarm/h.zone`;
 
 describe.runIf(haveSocat)('the life of an alarm', () => {
-  let rig: PumpRig;
-  afterEach(() => rig.dispose());
-
-  it('survives kill -9 in each state: nothing told twice, nothing forgotten, what cleared meanwhile is told', async () => {
-    rig = await PumpRig.start();
+  it.concurrent('survives kill -9 in each state: nothing told twice, nothing forgotten, what cleared meanwhile is told', async ({
+    expect,
+    onTestFinished,
+  }) => {
+    const rig = await PumpRig.start();
+    onTestFinished(() => rig.dispose());
     const alarmsHeard = () => rig.heard.filter(({ topic }) => topic.includes('/alarm/'));
     const by = 'ann';
     await rig.until('pump-6/state', { severity: 0 });
@@ -78,8 +79,12 @@ describe.runIf(haveSocat)('the life of an alarm', () => {
     expect(rig.invalid()).toEqual([]);
   }, 240_000);
 
-  it('does not end because the sensor is unplugged, and ends once it is seen to have cleared', async () => {
-    rig = await PumpRig.start();
+  it.concurrent('does not end because the sensor is unplugged, and ends once it is seen to have cleared', async ({
+    expect,
+    onTestFinished,
+  }) => {
+    const rig = await PumpRig.start();
+    onTestFinished(() => rig.dispose());
     await rig.until('pump-1/state', { severity: 0 });
     rig.mmS[1] = 5;
     await rig.until(zoneOf(1), { state: 'unacknowledged' });
