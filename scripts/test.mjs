@@ -18,9 +18,18 @@ const packages = {
   'mosquitto-clients': () => onPath('mosquitto_sub'),
   openssl: () => onPath('openssl'),
   perl: () => onPath('perl'),
+  systemd: () => onPath('systemd-notify'),
+  libfaketime: () => faketimeThere(),
   'python3-scipy': () =>
     spawnSync('/usr/bin/python3', ['-c', 'import scipy'], { stdio: 'ignore' }).status === 0,
 };
+
+function faketimeThere() {
+  const folders = ['x86_64', 'aarch64', 'arm'].map(
+    (name) => `/usr/lib/${name}-linux-gnu${name === 'arm' ? 'eabihf' : ''}`,
+  );
+  return folders.some((folder) => existsSync(`${folder}/faketime/libfaketime.so.1`));
+}
 
 function onPath(tool) {
   const found = spawnSync('sh', ['-c', `command -v ${tool}`], { stdio: 'ignore' }).status === 0;

@@ -4,13 +4,14 @@
  * prints the table of the README.
  */
 import { spawnSync } from 'node:child_process';
-import { closeSync, existsSync, mkdirSync, openSync, truncateSync, writeFileSync, writeSync } from 'node:fs';
+import { closeSync, mkdirSync, openSync, truncateSync, writeFileSync, writeSync } from 'node:fs';
 import { join } from 'node:path';
 import { until } from './broker-rig.ts';
 import { type FaultStation, pointKeys, stationText } from './fault-station.ts';
 import { sleep } from './proxy.ts';
 import { pacedNode } from './replug.ts';
 import { NodeFrames } from './sender.ts';
+import { faketimeLibrary } from './tools.ts';
 
 type Start = NonNullable<Parameters<typeof FaultStation.start>[0]>;
 
@@ -30,9 +31,7 @@ export interface Fault {
   readonly untested?: () => string | null;
 }
 
-const faketime = ['/usr/lib/x86_64-linux-gnu', '/usr/lib/aarch64-linux-gnu', '/usr/lib/arm-linux-gnueabihf']
-  .map((folder) => `${folder}/faketime/libfaketime.so.1`)
-  .find(existsSync);
+const faketime = faketimeLibrary();
 
 const asRoot = process.getuid?.() === 0;
 const mayMount = () => {

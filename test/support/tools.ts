@@ -11,6 +11,13 @@ export function hasScipy(): boolean {
   return spawnSync('/usr/bin/python3', ['-c', 'import scipy']).status === 0;
 }
 
+/** The library that gives a process a wall clock of its own, or undefined. */
+export function faketimeLibrary(): string | undefined {
+  return ['/usr/lib/x86_64-linux-gnu', '/usr/lib/aarch64-linux-gnu', '/usr/lib/arm-linux-gnueabihf']
+    .map((folder) => `${folder}/faketime/libfaketime.so.1`)
+    .find(existsSync);
+}
+
 /** The folder of open recordings beside the checkout, or null. */
 export function recordingsFolder(): string | null {
   const folder = fileURLToPath(new URL('../../../shared/data', import.meta.url));
