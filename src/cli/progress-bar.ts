@@ -47,7 +47,7 @@ export class ProgressBar {
   }
 }
 
-export function progressText(bytes: number, all: number, bytesPerS: number | null): string {
+function progressText(bytes: number, all: number, bytesPerS: number | null): string {
   const share = all > 0 ? bytes / all : 1;
   const filled = Math.round(share * WIDTH);
   const bar = `[${'#'.repeat(filled)}${'.'.repeat(WIDTH - filled)}]`;

@@ -140,7 +140,7 @@ function channelsFor(
     );
   }
   const tachometers = new Map<string, number>();
-  const points: Omit<ReplayChannel, 'tachometer'>[] = [];
+  const points: Omit<ReplayChannel, 'tachometer' | 'toldShaftHz'>[] = [];
   names.forEach((name, channel) => {
     if (name === '-') return;
     const place = findPoint(station, name);
@@ -152,7 +152,21 @@ function channelsFor(
   });
   if (points.length === 0) throw usage('--points names no point to measure');
   points.sort((a, b) => order(station, a.point.key) - order(station, b.point.key));
-  return points.map((entry) => ({ ...entry, tachometer: tachometerOf(entry, tachometers) }));
+  return points.map((entry) => {
+    const tachometer = tachometerOf(entry, tachometers);
+    return { ...entry, tachometer, toldShaftHz: tachometer ? null : toldShaftHz(entry, recording) };
+  });
+}
+
+/** What came from outside when the snapshot was taken: over MQTT, or from a tachometer at another node. */
+function toldShaftHz(
+  { machine, point }: Pick<ReplayChannel, 'machine' | 'point'>,
+  { tags }: Recording,
+): number | null {
+  const { shaft } = machine;
+  // The speed is remembered of the machine; behind a gear it would be another's.
+  if ((shaft?.kind !== 'mqtt' && shaft?.kind !== 'tachometer') || point.ratio !== 1) return null;
+  return tags?.shafts.find((told) => told.machine === machine.id)?.hz ?? null;
 }
 
 /** As the file says, unless told otherwise; as the sensor's range, where the file says nothing. */

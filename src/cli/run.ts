@@ -25,14 +25,21 @@ export async function runCommand({ config, version }: { config: string; version:
     process.once('SIGTERM', resolve);
     process.once('SIGINT', resolve);
   });
+  const starting = agent.start();
+  // From the start on: the signal would end a process that has no use for it.
+  process.on('SIGHUP', () =>
+    starting.then(
+      () => agent.reload(() => loadStation(config)),
+      () => undefined,
+    ),
+  );
   try {
-    await agent.start();
+    await starting;
   } catch (error) {
     // Its threads would keep the process for ever.
     await agent.stop();
     throw error;
   }
-  process.on('SIGHUP', () => void agent.reload(() => loadStation(config)));
   if (agent.embeddedPort !== null) log.info('embedded broker on loopback', { port: agent.embeddedPort });
   await stopped;
   await agent.stop();

@@ -24,6 +24,8 @@ export interface ReplayChannel {
   countRange: readonly [number, number] | null;
   /** Channel of the recording that carries the machine's tachometer. */
   tachometer: { channel: number; pulsesPerRev: number } | null;
+  /** Speed that the machine was told to have from outside, as a snapshot remembers it. */
+  toldShaftHz: number | null;
 }
 
 export interface ReplayOptions {
@@ -139,7 +141,7 @@ function measure(
     rate: options.rate,
     tachometer:
       pulses && entry.tachometer ? { counts: pulses, pulsesPerRev: entry.tachometer.pulsesPerRev } : null,
-    toldShaftHz: null,
+    toldShaftHz: entry.toldShaftHz,
     toldRunning: null,
     missingSamples,
     distrust: [],

@@ -23,7 +23,7 @@ export interface SnapshotAskSources {
 }
 
 /** Small enough that an alarm behind one waits less than two seconds at 5 kB/s. */
-export const PART_BYTES = 8192;
+const PART_BYTES = 8192;
 /** What a broker of MQTT 3.1.1 is sent for one ask: it cannot say that nobody listens. */
 const PARTS_UNHEARD = 64;
 const USUAL_SECONDS = 10;

@@ -9,7 +9,7 @@ import { writeSnapshot } from '../../src/snapshot/flac-write.ts';
 import { openRecording } from '../../src/snapshot/recording.ts';
 import { uniform } from '../support/pump-signal.ts';
 import { someTags } from '../support/tagged.ts';
-import { hasSoundfile, hasTool } from '../support/tools.ts';
+import { hasPython, hasTool } from '../support/tools.ts';
 import { wavBytes } from '../support/wav.ts';
 
 const folder = mkdtempSync(join(tmpdir(), 'forebay-export-'));
@@ -67,6 +67,21 @@ describe('export', () => {
       full_scale: 2048,
     });
     expect(said).toContain('7 samples never came');
+  });
+
+  it('as WAV with the plain head where that is enough', async () => {
+    const from = join(folder, 'mono.flac');
+    const [channel] = someTags.channels;
+    const mono = Int32Array.of(-32_768, 32_767, 0, 5, -1);
+    await writeSnapshot({
+      path: from,
+      counts: [mono],
+      tags: { ...someTags, gaps: [], channels: [channel!] },
+    });
+    const file = join(folder, 'mono.wav');
+    expect(await exportCommand({ from, to: 'wav', file, force: false, err })).toBe(0);
+    // wavBytes of the tests is written from the layout of a PCM WAV file alone.
+    expect(readFileSync(file)).toEqual(wavBytes([mono], 40_958, 16));
   });
 
   it('as CSV names the units, and its values divide to the counts; what never came is empty', async () => {
@@ -185,7 +200,7 @@ describe.runIf(hasTool('gfortran'))('the universal file and gfortran', () => {
   });
 });
 
-describe.runIf(hasSoundfile())('the WAV file and libsndfile', () => {
+describe.runIf(hasPython('soundfile'))('the WAV file and libsndfile', () => {
   it('is read to the count', async () => {
     const program =
       'import sys, soundfile\n' +

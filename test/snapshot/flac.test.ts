@@ -1,5 +1,6 @@
 /** FLAC against readers and writers that are not ours: `flac`, `metaflac` and libsndfile, where they are installed. */
 import { execFileSync, spawnSync } from 'node:child_process';
+import { createHash } from 'node:crypto';
 import { mkdtempSync, readFileSync, rmSync, writeFileSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
@@ -8,7 +9,7 @@ import { crc8, crc16 } from '../../src/snapshot/flac-bits.ts';
 import { bitsFor, encodeFlac, headerRateHz } from '../../src/snapshot/flac-encode.ts';
 import { FlacFile } from '../../src/snapshot/flac-file.ts';
 import { uniform } from '../support/pump-signal.ts';
-import { hasSoundfile, hasTool } from '../support/tools.ts';
+import { hasPython, hasTool } from '../support/tools.ts';
 import { wavBytes } from '../support/wav.ts';
 
 const folder = mkdtempSync(join(tmpdir(), 'forebay-flac-'));
@@ -123,6 +124,9 @@ describe.runIf(hasTool('flac'))('FLAC and the flac command', () => {
       const raw = execFileSync('flac', ['--silent', '--decode', '--stdout', ...order, path], {
         maxBuffer: 1e8,
       });
+      // RFC 9639, 8.2: the MD5 of the samples, interleaved, little-endian, signed.
+      const md5 = execFileSync('metaflac', ['--show-md5sum', path], { encoding: 'utf8' }).trim();
+      expect(md5).toBe(createHash('md5').update(raw).digest('hex'));
       const width = bits / 8;
       const decoded = counts.map((channel, c) =>
         channel.map((_, i) => raw.readIntLE((i * channels + c) * width, width)),
@@ -169,7 +173,7 @@ describe.runIf(hasTool('flac'))('FLAC and the flac command', () => {
   });
 });
 
-describe.runIf(hasSoundfile())('FLAC and libsndfile', () => {
+describe.runIf(hasPython('soundfile'))('FLAC and libsndfile', () => {
   it.each([16, 24] as const)('ours in %i bit decodes to the counts', async (bits) => {
     const counts = hardCounts(3, 8000, bits, 5);
     const path = await written(`snd-${bits}.flac`, counts, bits);

@@ -7,8 +7,9 @@ export function hasTool(command: string): boolean {
   return spawnSync('sh', ['-c', `command -v ${command}`]).status === 0 || existsSync(`/usr/sbin/${command}`);
 }
 
-export function hasScipy(): boolean {
-  return spawnSync('/usr/bin/python3', ['-c', 'import scipy']).status === 0;
+/** Whether Debian's python3 has a module. */
+export function hasPython(module: string): boolean {
+  return spawnSync('/usr/bin/python3', ['-c', `import ${module}`]).status === 0;
 }
 
 /** The library that gives a process a wall clock of its own, or undefined. */
@@ -22,8 +23,4 @@ export function faketimeLibrary(): string | undefined {
 export function recordingsFolder(): string | null {
   const folder = fileURLToPath(new URL('../../../shared/data', import.meta.url));
   return existsSync(folder) ? folder : null;
-}
-
-export function hasSoundfile(): boolean {
-  return spawnSync('/usr/bin/python3', ['-c', 'import soundfile']).status === 0;
 }
