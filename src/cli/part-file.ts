@@ -43,7 +43,8 @@ export class PartFile {
     this.whole = whole;
     const saved = savedOf(path);
     const same = saved !== null && saved.sha256 === whole.sha256 && saved.partBytes === whole.partBytes;
-    this.#have = new Set(same ? saved.have : []);
+    const possible = (part: number) => Number.isInteger(part) && part >= 0 && part < whole.parts;
+    this.#have = new Set(same ? saved.have.filter(possible) : []);
     try {
       this.#fd = openSync(`${path}.part`, same ? 'r+' : 'w+');
     } catch (error) {

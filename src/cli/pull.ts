@@ -332,7 +332,8 @@ function wholeOf(answer: Answer, snapshot: string): WholeFile {
   const numbers = [bytes, partBytes, parts].every(
     (value) => Number.isSafeInteger(value) && Number(value) > 0,
   );
-  if (!numbers || typeof sha256 !== 'string')
+  const fit = numbers && Number(parts) === Math.ceil(Number(bytes) / Number(partBytes));
+  if (!fit || typeof sha256 !== 'string')
     throw new ForebayError('pull.refused', 'the station answers with something else than a file');
   return { snapshot, bytes: Number(bytes), sha256, partBytes: Number(partBytes), parts: Number(parts) };
 }
