@@ -44,7 +44,7 @@ const HEALTH_EVERY_S = 6 * 3600;
 const CLOCK_CHECK_S = 600;
 const RISES_EVERY_S = 3600;
 /** What each part of a stop may take; together less than 5 s. What is not sent by then stays in the store. */
-const STOP_MS = { links: 800, judging: 800, snapshots: 800, uplink: 2000, store: 800 };
+const STOP_MS = { links: 600, judging: 700, snapshots: 600, uplink: 1800, store: 700 };
 
 export interface AgentOptions {
   version: string;
@@ -408,6 +408,7 @@ export class Agent {
           alarm_inputs_dropped: parts.judge.dropped,
           told_unreadable: this.#told.unreadable,
         },
+        snapshots: parts.keeper.counters(),
         eventLoopP99Ms: this.#vitals.loopP99Ms(),
         directory: this.#station.storage.directory,
         cpuPct: this.#vitals.cpuPct(),
