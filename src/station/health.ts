@@ -21,6 +21,8 @@ export interface HealthSources {
     alarm_inputs_dropped: number;
     told_unreadable: number;
   };
+  /** Kept, in the making, lost, given up for room; bytes. */
+  snapshots: Readonly<Record<string, number>>;
   /** 99th percentile of the delay of the event loop since the last report, in milliseconds. */
   eventLoopP99Ms: number | null;
   directory: string;
@@ -33,6 +35,7 @@ export function healthBody(sources: HealthSources): Record<string, unknown> {
     t: sources.t,
     links: Object.fromEntries(Object.entries(sources.links).map(([id, link]) => [id, linkBody(link)])),
     measuring: sources.measuring,
+    snapshots: sources.snapshots,
     outbox: {
       rows: store.outbox.rows,
       bytes: store.outbox.bytes,
