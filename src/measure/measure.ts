@@ -14,7 +14,7 @@ import type { SampleRecord } from './record.ts';
 import { foundShaft, givenShaft, type ShaftFigures } from './shaft.ts';
 import { tachometerSpeed } from './tachometer.ts';
 import { NO_TONES, toneFigures } from './tones.ts';
-import { gPerCount, invalidities } from './validity.ts';
+import { gPerCount, judgeSamples } from './validity.ts';
 import { displacementPeakToPeak, displacementRms, type Figure, velocityRms } from './velocity.ts';
 
 /** A rate less sure than this moves lines by more than the slip of a bearing lets pass. */
@@ -28,7 +28,7 @@ const RATE_UNCERTAIN_PPM = 5000;
  * single figures, and quality `uncertain`, where something else is missing.
  */
 export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
-  const invalid = invalidities(record, plan.point.sensor.rangeG);
+  const { invalid, overRange } = judgeSamples(record, plan.point.sensor.rangeG);
   if (invalid.length > 0) return badReading(plan, record, invalid);
 
   const rateHz = record.rate.hz;
@@ -38,12 +38,14 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
     return badReading(plan, record, [`record too short: ${acceleration.length} samples give no spectrum`]);
   }
   const why: string[] = [...plan.caveats];
+  if (overRange !== null) why.push(overRange);
   if (record.rate.ppm !== null && record.rate.ppm > RATE_UNCERTAIN_PPM) {
     why.push(`rate uncertain: ${rateHz.toFixed(1)} Hz within ${(record.rate.ppm / 10_000).toFixed(1)} %`);
   }
   if (decimated.short !== null) why.push(decimated.short);
   const given = givenShaft(plan, record);
   const { rms, peak, crest, kurtosis } = statistics(acceleration);
+  const clipped = overRange !== null;
   const drift = biasDrift(decimated, overallBandHz(speedHz(plan, given), decimated.fmaxHz)[0], rms);
   if (drift !== null) {
     why.push(
@@ -74,8 +76,8 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
     bands[id] = unitHz === null ? null : velocity([edges[0] * unitHz, edges[1] * unitHz], `band ${id}`);
   }
   const p2p = overall === null ? null : take(displacementPeakToPeak(decimated, bandHz));
-  const { ratio } = plan.point;
-  const otherHz = shaft.hz === null || ratio === 1 ? [] : [shaft.hz / ratio];
+  const { hz: shaftHz } = shaft;
+  const otherHz = shaftHz === null ? [] : plan.otherRatios.map((ratio) => shaftHz * ratio);
   const envelope = measureEnvelope(plan, acceleration, rateHz, shaft.hz, otherHz);
   // Without a speed it says so too: once is enough, and of a machine at rest it is no news.
   const known = running === false || shaft.why.length > 0;
@@ -112,9 +114,9 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
       unit: 'g',
       band_hz: [...plan.accelerationHz],
       rms,
-      peak,
-      crest,
-      kurtosis,
+      peak: clipped ? null : peak,
+      crest: clipped ? null : crest,
+      kurtosis: clipped ? null : kurtosis,
       mean_hz: meanFrequency(acceleration, rateHz),
     },
     envelope: silent ? null : envelope.reading,

@@ -79,6 +79,8 @@ export interface PointPlan {
   readonly accelerationHz: readonly [number, number];
   readonly envelope: EnvelopePlan | null;
   readonly shaft: PlannedShaft | null;
+  /** Speeds of the machine's other shafts, over that of this point's. */
+  readonly otherRatios: readonly number[];
   readonly bearings: readonly PlannedBearing[];
   /** What the settings ask for and cannot have, for whoever writes them. */
   readonly warnings: readonly string[];
@@ -153,6 +155,7 @@ export function planPoint(point: Point, machine: Machine, rateHz: number, mainsH
     accelerationHz: accelerationBandHz(point, rateHz),
     envelope,
     shaft,
+    otherRatios: otherRatios(point, machine),
     bearings,
   };
   noteFrequencies(plan, notes);
@@ -163,6 +166,12 @@ export function planPoint(point: Point, machine: Machine, rateHz: number, mainsH
 function vanesOn(point: Point, machine: Machine): number | null {
   const direct = machine.points.every(({ ratio }) => ratio === 1);
   return direct || point.part === 'pump' || point.part === 'fan' ? machine.vanes : null;
+}
+
+function otherRatios(point: Point, machine: Machine): number[] {
+  const ratios = new Set([1, ...machine.points.map(({ ratio }) => ratio)]);
+  ratios.delete(point.ratio);
+  return [...ratios].map((ratio) => ratio / point.ratio);
 }
 
 function plannedShaft(machine: Machine, ratio: number): PlannedShaft | null {

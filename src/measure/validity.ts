@@ -1,4 +1,4 @@
-/** Whether the counts of a record can be measured at all. Any reason here makes every figure null. */
+/** Whether the counts of a record can be measured at all, and how far. */
 
 import { GRAVITY_M_S2 } from '../signal/integrate.ts';
 import { clippedSamples } from './clipping.ts';
@@ -8,34 +8,60 @@ import type { SampleRecord } from './record.ts';
 const FLAT_SHARE = 0.1;
 
 /**
- * The reasons, in words, why nothing in the record can be trusted; none where it can be measured.
- *
- * Over-range makes every figure null, a single sample as much as many: a clipped impact is a step, and a step has all
- * frequencies, so neither peak nor velocity nor envelope is what the machine did.
+ * Of a record at most this share may be over range for the rest to be told, as uncertain: a few tops of sharp impacts,
+ * which change neither a velocity below 1000 Hz nor the rhythm in an envelope by much. Beyond it a clipped signal is a
+ * row of steps, and a step has all frequencies. Common practice, no source.
+ */
+const FEW_SHARE = 0.001;
+
+export interface Validity {
+  /** The reasons, in words, why nothing in the record can be trusted; none where it can be measured. */
+  readonly invalid: string[];
+  /** A few samples over range: no peak, crest or kurtosis, and all else uncertain; null: none. */
+  readonly overRange: string | null;
+}
+
+/**
+ * Judges the counts of a record.
  *
  * @param rangeG what the sensor can bear; null: unknown.
  */
-export function invalidities(record: SampleRecord, rangeG: number | null): string[] {
-  const { counts, missingSamples, countRange } = record;
-  const why = [...record.distrust];
-  if (missingSamples > 0) why.push(`gap: ${missingSamples} samples missing`);
-  if (counts.length === 0) return [...why, 'record too short: it is empty'];
+export function judgeSamples(record: SampleRecord, rangeG: number | null): Validity {
+  const { counts, missingSamples } = record;
+  const invalid = [...record.distrust];
+  if (missingSamples > 0) invalid.push(`gap: ${missingSamples} samples missing`);
+  if (counts.length === 0) {
+    return { invalid: [...invalid, 'record too short: it is empty'], overRange: null };
+  }
   const flat = longestConstant(counts);
-  if (flat === counts.length) return [...why, 'flat line: the counts never change'];
+  if (flat === counts.length) {
+    return { invalid: [...invalid, 'flat line: the counts never change'], overRange: null };
+  }
   if (flat >= FLAT_SHARE * counts.length && flat > 2) {
-    why.push(`flat line: the counts stand still for ${flat} samples`);
+    invalid.push(`flat line: the counts stand still for ${flat} samples`);
   }
+  const over = overRange(record, rangeG);
+  const few = over !== null && over.samples <= FEW_SHARE * counts.length;
+  if (over !== null && !few) invalid.push(over.text);
+  return { invalid, overRange: few ? over.text : null };
+}
+
+function overRange(record: SampleRecord, rangeG: number | null): { samples: number; text: string } | null {
+  const { counts, countRange } = record;
+  const found: { samples: number; where: string }[] = [];
   const atLimit = countRange === null ? 0 : samplesAtLimit(counts, countRange);
-  if (atLimit > 0) why.push(`over-range: ${atLimit} samples at the limit of the converter`);
-  else {
-    const clipped = clippedSamples(counts);
-    if (clipped > 0) why.push(`over-range: ${clipped} samples clipped before the converter`);
-  }
+  found.push({ samples: atLimit, where: 'at the limit of the converter' });
   if (rangeG !== null) {
-    const beyond = samplesAtLimit(counts, [-rangeG / gPerCount(record), rangeG / gPerCount(record)]);
-    if (beyond > 0) why.push(`over-range: ${beyond} samples beyond the sensor's ${rangeG} g`);
+    const limit = rangeG / gPerCount(record);
+    found.push({
+      samples: samplesAtLimit(counts, [-limit, limit]),
+      where: `beyond the sensor's ${rangeG} g`,
+    });
   }
-  return why;
+  if (atLimit === 0) found.push({ samples: clippedSamples(counts), where: 'clipped before the converter' });
+  const worst = found.sort((a, b) => b.samples - a.samples)[0];
+  if (!worst || worst.samples === 0) return null;
+  return { samples: worst.samples, text: `over-range: ${worst.samples} samples ${worst.where}` };
 }
 
 /** g per count of a record, whatever its unit. */

@@ -99,18 +99,18 @@ if (!existsSync(new URL('reference.json', folder))) {
 
   it.each(recordings)('$recording.name', ({ recording, samples }) => {
     const reading = read(recording, samples);
-    if (reading.quality === 'bad') {
-      // Four samples at each of two equal rails.
-      expect(recording.name).toMatch(/^200_/);
-      expect(reading.why.join()).toMatch(/over-range: 8 samples clipped/);
-      return;
-    }
     const { time } = reference[`${recording.set}/${recording.name}`]!;
     const within = (value: number | null, wanted: number) => Math.abs(value! / wanted - 1);
     expect(within(reading.acceleration.rms, time.acc_rms_g)).toBeLessThan(1e-4);
-    expect(within(reading.acceleration.peak, time.acc_peak_g)).toBeLessThan(1e-4);
-    expect(within(reading.acceleration.crest, time.crest_factor)).toBeLessThan(1e-4);
-    expect(within(reading.acceleration.kurtosis, time.kurtosis)).toBeLessThan(1e-4);
+    if (recording.name.startsWith('200_')) {
+      // Four samples at each of two equal rails: the tops are cut off, so nothing is said of them.
+      expect(reading.why.join()).toMatch(/over-range: 8 samples clipped/);
+      expect(reading.acceleration).toMatchObject({ peak: null, crest: null, kurtosis: null });
+    } else {
+      expect(within(reading.acceleration.peak, time.acc_peak_g)).toBeLessThan(1e-4);
+      expect(within(reading.acceleration.crest, time.crest_factor)).toBeLessThan(1e-4);
+      expect(within(reading.acceleration.kurtosis, time.kurtosis)).toBeLessThan(1e-4);
+    }
     expect(within(reading.velocity.overall, time.vel_rms_mm_s)).toBeLessThan(
       velocityTolerance(recording, reading),
     );

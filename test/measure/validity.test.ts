@@ -43,21 +43,21 @@ describe('a record that cannot be trusted has no figures at all', () => {
     expect(reading.why).toEqual(['foreign node: 9 instead of 7']);
   });
 
-  it.each([32767, -32768])('over-range: a single count of %d', (count) => {
+  it.each([32767, -32768])('over-range: more than a thousandth of the counts at %d', (count) => {
     const record = healthy();
-    record.counts[1234] = count;
+    record.counts.fill(count, 1000, 1411);
     const reading = measureRecord(plan, record);
     expectNothing(reading);
-    expect(reading.why).toEqual(['over-range: 1 samples at the limit of the converter']);
+    expect(reading.why).toEqual(['over-range: 411 samples at the limit of the converter']);
   });
 
   it('over-range of the sensor, before the converter is at its own', () => {
     const sensor = { usableHz: null, rangeG: 2, mount: null };
     const record = healthy();
-    record.counts[99] = 2.1 / G_PER_COUNT;
+    record.counts.fill(2.1 / G_PER_COUNT, 1000, 1500);
     const reading = measureRecord(planOf({ point: { sensor } }), record);
     expectNothing(reading);
-    expect(reading.why).toEqual(["over-range: 1 samples beyond the sensor's 2 g"]);
+    expect(reading.why.join()).toMatch(/over-range: 500 samples beyond the sensor's 2 g/);
   });
 
   it('clipping before the converter', () => {
@@ -148,5 +148,28 @@ describe('caveats of the plan', () => {
     const reading = measureRecord(planOf({ measure: { bands } }), healthy());
     expect(reading.velocity.high).toBeNull();
     expect(reading.why).toEqual(['band high: 900 to 1200 Hz reaches above Fmax, 1000 Hz']);
+  });
+});
+
+describe('a few counts over range', () => {
+  it.each([32767, -32768])('of %d leave the rest uncertain, and no peak, crest or kurtosis', (count) => {
+    const whole = measureRecord(plan, healthy());
+    const record = healthy();
+    record.counts[1234] = count;
+    const reading = measureRecord(plan, record);
+    expect(reading.quality).toBe('uncertain');
+    expect(reading.why).toContain('over-range: 1 samples at the limit of the converter');
+    expect(reading.acceleration).toMatchObject({ peak: null, crest: null, kurtosis: null });
+    expect(reading.velocity.overall).toBeCloseTo(whole.velocity.overall ?? Number.NaN, 1);
+    expect(reading.envelope?.mean).toBeGreaterThan(0);
+  });
+
+  it('count also where the sensor ends before the converter', () => {
+    const sensor = { usableHz: null, rangeG: 2, mount: null };
+    const record = healthy();
+    record.counts[99] = 2.1 / G_PER_COUNT;
+    const reading = measureRecord(planOf({ point: { sensor } }), record);
+    expect(reading.quality).toBe('uncertain');
+    expect(reading.why).toContain("over-range: 1 samples beyond the sensor's 2 g");
   });
 });
