@@ -72,6 +72,7 @@ class Pull {
   #early: { part: number; payload: Buffer }[] = [];
   #hear: (topic: string, payload: Buffer) => void = () => undefined;
   #wake: () => void = () => undefined;
+  #onBack: () => void = () => undefined;
   #reconnected = false;
   #trouble: ForebayError | null = null;
 
@@ -88,6 +89,7 @@ class Pull {
         message: (topic, payload) => this.#message(topic, payload),
         back: () => {
           this.#reconnected = true;
+          this.#onBack();
           this.#wake();
         },
         lost: () => this.#say('the connection to the broker is lost; trying again'),
@@ -95,8 +97,9 @@ class Pull {
       await this.#seeStation();
       const snapshot = this.#options.snapshot ?? (await this.#takeOne());
       await this.#fetchAll(snapshot);
-      await this.#file?.finish();
+      const file = this.#file;
       this.#file = null;
+      await file?.finish();
       this.#bar.end();
       this.#say(`${this.#options.file}: ${snapshot}, verified`);
       return 0;
@@ -193,6 +196,7 @@ class Pull {
     const id = newId();
     this.#fetchId = id;
     this.#early = [];
+    this.#expected = [];
     const asked = parts?.slice(0, MAX_PARTS_ASKED);
     const body = {
       snapshot,
@@ -210,7 +214,7 @@ class Pull {
     this.#file ??= new PartFile(this.#options.file, whole);
     const list = asked ?? Array.from({ length: whole.parts }, (_, part) => part);
     this.#expected = list.slice(0, Number(answer.sending ?? list.length));
-    for (const { part, payload } of this.#early.splice(0)) this.#file.put(part, payload);
+    for (const { part, payload } of this.#early.splice(0)) this.#put(this.#file, part, payload);
   }
 
   /** Until what was asked for is there, or nothing comes for a while, or the connection is a new one. */
@@ -246,12 +250,10 @@ class Pull {
       };
       const ask = () => this.#link?.publish(this.#topics.ask(verb), { id, ...body });
       // A repeat of an id is ignored by the station, so asking again does nothing twice.
-      this.#wake = () => {
-        if (this.#reconnected) ask();
-      };
+      this.#onBack = ask;
       ask();
     });
-    this.#wake = () => undefined;
+    this.#onBack = () => undefined;
     if (answer === null)
       throw new ForebayError('pull.stalled', `station ${this.#options.site} does not answer ask/${verb}`);
     if (answer.ok !== true) throw refused(answer);
@@ -295,10 +297,13 @@ class Pull {
   #part(part: number, payload: Buffer): void {
     const file = this.#file;
     if (!file || this.#expected.length === 0) this.#early.push({ part, payload });
-    else if (file.put(part, payload)) {
-      this.#bar.show(file.bytesHere, file.whole.bytes);
-      this.#wake();
-    }
+    else this.#put(file, part, payload);
+  }
+
+  #put(file: PartFile, part: number, payload: Buffer): void {
+    if (!file.put(part, payload)) return;
+    this.#bar.show(file.bytesHere, file.whole.bytes);
+    this.#wake();
   }
 
   #cancel(): void {
