@@ -131,7 +131,7 @@ export interface Bearing {
   } | null;
 }
 
-export interface BandSettings {
+interface BandSettings {
   readonly id: string;
   readonly range: { readonly hz: readonly [number, number] } | { readonly orders: readonly [number, number] };
 }

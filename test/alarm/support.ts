@@ -38,7 +38,7 @@ export const sensorRule: Rule = {
 };
 
 /** ISO 10816-7 category I up to 200 kW: 2.5, 4.0, 6.6 mm/s. */
-export const pumpSeverity = { table: 'iso-10816-7', category: 'I', ratedKw: 45 } as const;
+const pumpSeverity = { table: 'iso-10816-7', category: 'I', ratedKw: 45 } as const;
 
 export function makePoint(machineId: string, id: string, link: string, changes: Partial<Point> = {}): Point {
   return {
