@@ -64,6 +64,10 @@ export class AgentProcess {
     const args = [...this.nodeArgs, command, 'run', '-c', this.stationFile];
     const child = spawn(process.execPath, args, { stdio: ['ignore', 'inherit', 'pipe'], env: this.env });
     this.#child = child;
+    // Left behind, it would go on opening devices whose names belong to somebody else by then.
+    const end = () => child.kill('SIGKILL');
+    process.once('exit', end);
+    child.once('exit', () => process.off('exit', end));
     const seen = this.#log.length;
     child.stderr?.on('data', (chunk) => this.#take(String(chunk)));
     while (!this.#log.slice(seen).some(({ msg }) => msg === 'running')) {

@@ -203,14 +203,24 @@ export class FaultStation {
     const text = stationText(link.port, options.station);
     const agent = new AgentProcess(text.replace('127.0.0.1:PORT', `127.0.0.1:${link.port}`));
     const station = new FaultStation(agent, broker, link, new Listener(broker.port));
-    await until(() => station.room.client.connected, 'the control room to connect');
-    options.prepare?.(station);
-    await station.#makeLedger();
-    for (const cable of station.cables) await cable.plug();
-    await agent.start();
-    for (const node of station.nodes) node.start();
-    await station.flows();
+    try {
+      await station.#begin(options.prepare);
+    } catch (error) {
+      // An agent left behind would go on opening its devices, whose numbers soon belong to another station.
+      await station.stop();
+      throw error;
+    }
     return station;
+  }
+
+  async #begin(prepare: ((station: FaultStation) => void) | undefined): Promise<void> {
+    await until(() => this.room.client.connected, 'the control room to connect');
+    prepare?.(this);
+    await this.#makeLedger();
+    for (const cable of this.cables) await cable.plug();
+    await this.agent.start();
+    for (const node of this.nodes) node.start();
+    await this.flows();
   }
 
   /** The database is made by the agent itself, which is stopped again for the ledger to be added. */

@@ -71,6 +71,9 @@ export class Mosquitto {
       said += String(chunk);
     });
     this.#child = child;
+    const end = () => child.kill('SIGKILL');
+    process.once('exit', end);
+    child.once('exit', () => process.off('exit', end));
     while (!(await answers(this.port))) {
       if (child.exitCode !== null) throw new Error(`mosquitto ended with ${child.exitCode}: ${said}`);
       await new Promise((resolve) => setTimeout(resolve, 10));
