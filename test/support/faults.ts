@@ -525,6 +525,41 @@ export const faults: readonly Fault[] = [
       await until(() => station.count('configuration taken') > before + 1, 'the old one to be taken again');
     },
   },
+  {
+    name: 'configuration that changes the broker connection',
+    room: 'node',
+    times: 1,
+    costs: 0,
+    inject: async (station) => {
+      const taken = station.count('configuration taken');
+      const text = stationText(station.link.port);
+      station.reload(text.replace('keepalive_s: 10', 'keepalive_s: 20'));
+      await until(() => station.count('configuration taken') > taken, 'it to be taken');
+      await station.flows();
+      station.reload(text);
+      await until(() => station.count('configuration taken') > taken + 1, 'the old one to be taken again');
+    },
+  },
+  {
+    name: 'configuration that changes one link of two',
+    room: 'node',
+    times: 1,
+    // The link that changes is closed and opened anew, twice; the other one is looked at below.
+    costs: 10,
+    inject: async (station) => {
+      const others = ['m3/p', 'm4/p'];
+      const lost = station.readingsLost(others);
+      const taken = station.count('configuration taken');
+      const text = stationText(station.link.port);
+      station.reload(text.replace('tty-1, baud: 3000000', 'tty-1, baud: 921600'));
+      await until(() => station.count('configuration taken') > taken, 'it to be taken');
+      await station.flows();
+      station.reload(text);
+      await until(() => station.count('configuration taken') > taken + 1, 'the old one to be taken again');
+      await station.flows();
+      if (station.readingsLost(others) > lost) throw new Error('the link that did not change lost records');
+    },
+  },
 ];
 
 function killable({ agent }: FaultStation): void {
