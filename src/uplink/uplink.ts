@@ -299,7 +299,8 @@ export class Uplink {
     this.#host.log('info', 'connected', { protocol: connection.protocol });
     // The first connection of a run knows of no earlier one: there is nothing to compare with, nor to wait for.
     const marker = last === null ? null : this.#readMarker();
-    await this.#subscribe(connection, [this.topics.agent, this.topics.asks]);
+    const own = marker === null ? [] : [this.topics.agent];
+    await this.#subscribe(connection, [...own, this.topics.asks]);
     for (const topic of this.#settings.commandTopics) await this.#subscribe(connection, [topic]);
     await this.#host.store.releaseRefused();
     this.#drainer.attach(connection);
@@ -310,7 +311,7 @@ export class Uplink {
     }
     if (!connection.isUp) return;
     await this.#sayAgent(connection, block.first + block.used++, 'online');
-    await connection.unsubscribe(this.topics.agent, this.#timing.ackTimeoutMs);
+    for (const topic of own) await connection.unsubscribe(topic, this.#timing.ackTimeoutMs);
   }
 
   /** What the broker retains of `agent`; null: nothing, or not in time. */
