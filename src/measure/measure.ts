@@ -1,6 +1,5 @@
 /** From a record of samples to a reading. */
 
-import { severityApplies, severityLimits, severityZone, type Zone } from '../machine/severity.ts';
 import { meanFrequency, statistics } from '../signal/statistics.ts';
 import { biasDrift, DRIFT_SPOILS_BELOW_HZ } from './bias-drift.ts';
 import { type DecimatedRecord, decimateRecord } from './decimated.ts';
@@ -16,6 +15,7 @@ import { tachometerSpeed } from './tachometer.ts';
 import { NO_TONES, toneFigures } from './tones.ts';
 import { gPerCount, judgeSamples } from './validity.ts';
 import { displacementPeakToPeak, displacementRms, type Figure, velocityRms } from './velocity.ts';
+import { zoneFor } from './zone.ts';
 
 /** A rate less sure than this moves lines by more than the slip of a bearing lets pass. */
 const RATE_UNCERTAIN_PPM = 5000;
@@ -120,7 +120,7 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
       mean_hz: meanFrequency(acceleration, rateHz),
     },
     envelope: silent ? null : envelope.reading,
-    zone: zoneFor(plan, running, shaft.hz, overall, displacement),
+    zone: zoneFor(plan.point, running, shaft.hz ?? plan.shaft?.nominalHz ?? null, overall, displacement),
   };
 }
 
@@ -172,19 +172,6 @@ function isRunning(
 /** Phase needs one pulse a turn, and of the very shaft that the point is on. */
 function hasPhase(plan: PointPlan, record: SampleRecord): boolean {
   return record.tachometer?.pulsesPerRev === 1 && plan.point.ratio === 1;
-}
-
-function zoneFor(
-  plan: PointPlan,
-  running: boolean | null,
-  shaftHz: number | null,
-  velocityMmS: number | null,
-  displacementUm: number | null,
-): Zone | null {
-  const { severity } = plan.point;
-  if (severity === null || running !== true || velocityMmS === null || displacementUm === null) return null;
-  if (severityApplies(plan.point, shaftHz ?? plan.shaft?.nominalHz ?? null) !== null) return null;
-  return severityZone(velocityMmS, displacementUm, severityLimits(severity));
 }
 
 function badReading(plan: PointPlan, record: SampleRecord, why: string[]): Reading {

@@ -1,0 +1,29 @@
+/** The severity zone of a reading, and what changes in a reading when the machine is known to run by other means. */
+
+import type { Point } from '../config/station.ts';
+import { severityApplies, severityLimits, severityZone, type Zone } from '../machine/severity.ts';
+import type { Reading } from './reading.ts';
+
+/** null: stopped, not measured, or no table applies. `shaftHz`: of this record, or as the settings say. */
+export function zoneFor(
+  point: Point,
+  running: boolean | null,
+  shaftHz: number | null,
+  velocityMmS: number | null,
+  displacementUm: number | null,
+): Zone | null {
+  const { severity } = point;
+  if (severity === null || running !== true || velocityMmS === null || displacementUm === null) return null;
+  if (severityApplies(point, shaftHz) !== null) return null;
+  return severityZone(velocityMmS, displacementUm, severityLimits(severity));
+}
+
+/** The reading of a point that vibrates less than the threshold, of a machine that is known to run all the same. */
+export function runningReading(reading: Reading, point: Point): Reading {
+  const { shaft, velocity, displacement } = reading;
+  return {
+    ...reading,
+    running: true,
+    zone: zoneFor(point, true, shaft.hz, velocity.overall, displacement.rms),
+  };
+}
