@@ -25,7 +25,7 @@ import {
   sensorWords,
   stoppedReason,
 } from './texts.ts';
-import { runsHere, SUPPRESS_AFTER_S, trackMachine, trackPoint } from './tracking.ts';
+import { SUPPRESS_AFTER_S, trackMachine, trackPoint } from './tracking.ts';
 import type { StepWork } from './work.ts';
 
 type ReadingInput = Extract<AlarmInput, { kind: 'reading' }>;
@@ -40,20 +40,10 @@ export function onReading(work: StepWork, input: ReadingInput): void {
   const { reading, elapsedS, t } = input;
   const { machine, point } = plan;
   const before = work.point(point.key);
-  const others = machine.points
-    .filter(({ key }) => key !== point.key)
-    .map(({ key }) => work.point(key).running);
-  const running = runsHere(machine, reading, others);
-  const { row, counts } = trackPoint(before, machine, point, { ...reading, running }, elapsedS);
+  const { row, counts } = trackPoint(before, machine, point, reading, elapsedS);
   work.setPoint(point.key, row);
-  const followed = trackMachine(
-    work.machine(machine.id),
-    [...others, running],
-    point.key,
-    running,
-    elapsedS,
-    t,
-  );
+  const votes = machine.points.map(({ key }) => work.point(key).running);
+  const followed = trackMachine(work.machine(machine.id), votes, point.key, reading.running, elapsedS, t);
   work.setMachine(machine.id, followed, false);
   work.touched.add(machine.id);
   judgeSensor(work, plan, reading, elapsedS);

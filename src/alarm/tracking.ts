@@ -19,21 +19,6 @@ function isValid(reading: Reading): boolean {
 }
 
 /**
- * Whether the machine runs as far as one point can tell. A smooth point, often an axial one, may vibrate less than the
- * threshold; where the shaft's speed shows in it and another point says that the machine runs, it does. At rest no speed
- * shows, so no reading of a machine that has stopped passes for one of a running machine.
- */
-export function runsHere(
-  machine: Machine,
-  reading: Reading,
-  others: readonly (boolean | null)[],
-): boolean | null {
-  const smooth =
-    machine.running.kind === 'velocity' && reading.running === false && reading.shaft.hz !== null;
-  return smooth && others.includes(true) ? true : reading.running;
-}
-
-/**
  * Follows one point. A reading counts if the machine runs, its start delay is over, it is not coasting down and its
  * speed is within its range.
  */

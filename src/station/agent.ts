@@ -333,9 +333,10 @@ export class Agent {
     });
   }
 
-  #reading(point: Point, reading: Reading, wallMs: number, elapsedS: number | null): void {
+  #reading(point: Point, measured: Reading, wallMs: number, elapsedS: number | null): void {
     const parts = this.#parts;
     if (!parts) return;
+    const reading = parts.judging.settled(point.key, measured);
     const t = new Date(wallMs).toISOString();
     const { learning, judging, keeper } = parts;
     keeper.noteReading(point.machineId, reading);

@@ -11,6 +11,7 @@ import type { EngineState } from '../alarm/state.ts';
 import type { Finding } from '../machine/finding-evidence.ts';
 import { findingsFor } from '../machine/findings.ts';
 import type { Reading } from '../measure/reading.ts';
+import { runningReading } from '../measure/zone.ts';
 
 interface JudgedStep {
   effects: readonly AlarmEffect[];
@@ -24,6 +25,8 @@ export class Judging {
   #state: EngineState;
   /** Latest reading of each point. */
   readonly #latest = new Map<string, Reading>();
+  /** What the last reading of each point said of running by itself. */
+  readonly #ownRunning = new Map<string, boolean | null>();
   /** Points of a machine that have reported since its faults were last looked for. */
   readonly #rounds = new Map<string, Set<string>>();
 
@@ -41,8 +44,21 @@ export class Judging {
     return this.#state;
   }
 
-  latest(pointKey: string): Reading | null {
-    return this.#latest.get(pointKey) ?? null;
+  /**
+   * The reading of a point as its machine knows it. A smooth point, often an axial one, may vibrate less than the
+   * threshold of `running`; where the shaft's speed shows in it and another point says that the machine runs, it does.
+   * At rest no speed shows, so no reading of a machine that has stopped passes for one of a running machine.
+   */
+  settled(pointKey: string, reading: Reading): Reading {
+    const entry = this.#plan.points.get(pointKey);
+    if (!entry) return reading;
+    this.#ownRunning.set(pointKey, reading.running);
+    const { machine, point } = entry;
+    const smooth =
+      machine.running.kind === 'velocity' && reading.running === false && reading.shaft.hz !== null;
+    const others = machine.points.filter(({ key }) => key !== pointKey);
+    if (!smooth || !others.some(({ key }) => this.#ownRunning.get(key) === true)) return reading;
+    return runningReading(reading, point);
   }
 
   /** What an input changes; nothing where it is about what has left the configuration. */

@@ -83,7 +83,7 @@ export function* replay(
     if (held.first !== first || held.samples !== samples) {
       held = { first, samples, counts: recording.read(first - options.firstIndex, samples) };
     }
-    const reading = measure(
+    const measured = measure(
       held.counts,
       missingWithin(recording, first - options.firstIndex, samples),
       due,
@@ -91,6 +91,7 @@ export function* replay(
     );
     const t = labelAt(endS);
     const { key } = entry.point;
+    const reading = judging.settled(key, measured);
     const before = previousEnd.get(key);
     previousEnd.set(key, end);
     yield { kind: 'reading', machine: entry.machine.id, point: entry.point.id, id: nextId(), t, reading };

@@ -168,36 +168,6 @@ describe('a machine that stops and starts', () => {
   });
 });
 
-describe('a smooth point of a machine that runs', () => {
-  const two = () =>
-    new Bench(
-      makeStation([
-        makeMachine(
-          'pump-1',
-          ['de-h', 'de-a'].map((id) => makePoint('pump-1', id, 'node-1')),
-        ),
-      ]),
-    );
-  const smooth = { mmS: 0.2, running: false, shaftHz: 24.7, defect: 'outer' } as const;
-
-  test('is judged where the speed shows in it and another point says that the machine runs', () => {
-    const bench = two();
-    for (let i = 0; i < 8; i++) bench.read({ 'pump-1/de-h': { mmS: 1 }, 'pump-1/de-a': smooth });
-    expect(bench.lifeOf('pump-1/de-a.bearing')).toBe('unacknowledged');
-  });
-
-  test('is not judged where no speed shows, or no other point runs', () => {
-    const still = two();
-    const atRest = { ...smooth, shaftHz: null };
-    for (let i = 0; i < 8; i++) still.read({ 'pump-1/de-h': { mmS: 1 }, 'pump-1/de-a': atRest });
-    expect(still.lifeOf('pump-1/de-a.bearing')).toBe('normal');
-    const both = two();
-    for (let i = 0; i < 8; i++)
-      both.read({ 'pump-1/de-h': { ...smooth, shaftHz: null }, 'pump-1/de-a': smooth });
-    expect(both.lifeOf('pump-1/de-a.bearing')).toBe('normal');
-  });
-});
-
 describe('rules', () => {
   test('three of the last five readings accuse the bearing; a missing envelope holds', () => {
     const bench = new Bench(onePoint([bearingRule]));
