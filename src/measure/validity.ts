@@ -31,13 +31,15 @@ export function judgeSamples(record: SampleRecord, rangeG: number | null): Valid
   const invalid = [...record.distrust];
   if (missingSamples > 0) invalid.push(`gap: ${missingSamples} samples missing`);
   if (counts.length === 0) {
-    return { invalid: [...invalid, 'record too short: it is empty'], overRange: null };
+    const why = invalid.length > 0 ? invalid : ['record too short: it is empty'];
+    return { invalid: why, overRange: null };
   }
   const flat = longestConstant(counts);
   if (flat === counts.length) {
     return { invalid: [...invalid, 'flat line: the counts never change'], overRange: null };
   }
-  if (flat >= FLAT_SHARE * counts.length && flat > 2) {
+  // Zeros stand where samples are missing: they tell nothing of the sensor.
+  if (missingSamples === 0 && flat >= FLAT_SHARE * counts.length && flat > 2) {
     invalid.push(`flat line: the counts stand still for ${flat} samples`);
   }
   const over = overRange(record, rangeG);

@@ -37,10 +37,22 @@ describe('a record that cannot be trusted has no figures at all', () => {
     expect(reading.why).toEqual(['gap: 17 samples missing']);
   });
 
+  it('gap alone, where its zeros are a good part of the record', () => {
+    const record = healthy();
+    record.counts.fill(0, 100_000, 200_000);
+    const { why } = measureRecord(plan, { ...record, missingSamples: 100_000 });
+    expect(why).toEqual(['gap: 100000 samples missing']);
+  });
+
   it('distrust of the link, in its own words', () => {
     const reading = measureRecord(plan, { ...healthy(), distrust: ['foreign node: 9 instead of 7'] });
     expectNothing(reading);
     expect(reading.why).toEqual(['foreign node: 9 instead of 7']);
+  });
+
+  it('distrust alone, where the link has no samples either', () => {
+    const record = { ...healthy(), counts: new Int32Array(0), distrust: ['no device at /dev/none'] };
+    expect(measureRecord(plan, record).why).toEqual(['no device at /dev/none']);
   });
 
   it.each([32767, -32768])('over-range: more than a thousandth of the counts at %d', (count) => {
