@@ -42,6 +42,8 @@ export async function runFault(
       await fault.inject(station, random);
       recoverS = Math.max(recoverS, await station.flows(undefined, recoverWithinS * 1000));
     }
+    // What was asked meanwhile, and what is asked now, has to come through as well.
+    await sleep(2000);
   } finally {
     stopLoad();
   }
