@@ -17,6 +17,7 @@ import { topicsOf } from '../uplink/topics.ts';
 import { Uplink } from '../uplink/uplink.ts';
 import { clockState, type StationClock, systemClock } from './clock.ts';
 import { healthBody } from './health.ts';
+import { HealthSchedule } from './health-schedule.ts';
 import { noteEntry } from './journal-entry.ts';
 import { Judging } from './judging.ts';
 import { Learning } from './learning.ts';
@@ -40,7 +41,6 @@ import { Vitals } from './vitals.ts';
 import { within } from './within.ts';
 
 const TICK_MS = 1000;
-const HEALTH_EVERY_S = 6 * 3600;
 const CLOCK_CHECK_S = 600;
 const RISES_EVERY_S = 3600;
 /** What each part of a stop may take; together less than 5 s. What is not sent by then stays in the store. */
@@ -81,7 +81,9 @@ export class Agent {
   #clockSays: 'synchronised' | 'free' = 'free';
   #timer: NodeJS.Timeout | null = null;
   #tickS = 0;
-  #healthS = 0;
+  #healthSchedule: HealthSchedule | null = null;
+  /** Links that are not receiving. */
+  readonly #troubled = new Set<string>();
   #clockS = 0;
   #risesS = 0;
   #reloading: Promise<void> = Promise.resolve();
@@ -116,6 +118,9 @@ export class Agent {
       reading: (point, reading, wallMs, elapsedS) => this.#reading(point, reading, wallMs, elapsedS),
       condition: (link, conditions, why) => {
         if (why !== null) this.#log.warn(`link ${link} is not receiving`, { conditions, why });
+        if (why !== null || this.#troubled.has(link)) this.#healthSchedule?.changed(this.#clock.monotonicS());
+        if (why === null) this.#troubled.delete(link);
+        else this.#troubled.add(link);
         void this.#parts?.judge.take({ kind: 'link', link, conditions, detail: why, t: this.#now() });
       },
     });
@@ -155,8 +160,7 @@ export class Agent {
     this.#links.start();
     this.#vitals.start();
     this.#tickS = this.#clock.monotonicS();
-    // The first health follows once the links have had time to speak.
-    this.#healthS = this.#tickS - HEALTH_EVERY_S + 30;
+    this.#healthSchedule = new HealthSchedule(this.#tickS);
     this.#risesS = this.#tickS - RISES_EVERY_S;
     this.#timer = setInterval(() => this.#tick(), TICK_MS);
     this.#log.info('running', { site: this.#station.site.id, config: this.#station.configHash });
@@ -358,8 +362,7 @@ export class Agent {
     this.#parts?.keeper.tick();
     this.#supervision?.tick();
     this.#tickS = nowS;
-    if (nowS - this.#healthS >= HEALTH_EVERY_S) {
-      this.#healthS = nowS;
+    if (this.#healthSchedule?.isDue(nowS, this.#errorsSoFar()) === true) {
       this.#sendHealth().catch((error) => this.#watch.failed(error));
     }
     if (nowS - this.#clockS >= CLOCK_CHECK_S) {
@@ -425,8 +428,15 @@ export class Agent {
     detail: string | null,
   ): void {
     void this.#parts?.judge.take({ kind: 'gateway', condition, holds, detail, t: this.#now() });
-    // Something in `health` went wrong: it is told soon, with what follows from it.
-    if (holds) this.#healthS = Math.min(this.#healthS, this.#clock.monotonicS() - HEALTH_EVERY_S + 5);
+    this.#healthSchedule?.changed(this.#clock.monotonicS());
+  }
+
+  /** Everything in `health` that counts what went wrong, added up. */
+  #errorsSoFar(): number {
+    const sum = (counts: Readonly<Record<string, number>>) =>
+      Object.values(counts).reduce((a, b) => a + b, 0);
+    const links = Object.values(this.#links.health()).map((link) => link.gaps + sum(link.errors));
+    return sum(this.#room.missed) + this.#links.skipped + links.reduce((a, b) => a + b, 0);
   }
 
   #logLinks(): void {
