@@ -24,6 +24,10 @@ const TICK_MS = 500;
 const SPEED_TICKS = 10;
 /** Longer than two DESCRIBEs are apart: on a shared line just opened, the right node may speak second. */
 const FOREIGN_AFTER_MS = 2500;
+/** So long may another node speak in place of the one listened to before it is judged: that one unheard, a DESCRIBE. */
+const JUDGED_WITHIN_MS = 10_000;
+/** Bytes older than this say nothing of what a line carries now: it may have fallen silent. */
+const LATELY_MS = 1000;
 /** Bytes that are no frames for this long: open the port anew, another program may have changed its settings. */
 const REOPEN_AFTER_MS = 10_000;
 
@@ -79,6 +83,7 @@ export class Link {
   #bytes = 0;
   readonly #bytesAtTick: { ms: number; bytes: number }[] = [];
   #openedMs = 0;
+  #lastBytesMs = Number.NEGATIVE_INFINITY;
   #lastFrameMs = 0;
   #lastFrames = 0;
   #lastSamplesMs = Number.NEGATIVE_INFINITY;
@@ -205,6 +210,7 @@ export class Link {
     this.#bytes += chunk.length;
     this.#samplesCame = false;
     const now = this.#host.now();
+    this.#lastBytesMs = now;
     this.#decoder.push(chunk);
     const frames = this.#decoder.frames();
     if (frames !== this.#lastFrames) {
@@ -305,8 +311,15 @@ export class Link {
     if (now - this.#lastSamplesMs < SILENT_AFTER_MS) return { kind: 'receiving', why: '' };
     if (now - this.#openedMs < SILENT_AFTER_MS) return { kind: 'waiting', why: 'open, no samples yet' };
     if (now - this.#lastFrameMs >= SILENT_AFTER_MS) {
+      // Neither frames nor bytes: as it was, until the supervisor calls it silent.
+      if (now - this.#lastBytesMs > LATELY_MS)
+        return { kind: this.#condition.kind, why: this.#condition.why };
       const what = this.#settings.format.kind === 'frames' ? 'frames' : 'lines of numbers';
       return { kind: 'no-frames', why: `bytes come that are no ${what}: see the baud rate and the format` };
+    }
+    const unheardMs = now - (this.#node?.heardMs ?? now);
+    if (unheardMs >= SILENT_AFTER_MS && unheardMs < JUDGED_WITHIN_MS) {
+      return { kind: 'waiting', why: 'another node speaks' };
     }
     return { kind: 'no-samples', why: 'the node speaks but sends no samples' };
   }

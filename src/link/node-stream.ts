@@ -94,6 +94,11 @@ export class NodeStream {
     return this.#restarts;
   }
 
+  /** When the node listened to last spoke; −∞: never. */
+  get heardMs(): number {
+    return this.#heardMs;
+  }
+
   /** What the node last said of itself. */
   get health(): HealthFrame | null {
     return this.#health;
