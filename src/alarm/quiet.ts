@@ -20,7 +20,7 @@ const MACHINE_ALARMS = MACHINE_MESSAGES - 1;
 const MACHINE_DETAILS = MACHINE_MESSAGES - 3;
 /** Of the state topic: at most this many, so that two alarms always find room, */
 const MACHINE_STATES = MACHINE_MESSAGES - 2;
-/** and fewer where only zone, finding or the like changed, so that the lamp follows the alarm. */
+/** and fewer where only zone, finding or the like changed, so that whether it runs and how it is are told at once. */
 const STATE_DETAILS = 2;
 /** More than 10 in 10 minutes is a flood to one operator (ISA-18.2 and IEC 62682, as reproduced). */
 const STATION_WINDOW_S = 600;
@@ -121,13 +121,20 @@ function publishState(work: StepWork, machineId: string): void {
   if (told === row.told && row.sinceToldS < STATE_AT_LEAST_S) return;
   const sent = work.quiet.sent[machineId] ?? [];
   const states = sent.filter((message) => !message.alarm).length;
-  const lamp = row.told === '' || (JSON.parse(row.told) as MachineFacts).severity !== facts.severity;
-  if (sent.length >= MACHINE_MESSAGES || states >= (lamp ? MACHINE_STATES : STATE_DETAILS)) return;
+  const most = isDetail(row.told, facts) ? STATE_DETAILS : MACHINE_STATES;
+  if (sent.length >= MACHINE_MESSAGES || states >= most) return;
   const payload = machinePayload(facts, row, work.allocateId(), work.t);
   work.effects.push({ kind: 'publish', class: 'state', topic: `${machineId}/state`, payload });
   work.setMachine(machineId, { ...row, told, sinceToldS: 0 }, true);
   const quiet: QuietRow = work.quiet;
   work.quiet = { ...quiet, sent: { ...quiet.sent, [machineId]: [...sent, { ageS: FRESH, alarm: false }] } };
+}
+
+/** What the operator acts on is never mere detail. */
+function isDetail(told: string, facts: MachineFacts): boolean {
+  if (told === '') return false;
+  const before = JSON.parse(told) as MachineFacts;
+  return (['running', 'severity', 'unacknowledged'] as const).every((key) => before[key] === facts[key]);
 }
 
 /** Every machine's state is looked at again, since one may have waited and the hour may be over. */

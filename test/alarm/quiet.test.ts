@@ -268,3 +268,33 @@ test('a machine whose zone flaps sends its state twice a minute, and leaves room
   expect(brief(alarmsIn(told))).toEqual(['unacknowledged danger']);
   expect(statesIn(told).map(({ severity }) => severity)).toContain(2);
 });
+
+test('a stop, a start and an acknowledgement are told at once, whatever details came before', () => {
+  const { bench, all } = many(1, 2);
+  const show = (shown: object) => {
+    const one = { ...all(1)['pump-1/p1'], ...shown };
+    return statesIn(bench.read({ 'pump-1/p1': one, 'pump-1/p2': one }, 2));
+  };
+  // Zones A, B, A: the two details of this minute are spent.
+  for (const mmS of [1, 3, 1, 3]) show({ mmS });
+  expect(statesIn(bench.effects)).toHaveLength(2);
+  expect(show({ mmS: 0.1, running: false }).map(({ running }) => running)).toEqual([false]);
+  for (let i = 0; i < 12; i++) expect(show({ mmS: 0.1, running: false })).toEqual([]);
+  expect(show({ mmS: 1 }).map(({ running }) => running)).toEqual([true]);
+});
+
+test('an acknowledgement shows in the state at once, and a machine that flaps leaves room for two alarms', () => {
+  const { bench, all } = many(1, 1, { ...zoneRule, onDelayS: 0 });
+  bench.read(all(2), 1);
+  bench.read(all(3), 1);
+  bench.read(all(8), 1);
+  const told = bench.put({ kind: 'acknowledge', alarm: 'pump-1/p1.zone', by: 'ann', t: bench.t });
+  expect(statesIn(told).map(({ unacknowledged }) => unacknowledged)).toEqual([0]);
+  const watcher = new Watcher();
+  const flapping = many(1, 1);
+  for (let s = 0; s < 300; s++) {
+    const shown = { mmS: 1, running: s % 2 === 0 };
+    watcher.see(s, flapping.bench.read({ 'pump-1/p1': shown }, 1));
+  }
+  expect(watcher.most(60, () => true)).toBe(4);
+});
