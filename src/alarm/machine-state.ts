@@ -12,7 +12,10 @@ export type MachineFacts = Omit<MachineStatePayload, 'id' | 't' | 'hours_run'>;
 /** Unknown outranks alert, danger outranks unknown. */
 const RANK = { 0: 0, 1: 1, 3: 2, 2: 3 } as const;
 
-/** The state of a machine as its rows say. Alarms that are shelved or otherwise withheld do not count. */
+/**
+ * The state of a machine as its rows say. Alarms that are shelved or otherwise withheld do not count. Unknown goes by
+ * the readings and the links: the alarm of a sensor stands for its off-delay, while figures are true again at once.
+ */
 export function machineFacts(work: StepWork, machine: Machine): MachineFacts {
   const row = work.machine(machine.id);
   let severity: 0 | 1 | 2 | 3 = 0;
@@ -25,9 +28,9 @@ export function machineFacts(work: StepWork, machine: Machine): MachineFacts {
     if (alarm.kind === 'agent') continue;
     const { life } = work.alarm(alarm.key);
     if (life.state === 'unacknowledged' || life.state === 'returned-unacknowledged') unacknowledged += 1;
-    const level = standingLevel(life);
+    const level = alarm.kind === 'sensor' ? null : standingLevel(life);
     const about = alarm.kind === 'group' ? 'machine' : alarm.point.id;
-    if (level !== null) raise(alarm.kind === 'sensor' ? 3 : level === 'danger' ? 2 : 1, about);
+    if (level !== null) raise(level === 'danger' ? 2 : 1, about);
   }
   const zones = machine.points.map((point) => ({ point, row: work.point(point.key) }));
   for (const { point, row: at } of zones) {

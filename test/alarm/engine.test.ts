@@ -230,6 +230,18 @@ describe('sensors and links', () => {
     expect(statesIn(bench.effects).at(-1)).toMatchObject({ severity: 3, worst: 'de-h' });
   });
 
+  // Severity 3 is "no valid reading while running for three intervals" (the topics of the contract).
+  test('one good reading makes the machine known again, while the alarm of its sensor still stands', () => {
+    const bench = new Bench(onePoint());
+    bench.read({ mmS: 2 });
+    const flat = () => bench.read({ mmS: null, why: ['flat line: the counts never change'] });
+    for (let i = 0; i < 3; i++) flat();
+    expect(statesIn(bench.effects).at(-1)).toMatchObject({ severity: 3, unacknowledged: 1 });
+    bench.read({ mmS: 2 });
+    expect(bench.lifeOf('pump-1/de-h.sensor')).toBe('unacknowledged');
+    expect(statesIn(bench.effects).at(-1)).toMatchObject({ severity: 0, unacknowledged: 1 });
+  });
+
   test('a sensor that fails during an alarm neither clears nor hides it', () => {
     const bench = new Bench(onePoint());
     for (let i = 0; i < 4; i++) bench.read({ mmS: 7 });
