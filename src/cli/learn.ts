@@ -48,8 +48,8 @@ async function learn(
     (await client.ask('baseline', { machine, action, by: BY, ...more })) as unknown as BaselineAnswer;
   const under: string[] = [];
   for (const { id } of station.machines) {
-    const course = await begin(ask, id, hours, (line) => out.write(`${line}\n`));
-    if (course) under.push(id);
+    const run = await begin(ask, id, hours, (line) => out.write(`${line}\n`));
+    if (run) under.push(id);
   }
   let learned = 0;
   while (under.length > 0) {

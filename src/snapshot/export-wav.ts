@@ -2,7 +2,7 @@
  * A recording as PCM WAV with the same integer counts. WAV says neither unit nor scale, and only a whole rate: a JSON
  * file beside it does.
  *
- * Layout as in wav.ts. More than two channels or 16 bits call for the extensible format, with no speaker positions.
+ * Layout as in wav.ts. More than two channels or 16 bits call for the extensible format, with no channel positions.
  */
 
 import type { Recording } from './recording.ts';

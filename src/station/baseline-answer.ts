@@ -2,7 +2,7 @@
 
 import type { Baseline } from '../alarm/baseline.ts';
 import { roundedFigures } from '../uplink/payload.ts';
-import type { Course, PointLearning } from './learning.ts';
+import type { LearningRun, PointLearning } from './learning.ts';
 
 export interface BaselineLine {
   readonly t: string;
@@ -29,14 +29,14 @@ export interface BaselineAnswer {
 
 export function baselineAnswer(
   machine: string,
-  course: Course | null,
+  run: LearningRun | null,
   points: Readonly<Record<string, PointLearning>>,
 ): BaselineAnswer & { readonly points: Readonly<Record<string, PointLine>> } {
   const learning =
-    course === null
+    run === null
       ? null
-      : { since: course.since, hours: course.hours, hours_left: Number((course.leftS / 3600).toFixed(4)) };
-  const lines = Object.entries(points).map(([id, point]) => [id, pointLine(point, course !== null)]);
+      : { since: run.since, hours: run.hours, hours_left: Number((run.leftS / 3600).toFixed(4)) };
+  const lines = Object.entries(points).map(([id, point]) => [id, pointLine(point, run !== null)]);
   return { machine, learning, points: Object.fromEntries(lines) };
 }
 

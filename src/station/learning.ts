@@ -27,7 +27,7 @@ export interface LearningHost {
 }
 
 /** A learning that is under way. */
-export interface Course {
+export interface LearningRun {
   readonly since: string;
   readonly hours: number;
   /** Time of the running agent, kept as what is left. */
@@ -50,7 +50,7 @@ type Row = { key: string; json: string | null };
 
 export class Learning {
   readonly #host: LearningHost;
-  readonly #courses = new Map<string, Course>();
+  readonly #runs = new Map<string, LearningRun>();
   readonly #points = new Map<string, PointLearning>();
   #unsavedS = 0;
   /** One thing after the other: what is asked, what ends by itself, what is written. */
@@ -73,7 +73,7 @@ export class Learning {
     const plan = this.#host.plan();
     const place = plan.points.get(pointKey);
     const row = state.points[pointKey];
-    if (!place || !row || !this.#courses.has(place.machine.id)) return;
+    if (!place || !row || !this.#runs.has(place.machine.id)) return;
     if (row.startedS !== null || row.uncountedS > 0) return;
     const sample = learnSample(reading, trendWatches(plan.station));
     if (sample === null) return;
@@ -85,13 +85,13 @@ export class Learning {
 
   /** Time of the running agent passes. */
   tick(elapsedS: number): void {
-    if (this.#courses.size === 0) return;
-    for (const [machine, course] of this.#courses) {
-      if (!this.#host.plan().machines.has(machine)) this.#courses.delete(machine);
-      else this.#courses.set(machine, { ...course, leftS: Math.max(0, course.leftS - elapsedS) });
+    if (this.#runs.size === 0) return;
+    for (const [machine, run] of this.#runs) {
+      if (!this.#host.plan().machines.has(machine)) this.#runs.delete(machine);
+      else this.#runs.set(machine, { ...run, leftS: Math.max(0, run.leftS - elapsedS) });
     }
     this.#unsavedS += elapsedS;
-    const over = [...this.#courses.values()].some(({ leftS }) => leftS === 0);
+    const over = [...this.#runs.values()].some(({ leftS }) => leftS === 0);
     if (this.#busy || !(over || this.#unsavedS >= SAVE_S)) return;
     this.#busy = true;
     void this.#inTurn(() => this.#advance())
@@ -114,7 +114,7 @@ export class Learning {
   ): Promise<BaselineAnswer> {
     return this.#inTurn(async () => {
       const points = this.#pointsOf(machine);
-      const under = this.#courses.get(machine);
+      const under = this.#runs.get(machine);
       if (under) {
         throw new AskRefused(`learning is under way since ${under.since}: action reject ends it`);
       }
@@ -124,7 +124,7 @@ export class Learning {
           `${machine}/${high.id} is in zone ${high.zone}: a baseline is learned from a machine that is well`,
         );
       }
-      const course = {
+      const run = {
         since: this.#host.now(),
         hours: hours ?? USUAL_HOURS,
         leftS: 3600 * (hours ?? USUAL_HOURS),
@@ -133,10 +133,10 @@ export class Learning {
         { key: `proposed:${key}`, json: null },
         { key: `samples:${key}`, json: null },
       ]);
-      rows.push({ key: `learning:${machine}`, json: JSON.stringify({ v: VERSION, ...course }) });
-      const text = `learning a baseline for ${course.hours} h`;
+      rows.push({ key: `learning:${machine}`, json: JSON.stringify({ v: VERSION, ...run }) });
+      const text = `learning a baseline for ${run.hours} h`;
       await this.#host.commit({ baselines: rows }, { machine, by, text });
-      this.#courses.set(machine, course);
+      this.#runs.set(machine, run);
       for (const key of points)
         this.#points.set(key, { ...this.#of(key), samples: NO_SAMPLES, proposed: null });
       return this.#answer(machine);
@@ -146,9 +146,9 @@ export class Learning {
   accept(machine: string, by: string | null): Promise<BaselineAnswer> {
     return this.#inTurn(async () => {
       const points = this.#pointsOf(machine);
-      const course = this.#courses.get(machine);
-      if (course) {
-        throw new AskRefused(`learning is under way for ${(course.leftS / 3600).toFixed(2)} h more`);
+      const run = this.#runs.get(machine);
+      if (run) {
+        throw new AskRefused(`learning is under way for ${(run.leftS / 3600).toFixed(2)} h more`);
       }
       const t = this.#host.now();
       const accepted = new Map<string, NonNullable<PointLearning['accepted']>>();
@@ -175,7 +175,7 @@ export class Learning {
     return this.#inTurn(async () => {
       const points = this.#pointsOf(machine);
       const proposed = points.some((key) => this.#of(key).proposed !== null);
-      if (!this.#courses.has(machine) && !proposed) {
+      if (!this.#runs.has(machine) && !proposed) {
         throw new AskRefused('nothing to reject: no learning is under way and none is proposed');
       }
       const rows = points.flatMap((key): Row[] => [
@@ -184,7 +184,7 @@ export class Learning {
       ]);
       rows.push({ key: `learning:${machine}`, json: null });
       await this.#host.commit({ baselines: rows }, { machine, by, text: 'learned values rejected' });
-      this.#courses.delete(machine);
+      this.#runs.delete(machine);
       for (const key of points)
         this.#points.set(key, { ...this.#of(key), samples: NO_SAMPLES, proposed: null });
       return this.#answer(machine);
@@ -202,11 +202,11 @@ export class Learning {
     const points = this.#pointsOf(machine).map(
       (key) => [key.slice(machine.length + 1), this.#of(key)] as const,
     );
-    return baselineAnswer(machine, this.#courses.get(machine) ?? null, Object.fromEntries(points));
+    return baselineAnswer(machine, this.#runs.get(machine) ?? null, Object.fromEntries(points));
   }
 
   async #advance(): Promise<void> {
-    for (const [machine, { leftS }] of this.#courses) if (leftS === 0) await this.#propose(machine);
+    for (const [machine, { leftS }] of this.#runs) if (leftS === 0) await this.#propose(machine);
     if (this.#unsavedS >= SAVE_S) await this.#save();
   }
 
@@ -221,16 +221,16 @@ export class Learning {
     ]);
     rows.push({ key: `learning:${machine}`, json: null });
     await this.#host.commit({ baselines: rows });
-    this.#courses.delete(machine);
+    this.#runs.delete(machine);
     for (const [key, proposed] of proposals) {
       this.#points.set(key, { ...this.#of(key), samples: NO_SAMPLES, proposed });
     }
   }
 
   async #save(): Promise<void> {
-    if (this.#courses.size === 0) return;
-    const rows = [...this.#courses].flatMap(([machine, course]): Row[] => [
-      { key: `learning:${machine}`, json: JSON.stringify({ v: VERSION, ...course }) },
+    if (this.#runs.size === 0) return;
+    const rows = [...this.#runs].flatMap(([machine, run]): Row[] => [
+      { key: `learning:${machine}`, json: JSON.stringify({ v: VERSION, ...run }) },
       ...this.#pointsOf(machine).map((key) => ({
         key: `samples:${key}`,
         json: JSON.stringify({ v: VERSION, ...this.#of(key).samples }),
@@ -246,7 +246,7 @@ export class Learning {
     const { v, ...value } = row;
     if (v !== VERSION) return;
     if (of === 'learning') {
-      if (this.#host.plan().machines.has(key)) this.#courses.set(key, value as unknown as Course);
+      if (this.#host.plan().machines.has(key)) this.#runs.set(key, value as unknown as LearningRun);
     } else if (this.#host.plan().points.has(key)) {
       this.#points.set(key, { ...this.#of(key), [of]: value });
     }

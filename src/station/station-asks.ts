@@ -1,10 +1,10 @@
 /** What the station answers to asks. Each handler does one thing or refuses; sizes are bounded here. */
 
 import type { AskInput } from '../alarm/effects.ts';
+import { rounded } from '../signal/rounded.ts';
 import type { JournalEntry, Store, TrendPoint } from '../store/types.ts';
 import { AskRefused } from '../uplink/asks.ts';
 import type { MessageIds } from '../uplink/message-ids.ts';
-import { rounded } from '../uplink/payload.ts';
 import type { Uplink } from '../uplink/uplink.ts';
 import { journalLine, noteEntry, numberOf } from './journal-entry.ts';
 import type { Judging } from './judging.ts';
