@@ -3,6 +3,8 @@
 import type { Level } from '../config/station.ts';
 import type { Finding } from '../machine/finding-evidence.ts';
 import type { Zone } from '../machine/severity.ts';
+import { rounded } from '../signal/rounded.ts';
+import { asPublished } from './figure.ts';
 import type { LifeState } from './life-cycle.ts';
 import type { AlarmRow } from './state.ts';
 
@@ -62,13 +64,14 @@ export interface AlarmFacts {
 export function alarmPayload(row: AlarmRow, id: string, t: string): AlarmPayload {
   const { life, facts, test } = row;
   if (test !== null) return testPayload(test.level, test.id, test.t, id);
+  const value = facts?.value ?? null;
   const level = 'level' in life ? life.level : 'condition' in life ? life.condition : null;
   return {
     id,
     t: facts?.t ?? t,
     state: life.state,
     level,
-    value: rounded(facts?.value ?? null),
+    value: typeof value === 'number' ? rounded(value) : value,
     limit: facts?.limit ?? null,
     unit: facts?.unit ?? null,
     raised: row.raised,
@@ -97,8 +100,4 @@ function testPayload(level: Level, raised: string, t: string, id: string): Alarm
     snapshot: null,
     test: true,
   };
-}
-
-function rounded(value: number | string | null): number | string | null {
-  return typeof value === 'number' ? Number(value.toPrecision(4)) : value;
 }

@@ -2,6 +2,7 @@
 
 import type { Point } from '../config/station.ts';
 import { severityApplies, severityLimits, severityZone, type Zone } from '../machine/severity.ts';
+import { rounded } from '../signal/rounded.ts';
 import type { Reading } from './reading.ts';
 
 /** null: stopped, not measured, or no table applies. `shaftHz`: of this record, or as the settings say. */
@@ -15,7 +16,10 @@ export function zoneFor(
   const { severity } = point;
   if (severity === null || running !== true || velocityMmS === null || displacementUm === null) return null;
   if (severityApplies(point, shaftHz) !== null) return null;
-  return severityZone(velocityMmS, displacementUm, severityLimits(severity));
+  // As published: a figure that reads like a boundary lies on it.
+  const [velocity, displacement] = [rounded(velocityMmS), rounded(displacementUm)];
+  if (velocity === null || displacement === null) return null;
+  return severityZone(velocity, displacement, severityLimits(severity));
 }
 
 /** The reading of a point that vibrates less than the threshold, of a machine that is known to run all the same. */

@@ -1,5 +1,5 @@
+import { rounded } from '../signal/rounded.ts';
 import type { StoreCounters } from '../store/types.ts';
-import { rounded } from './payload.ts';
 import type { UplinkStatus } from './uplink.ts';
 
 /** The sections of `health` that tell of the way to the control room. */

@@ -1,18 +1,9 @@
 import type { Reading } from '../measure/reading.ts';
+import { rounded } from '../signal/rounded.ts';
 import type { MessageClass, OutboxMessage } from '../store/types.ts';
 import type { MessageIds } from './message-ids.ts';
 
-/**
- * Rounds a measured figure to four significant digits; null for what is no number.
- *
- * @param value any unit
- * @returns the nearest number with four significant decimal digits; `rounded(110.3567)` is 110.4
- */
-export function rounded(value: number): number | null {
-  return Number.isFinite(value) ? Number(value.toPrecision(4)) : null;
-}
-
-/** The same for every number in a value, however deep. */
+/** Every number in a value rounded, however deep. */
 export function roundedFigures<T>(value: T): T {
   if (typeof value === 'number') return rounded(value) as T;
   if (Array.isArray(value)) return value.map(roundedFigures) as T;

@@ -1,6 +1,7 @@
 import { readFileSync } from 'node:fs';
 import { describe, expect, it } from 'vitest';
 import type { Reading } from '../../src/measure/reading.ts';
+import { rounded } from '../../src/signal/rounded.ts';
 import { MemoryStore } from '../../src/store/memory-store.ts';
 import { uplinkHealth } from '../../src/uplink/health.ts';
 import { MessageIds } from '../../src/uplink/message-ids.ts';
@@ -10,7 +11,6 @@ import {
   identifiedMessage,
   outboxMessage,
   readingBody,
-  rounded,
   roundedFigures,
 } from '../../src/uplink/payload.ts';
 import { askSchemas, payloadJsonSchema, payloadSchemas } from '../../src/uplink/payload-schemas.ts';
