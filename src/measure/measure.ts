@@ -61,6 +61,9 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
     bandHz[0] < leastHz ? null : take(velocityRms(decimated, bandHz, name));
 
   const running = isRunning(plan, record, given, decimated, leastHz);
+  if (running === null && plan.machine.running.kind === 'mqtt') {
+    why.push('running unknown: nothing usable was told lately');
+  }
   const shaft = given ?? foundShaft(plan, decimated, acceleration, rateHz);
   // A machine at rest has no speed to be missed. It is looked for all the same: a smooth machine may vibrate less than
   // the threshold and still have a bearing that tells something.

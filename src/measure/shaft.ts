@@ -37,7 +37,9 @@ export function givenShaft(plan: PointPlan, record: SampleRecord): ShaftFigures 
     return { hz: speed.hz * ratio, source: 'tachometer', confidence: null, tachometer: speed, why };
   }
   if (kind === 'tachometer' || kind === 'mqtt') {
-    if (record.toldShaftHz === null) return unknown('nothing was told', null);
+    if (record.toldShaftHz === null) {
+      return unknown(kind === 'mqtt' ? 'nothing usable was told lately' : 'no tachometer pulses', null);
+    }
     if (!(record.toldShaftHz > 0)) return unknown(`${record.toldShaftHz} Hz was told`, null);
     const hz = record.toldShaftHz * ratio;
     return {

@@ -110,10 +110,12 @@ describe('shaft speed of a reading', () => {
     expect(read(mqtt, [oneTimes], { toldShaftHz: 24.6 }).shaft).toEqual({ hz: 24.6, source: 'mqtt' });
     const untold = read(mqtt, [oneTimes]);
     expect(untold.shaft.hz).toBeNull();
-    expect(untold.why).toEqual(['speed unknown: nothing was told']);
+    expect(untold.why).toEqual(['speed unknown: nothing usable was told lately']);
     const other = { kind: 'tachometer', link: 'node-2', channel: 'tach', pulsesPerRev: 1 } as const;
     const far = read({ machine: { shaft: other }, point: { ratio: 0.5 } }, [oneTimes], { toldShaftHz: 24.6 });
     expect(far.shaft).toEqual({ hz: 12.3, source: 'tachometer' });
+    const dark = read({ machine: { shaft: other } }, [oneTimes]);
+    expect(dark.why).toEqual(['speed unknown: no tachometer pulses']);
     const none = read({ machine: { shaft: null } }, [oneTimes]);
     expect(none).toMatchObject({ shaft: { hz: null, source: null }, why: [], quality: 'good', zone: 'B' });
   });
@@ -146,7 +148,11 @@ describe('running and zones', () => {
     const told = { machine: { running: { kind: 'mqtt', topic: 'plc/run' } } } as const;
     expect(read(told, [oneTimes], { toldRunning: true })).toMatchObject({ running: true, zone: 'B' });
     expect(read(told, [oneTimes], { toldRunning: false })).toMatchObject({ running: false, zone: null });
-    expect(read(told, [oneTimes])).toMatchObject({ running: null, zone: null });
+    expect(read(told, [oneTimes])).toMatchObject({
+      running: null,
+      zone: null,
+      why: ['running unknown: nothing usable was told lately'],
+    });
   });
 
   it('has zones where the table applies only', () => {
