@@ -1,6 +1,7 @@
 /** A figure of a reading by its path, and whether it was measured. */
 
 import type { Reading } from '../measure/reading.ts';
+import { rounded } from '../signal/rounded.ts';
 
 export type Figure =
   | { readonly kind: 'number'; readonly value: number; readonly unit: string }
@@ -44,4 +45,9 @@ const UNIT_BY_ENDING: readonly (readonly [RegExp, string])[] = [
 /** The unit of the group does not hold for every figure in it. */
 function unitOf(path: string, groupUnit: string): string {
   return UNIT_BY_ENDING.find(([ending]) => ending.test(path))?.[1] ?? groupUnit;
+}
+
+/** A figure as it is published: four significant digits. Judged so, a value told as equal to its limit is not over it. */
+export function asPublished(value: number): number {
+  return rounded(value) ?? value;
 }

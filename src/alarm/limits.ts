@@ -4,7 +4,7 @@ import type { Level, Point, Rule } from '../config/station.ts';
 import { severityApplies, severityLimits } from '../machine/severity.ts';
 import type { Reading } from '../measure/reading.ts';
 import { type Baseline, baselineFor } from './baseline.ts';
-import { figureAt } from './figure.ts';
+import { asPublished, figureAt } from './figure.ts';
 
 /** What one reading says under one rule, before any delay. */
 export interface Verdict {
@@ -55,7 +55,8 @@ export function judge(rule: Rule, point: Point, reading: Reading, baseline: Base
       const limits = { alert: null, danger: null } as Record<Level, number | null>;
       for (const level of LEVELS) {
         const times = test[level];
-        if (times !== null) limits[level] = baselineLimit(point, rule.watch, learned.median, times, level);
+        if (times === null) continue;
+        limits[level] = asPublished(baselineLimit(point, rule.watch, learned.median, times, level));
       }
       const whose = `the learned value ${figure4(learned.median)}`;
       return judgeLimits(rule, reading, limits, watchesFall(test) ? -1 : 1, whose);
@@ -104,16 +105,17 @@ function judgeLimits(
 ): Verdict | null {
   const figure = figureAt(reading, rule.watch);
   if (figure.kind !== 'number') return null;
+  const value = asPublished(figure.value);
   const beyond = (level: Level, slack: number) => {
     const at = limit[level];
-    return at !== null && sign * figure.value > sign * at - slack;
+    return at !== null && sign * value > asPublished(sign * at - slack);
   };
   const levels = (slack: (at: number) => number) => ({
     alert: beyond('alert', slack(limit.alert ?? 0)) || beyond('danger', slack(limit.danger ?? 0)),
     danger: beyond('danger', slack(limit.danger ?? 0)),
   });
   return {
-    value: figure.value,
+    value,
     unit: figure.unit,
     over: levels(() => 0),
     near: levels((at) => slackOf(rule, at)),
@@ -125,18 +127,18 @@ function judgeLimits(
 function judgeZones(rule: Rule, point: Point, reading: Reading): Verdict | null {
   if (point.severity === null || reading.zone === null) return null;
   const table = severityLimits(point.severity);
-  const mmS = reading.velocity.overall;
-  const um = reading.displacement.rms;
-  if (mmS === null) return null;
+  if (reading.velocity.overall === null) return null;
+  const mmS = asPublished(reading.velocity.overall);
+  const um = reading.displacement.rms === null ? null : asPublished(reading.displacement.rms);
   const boundary = { alert: 1, danger: 2 } as const;
   const over = { alert: reading.zone === 'C' || reading.zone === 'D', danger: reading.zone === 'D' };
   const near = { alert: over.alert, danger: over.danger };
   for (const level of LEVELS) {
     const limitMmS = table.velocityMmS[boundary[level]];
     const limitUm = table.displacementUm?.[boundary[level]] ?? null;
-    near[level] ||= mmS > limitMmS - slackOf(rule, limitMmS);
-    near[level] ||=
-      limitUm !== null && um !== null && um > limitUm - ('pct' in rule.deadband ? slackOf(rule, limitUm) : 0);
+    const slackUm = limitUm !== null && 'pct' in rule.deadband ? slackOf(rule, limitUm) : 0;
+    near[level] ||= mmS > asPublished(limitMmS - slackOf(rule, limitMmS));
+    near[level] ||= limitUm !== null && um !== null && um > asPublished(limitUm - slackUm);
   }
   // Displacement decides where it alone is over: then it is the figure to tell.
   const decider = over.danger ? boundary.danger : boundary.alert;
@@ -158,5 +160,5 @@ function slackOf(rule: Rule, limit: number): number {
 
 /** Four significant digits, without trailing noise. */
 export function figure4(value: number): string {
-  return String(Number(value.toPrecision(4)));
+  return String(asPublished(value));
 }

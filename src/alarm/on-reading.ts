@@ -6,6 +6,7 @@ import type { Baseline } from './baseline.ts';
 import { changeAlarm, type Words } from './change.ts';
 import { type ConditionState, conditionLevel, stepCondition } from './condition.ts';
 import type { AlarmInput } from './effects.ts';
+import { asPublished } from './figure.ts';
 import { groupOf, underGroup, updateGroup } from './group.ts';
 import { type LifeInput, type LifeState, stepLife } from './life-cycle.ts';
 import { judge, type Verdict } from './limits.ts';
@@ -103,7 +104,8 @@ export function onTrend(work: StepWork, input: Extract<AlarmInput, { kind: 'tren
   const rise = riseOver(input.samples, overDays);
   if (rise === null) return;
   // Sure enough: the estimate is over the limit, and even the low end of its interval over half of it.
-  const over = (pct: number | null) => pct !== null && rise.pct > pct && rise.atLeastPct > pct / 2;
+  const over = (pct: number | null) =>
+    pct !== null && asPublished(rise.pct) > pct && rise.atLeastPct > pct / 2;
   const says = { alert: over(alertPct) || over(dangerPct), danger: over(dangerPct) };
   const timing = { onDelayS: 0, offDelayS: 0, readings: null };
   const next = stepCondition(

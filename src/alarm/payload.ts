@@ -4,7 +4,6 @@ import type { Level } from '../config/station.ts';
 import type { Finding } from '../machine/finding-evidence.ts';
 import type { Zone } from '../machine/severity.ts';
 import { rounded } from '../signal/rounded.ts';
-import { asPublished } from './figure.ts';
 import type { LifeState } from './life-cycle.ts';
 import type { AlarmRow } from './state.ts';
 

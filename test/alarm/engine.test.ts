@@ -181,6 +181,25 @@ describe('rules', () => {
     expect(brief(show(null, null, null))).toEqual(['returned-unacknowledged alert']);
   });
 
+  // Figures are published with four significant digits (the topics of the contract): 2.8003 is told as 2.8.
+  test.each([
+    ['above', 2.8, 2.8003, 2.8006],
+    ['below', 2.8, 2.7997, 2.7994],
+  ] as const)('%s %d: what is told as equal to the limit is not beyond it', (kind, alert, equal, beyond) => {
+    const test = { kind, alert, danger: null };
+    const bench = new Bench(onePoint([{ ...zoneRule, test, onDelayS: 0, offDelayS: 0 }]));
+    expect(alarmsIn(bench.read({ mmS: equal }))).toEqual([]);
+    expect(brief(alarmsIn(bench.read({ mmS: beyond })))).toEqual(['unacknowledged alert']);
+  });
+
+  test('a deadband ends where the published figure leaves it: 10 % under 2.8 mm/s is 2.52 mm/s', () => {
+    const test = { kind: 'above', alert: 2.8, danger: null } as const;
+    const bench = new Bench(onePoint([{ ...zoneRule, test, onDelayS: 0, offDelayS: 0 }]));
+    bench.read({ mmS: 3 });
+    expect(alarmsIn(bench.read({ mmS: 2.521 }))).toEqual([]);
+    expect(brief(alarmsIn(bench.read({ mmS: 2.5203 })))).toEqual(['returned-unacknowledged alert']);
+  });
+
   test('below', () => {
     const low = {
       ...zoneRule,

@@ -269,7 +269,7 @@ test('a machine whose zone flaps sends its state twice a minute, and leaves room
   expect(statesIn(told).map(({ severity }) => severity)).toContain(2);
 });
 
-test('a stop, a start and an acknowledgement are told at once, whatever details came before', () => {
+test('a stop and a start are told at once, whatever details came before', () => {
   const { bench, all } = many(1, 2);
   const show = (shown: object) => {
     const one = { ...all(1)['pump-1/p1'], ...shown };
