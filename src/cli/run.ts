@@ -37,13 +37,18 @@ export async function runCommand({ config, version }: { config: string; version:
     await starting;
   } catch (error) {
     // Its threads would keep the process for ever.
-    await agent.stop();
+    await agent.stop().catch((trouble: unknown) => log.error('what was started did not stop', trouble));
+    endSoon();
     throw error;
   }
   if (agent.embeddedPort !== null) log.info('embedded broker on loopback', { port: agent.embeddedPort });
   await stopped;
   await agent.stop();
-  // What hangs (a disk, a device) must not keep a stopped agent from ending.
-  setTimeout(() => process.exit(0), 100).unref();
+  endSoon();
   return 0;
+}
+
+/** With the status that the command leaves. What hangs (a disk, a device) must not keep a stopped agent from ending. */
+function endSoon(): void {
+  setTimeout(() => process.exit(), 100).unref();
 }

@@ -35,7 +35,13 @@ export class EmbeddedBroker {
 
   static async open(settings: EmbeddedBrokerSettings): Promise<EmbeddedBroker> {
     const broker = new EmbeddedBroker(settings);
-    await broker.#listen();
+    try {
+      await broker.#listen();
+    } catch (error) {
+      // The timers of aedes would keep the process for ever.
+      await broker.close();
+      throw error;
+    }
     return broker;
   }
 

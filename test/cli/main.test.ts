@@ -1,5 +1,7 @@
 import { spawnSync } from 'node:child_process';
+import { once } from 'node:events';
 import { mkdtempSync, rmSync, writeFileSync } from 'node:fs';
+import { type AddressInfo, createServer } from 'node:net';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
 import { afterAll, describe, expect, it } from 'vitest';
@@ -64,4 +66,30 @@ describe('the command line', () => {
     expect(status).toBe(2);
     expect(stderr).toMatch(/absent\.yaml.*\n.*\(file\.unreadable\)/);
   });
+
+  it('run ends with status 1 and stops what it began when the port of its broker is taken', async () => {
+    const holder = createServer().listen(0, '127.0.0.1');
+    await once(holder, 'listening');
+    const { port } = holder.address() as AddressInfo;
+    const file = join(folder, 'busy.yaml');
+    writeFileSync(
+      file,
+      `site: {id: busy}
+storage: {directory: ${join(folder, 'busy')}}
+broker: {embedded: {port: ${port}}}
+links: [{id: n, serial: {path: ${join(folder, 'absent')}}}]
+machines: [{id: p, shaft: {rpm: 1470}, points: [{id: h, link: n, channel: h}]}]
+`,
+    );
+    const args = [command, 'run', '-c', file];
+    const { status, stderr } = spawnSync(process.execPath, args, {
+      encoding: 'utf8',
+      timeout: 20_000,
+      killSignal: 'SIGKILL',
+    });
+    holder.close();
+    expect(status, stderr).toBe(1);
+    expect(stderr).toContain(`port ${port} of 127.0.0.1`);
+    expect(stderr).toContain('"msg":"stopped"');
+  }, 30_000);
 });
