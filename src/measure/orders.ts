@@ -1,12 +1,16 @@
 /** The first three harmonics of the shaft: velocity, and its lag behind the tachometer. */
 
+import { strongestBin } from '../signal/spectrum.ts';
 import { makeWindow } from '../signal/window.ts';
 import type { DecimatedRecord } from './decimated.ts';
+import { overFloorDb } from './lines.ts';
 import type { OrderReading, Reading } from './reading.ts';
 import { type TachometerSpeed, turnsAt } from './tachometer.ts';
 import { lineVelocity } from './velocity.ts';
 
 const ORDERS = [1, 2, 3] as const;
+/** Below this over its floor an order may be noise, whose phase is chance. */
+const STANDS_OUT_DB = 10;
 const NOTHING: OrderReading = { mm_s: null, deg: null };
 
 export const NO_ORDERS: Reading['orders'] = { '1': NOTHING, '2': NOTHING, '3': NOTHING };
@@ -29,10 +33,15 @@ export function orderFigures(
     if (hz < leastHz || hz + 2 * record.spectrum.lineHz > record.fmaxHz) continue;
     orders[order] = {
       mm_s: lineVelocity(record.spectrum, hz, record.spectrum.lineHz)?.mmS ?? null,
-      deg: tachometer === null ? null : lagDegrees(record, order, tachometer),
+      deg: tachometer === null || !standsOut(record, hz) ? null : lagDegrees(record, order, tachometer),
     };
   }
   return orders;
+}
+
+function standsOut({ spectrum }: DecimatedRecord, hz: number): boolean {
+  const bin = strongestBin(spectrum, [hz - spectrum.lineHz, hz + spectrum.lineHz]);
+  return bin !== null && overFloorDb(spectrum, bin) >= STANDS_OUT_DB;
 }
 
 /**

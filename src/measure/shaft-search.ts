@@ -35,7 +35,13 @@ export function searchShaft(
   rateHz: number,
 ): SpeedFinding {
   const range = rangeOf(plan);
-  const fromAcceleration = speedLines(decimated.samples, decimated.rateHz, decimated.fmaxHz, plan);
+  const fromAcceleration = speedLines(
+    decimated.samples,
+    decimated.rateHz,
+    decimated.fmaxHz,
+    plan,
+    meanSquareOf(acceleration),
+  );
   const first = findShaftSpeed([fromAcceleration], range);
   const bandHz = envelopeBandHz(plan, acceleration.length, rateHz);
   if ((first.hz !== null && first.confidence > SETTLED) || bandHz === null) return first;
@@ -51,7 +57,7 @@ export function speedDrift(
   const range = rangeOf(plan);
   const middle = decimated.samples.length >> 1;
   const [from, to] = [decimated.samples.subarray(0, middle), decimated.samples.subarray(middle)].map((half) =>
-    findShaftSpeed([speedLines(half, decimated.rateHz, decimated.fmaxHz, plan)], range),
+    findShaftSpeed([speedLines(half, decimated.rateHz, decimated.fmaxHz, plan, meanSquareOf(half))], range),
   );
   if (from?.hz == null || to?.hz == null || Math.min(from.confidence, to.confidence) < SETTLED) return null;
   return {
@@ -96,16 +102,30 @@ function envelopeLines(
     fmaxHz: topHz,
     attenuationDb: ATTENUATION_DB,
   });
-  return speedLines(decimate(decimation, envelope.values), envelope.rateHz / factor, topHz, plan);
+  const samples = decimate(decimation, envelope.values);
+  return speedLines(samples, envelope.rateHz / factor, topHz, plan, meanSquareOf(envelope.values));
 }
 
-function speedLines(samples: Float64Array, rateHz: number, fmaxHz: number, plan: PointPlan): SpeedLines {
+/** @param wholeMeanSquare of what the samples were filtered from, mean included. */
+function speedLines(
+  samples: Float64Array,
+  rateHz: number,
+  fmaxHz: number,
+  plan: PointPlan,
+  wholeMeanSquare: number,
+): SpeedLines {
   const wanted = Math.round((BLOCK_TURNS * rateHz) / rangeOf(plan).lowHz);
   const blockSamples = Math.min(wanted, Math.floor(samples.length / LEAST_BLOCKS));
   const spectrum = averagedSpectrum(samples, { rateHz, blockSamples, window: 'hann' });
   return {
-    lines: linesOverFloor(spectrum, [LEAST_HZ, fmaxHz], LEAST_LINE_DB),
+    lines: linesOverFloor(spectrum, [LEAST_HZ, fmaxHz], LEAST_LINE_DB, wholeMeanSquare),
     lineHz: spectrum.lineHz,
     fmaxHz,
   };
+}
+
+function meanSquareOf(samples: Float64Array): number {
+  let sum = 0;
+  for (let i = 0; i < samples.length; i++) sum += samples[i]! * samples[i]!;
+  return sum / samples.length;
 }

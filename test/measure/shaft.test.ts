@@ -66,6 +66,17 @@ describe('shaft speed of a reading', () => {
     expect(reading.why).toEqual(['speed unknown: no line stands out where it could be']);
   });
 
+  it.each([
+    [200, 1],
+    [160, 1],
+  ])('is not found in the rounding of a lone tone at %d Hz, %d g', (hz, g) => {
+    // Whole counts of a tone with a whole period have no noise at all: the rest is arithmetic.
+    const options = { rateHz: 40_960, samples: planOf().recordSamples, noiseG: 0 };
+    const reading = measureRecord(planOf(), recordOf({ ...options, tones: [[hz, g]] }));
+    expect(reading.shaft).toEqual({ hz: null, source: null });
+    expect(reading.orders['1'].mm_s).toBeNull();
+  });
+
   it('is not synchronous speed on mains, and may be on an inverter', () => {
     const shaft = { kind: 'fixed', rpm: 1490, tolerancePct: 3 } as const;
     const tones: Tone[] = [[25, gOfVelocity(3, 25)]];

@@ -102,6 +102,17 @@ describe('a reading with a tachometer', () => {
     expect(reading.orders['1'].deg).toBeNull();
   });
 
+  it('has no phase where nothing stands out of the noise: its phase would be chance', () => {
+    const first = [tone(1, 4, 70)];
+    for (let seed = 1; seed <= 5; seed++) {
+      const noisy = { rateHz: RATE_HZ, samples, noiseG: 0.1, seed, tachometer: { counts, pulsesPerRev: 1 } };
+      const { orders } = measureRecord(plan, recordOf({ ...noisy, tones: first }));
+      expect(Math.abs(orders['1'].deg! - 70)).toBeLessThan(1);
+      expect(orders['2'].mm_s).toBeGreaterThan(0);
+      expect([orders['2'].deg, orders['3'].deg]).toEqual([null, null]);
+    }
+  });
+
   it('has no phase with several pulses a turn: none of them is the mark', () => {
     const many = { counts: pulses(samples, (i) => 0.37 + (24.683 * i) / RATE_HZ, 2), pulsesPerRev: 2 };
     const reading = measureRecord(plan, { ...record, tachometer: many });
