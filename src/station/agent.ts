@@ -16,8 +16,7 @@ import { emptyForgotten } from '../uplink/retained.ts';
 import { topicsOf } from '../uplink/topics.ts';
 import { Uplink } from '../uplink/uplink.ts';
 import { clockState, type StationClock, systemClock } from './clock.ts';
-import { healthBody } from './health.ts';
-import { HealthSchedule } from './health-schedule.ts';
+import { HealthPost } from './health-post.ts';
 import { noteEntry } from './journal-entry.ts';
 import { Judging } from './judging.ts';
 import { Learning } from './learning.ts';
@@ -56,6 +55,18 @@ export interface AgentOptions {
   manager?: ServiceManager;
 }
 
+/** What there is once the store is open. */
+interface Parts {
+  uplink: Uplink;
+  ids: MessageIds;
+  judge: LiveJudge;
+  judging: Judging;
+  post: ReadingPost;
+  learning: Learning;
+  keeper: SnapshotKeeper;
+  snapshots: SnapshotAsks;
+}
+
 export class Agent {
   #station: Station;
   readonly #options: AgentOptions;
@@ -68,22 +79,11 @@ export class Agent {
   readonly #supervision: Supervision | null;
   readonly #vitals: Vitals;
   readonly #watch: StoreWatch;
-  #parts: {
-    uplink: Uplink;
-    ids: MessageIds;
-    judge: LiveJudge;
-    judging: Judging;
-    post: ReadingPost;
-    learning: Learning;
-    keeper: SnapshotKeeper;
-    snapshots: SnapshotAsks;
-  } | null = null;
+  #parts: Parts | null = null;
   #clockSays: 'synchronised' | 'free' = 'free';
   #timer: NodeJS.Timeout | null = null;
   #tickS = 0;
-  #healthSchedule: HealthSchedule | null = null;
-  /** Links that are not receiving. */
-  readonly #troubled = new Set<string>();
+  #health: HealthPost | null = null;
   #clockS = 0;
   #risesS = 0;
   #reloading: Promise<void> = Promise.resolve();
@@ -118,9 +118,7 @@ export class Agent {
       reading: (point, reading, wallMs, elapsedS) => this.#reading(point, reading, wallMs, elapsedS),
       condition: (link, conditions, why) => {
         if (why !== null) this.#log.warn(`link ${link} is not receiving`, { conditions, why });
-        if (why !== null || this.#troubled.has(link)) this.#healthSchedule?.changed(this.#clock.monotonicS());
-        if (why === null) this.#troubled.delete(link);
-        else this.#troubled.add(link);
+        this.#health?.linkChanged(link, why === null, this.#clock.monotonicS());
         void this.#parts?.judge.take({ kind: 'link', link, conditions, detail: why, t: this.#now() });
       },
     });
@@ -160,7 +158,7 @@ export class Agent {
     this.#links.start();
     this.#vitals.start();
     this.#tickS = this.#clock.monotonicS();
-    this.#healthSchedule = new HealthSchedule(this.#tickS);
+    this.#health = this.#makeHealth(parts);
     this.#risesS = this.#tickS - RISES_EVERY_S;
     this.#timer = setInterval(() => this.#tick(), TICK_MS);
     this.#log.info('running', { site: this.#station.site.id, config: this.#station.configHash });
@@ -361,10 +359,8 @@ export class Agent {
     this.#parts?.post.tick();
     this.#parts?.keeper.tick();
     this.#supervision?.tick();
+    this.#health?.tick(nowS);
     this.#tickS = nowS;
-    if (this.#healthSchedule?.isDue(nowS, this.#errorsSoFar()) === true) {
-      this.#sendHealth().catch((error) => this.#watch.failed(error));
-    }
     if (nowS - this.#clockS >= CLOCK_CHECK_S) {
       this.#clockS = nowS;
       void this.#checkClock();
@@ -390,19 +386,16 @@ export class Agent {
     await this.#parts?.uplink.agentChanged();
   }
 
-  async #sendHealth(): Promise<void> {
-    const parts = this.#parts;
-    if (!parts) return;
-    const message = outboxMessage(
-      parts.ids,
-      'health',
-      topicsOf(this.#station.site.id).health,
-      healthBody({
-        t: this.#now(),
-        links: this.#links.health(),
-        store: await this.#store.counters(),
-        uplink: parts.uplink.status(),
-        measuring: {
+  #makeHealth(parts: Parts): HealthPost {
+    return new HealthPost(
+      {
+        store: this.#store,
+        ids: parts.ids,
+        vitals: this.#vitals,
+        directory: this.#station.storage.directory,
+        uplink: () => parts.uplink,
+        links: () => this.#links.health(),
+        measuring: () => ({
           waiting: this.#room.waiting,
           missed: this.#room.missed,
           skipped: this.#links.skipped,
@@ -411,15 +404,13 @@ export class Agent {
           readings_held: parts.post.held,
           alarm_inputs_dropped: parts.judge.dropped,
           told_unreadable: this.#told.unreadable,
-        },
-        snapshots: parts.keeper.counters(),
-        eventLoopP99Ms: this.#vitals.loopP99Ms(),
-        directory: this.#station.storage.directory,
-        cpuPct: this.#vitals.cpuPct(),
-      }),
+        }),
+        snapshots: () => parts.keeper.counters(),
+        now: () => this.#now(),
+        failed: (error) => this.#watch.failed(error),
+      },
+      this.#tickS,
     );
-    await this.#store.commit({ outbox: [message] });
-    parts.uplink.kick();
   }
 
   #gateway(
@@ -428,15 +419,7 @@ export class Agent {
     detail: string | null,
   ): void {
     void this.#parts?.judge.take({ kind: 'gateway', condition, holds, detail, t: this.#now() });
-    this.#healthSchedule?.changed(this.#clock.monotonicS());
-  }
-
-  /** Everything in `health` that counts what went wrong, added up. */
-  #errorsSoFar(): number {
-    const sum = (counts: Readonly<Record<string, number>>) =>
-      Object.values(counts).reduce((a, b) => a + b, 0);
-    const links = Object.values(this.#links.health()).map((link) => link.gaps + sum(link.errors));
-    return sum(this.#room.missed) + this.#links.skipped + links.reduce((a, b) => a + b, 0);
+    this.#health?.changed(this.#clock.monotonicS());
   }
 
   #logLinks(): void {

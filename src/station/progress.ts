@@ -3,7 +3,7 @@
  * still for too long while it has something to do is stuck, and only a new process helps.
  */
 
-/** Longer than anything here waits for in the run of a fault that it deals with itself. */
+/** Longer than anything here waits while it deals with a fault by itself. */
 export const STUCK_AFTER_S = 40;
 
 export class Progress {
