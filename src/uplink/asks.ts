@@ -75,7 +75,7 @@ export class AskDispatcher {
     this.#host = host;
     const nowS = host.monotonicS();
     this.#served = new Bucket(10, 1, nowS);
-    this.#refusals = new Bucket(10, 0.2, nowS);
+    this.#refusals = new Bucket(60, 5, nowS);
   }
 
   handle<V extends AskVerb>(verb: V, handler: AskHandler<V>): void {
@@ -127,8 +127,7 @@ export class AskDispatcher {
 
   #objection(verb: string, payload: Buffer, body: Record<string, unknown> | null): string | null {
     if (!this.#served.take(this.#host.monotonicS())) return 'too many asks: wait a few seconds';
-    if (payload.byteLength > maxBytes)
-      return `an ask may have ${maxBytes} bytes, this one has ${payload.byteLength}`;
+    if (payload.byteLength > maxBytes) return `an ask may have ${maxBytes} bytes, this one has more`;
     if (body === null) return 'the payload is not a JSON object';
     if (!Object.hasOwn(askSchemas, verb)) return 'there is no such ask';
     if (!this.#enabled.has(verb)) return `${verb} is not enabled at this station`;

@@ -21,7 +21,7 @@ export interface ConnectionSettings {
   readonly protocol: 4 | 5;
   readonly keepaliveS: number;
   readonly connectTimeoutMs: number;
-  /** Larger packets from the broker cut the connection. */
+  /** Larger packets from the broker are cut short. */
   readonly maxInboundBytes: number;
   readonly will: { readonly topic: string; readonly payload: Buffer };
 }
@@ -49,6 +49,8 @@ export interface ConnectionHost {
   up(connection: Connection): void;
   down(connection: Connection, end: End): void;
   message(topic: string, payload: Buffer, retained: boolean): void;
+  /** A packet is larger than agreed; of a message only the beginning will come. */
+  oversized(): void;
 }
 
 /** The broker answered a publish with a reason of 0x80 or more (MQTT 5, 3.4.2.1). */
@@ -176,11 +178,17 @@ export class Connection {
     return stream;
   }
 
+  /** Puts the guard where the bytes come in: MQTT.js, which makes a WebSocket itself, reads behind it. */
   #watch(stream: Duplex): Duplex {
-    const guard = new PacketGuard(this.#settings.maxInboundBytes);
-    stream.on('data', (chunk: Buffer) => {
-      if (!guard.accepts(chunk)) this.kill('the broker sent a packet that is larger than agreed');
-    });
+    const guard = new PacketGuard(this.#settings.maxInboundBytes, () => this.#host.oversized());
+    const push = stream.push.bind(stream);
+    stream.push = (chunk: Buffer | null) => {
+      if (chunk === null) return push(null);
+      const rest = guard.filter(chunk);
+      if (rest !== null) return push(rest);
+      this.kill('the broker sent a packet whose length makes no sense');
+      return false;
+    };
     stream.on('error', (error) => this.#noteError(error));
     return stream;
   }

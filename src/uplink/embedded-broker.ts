@@ -109,11 +109,11 @@ export class EmbeddedBroker {
     }
     this.#sockets.add(socket);
     socket.on('close', () => this.#sockets.delete(socket));
-    const guard = new PacketGuard(this.#settings.maxPacketBytes);
+    const guard = new PacketGuard(this.#settings.maxPacketBytes, () => socket.destroy());
     this.#aedes.handle(socket);
     // `data` comes with each read of aedes, before its parser sees the bytes.
     socket.on('data', (chunk: Buffer) => {
-      if (!guard.accepts(chunk)) socket.destroy();
+      if (guard.filter(chunk) === null) socket.destroy();
     });
   }
 }

@@ -26,6 +26,7 @@ export function uplinkHealth(
       protocol: status.protocol,
       connects: status.connects,
       asks: { ...status.asks },
+      oversized: status.oversized,
       bytes_today: Object.fromEntries(
         status.bytesToday.map((line) => [line.class, { sent: line.sentBytes, received: line.receivedBytes }]),
       ),

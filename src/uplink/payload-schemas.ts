@@ -165,6 +165,7 @@ const health = z.looseObject({
     protocol: z.enum(['5', '3.1.1']).nullable(),
     connects: count,
     asks: z.record(z.string(), count),
+    oversized: count.optional(),
     bytes_today: bytesByClass,
     left_today: count,
   }),

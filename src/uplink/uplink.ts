@@ -63,6 +63,8 @@ export interface UplinkStatus {
   connects: number;
   inFlight: number;
   asks: AskCounters;
+  /** Packets from the broker that were larger than agreed. */
+  oversized: number;
   bytesToday: readonly BudgetLine[];
   leftTodayBytes: number;
 }
@@ -78,7 +80,7 @@ const usualTiming: UplinkTiming = {
   bookEveryMs: 60_000,
 };
 const maxInFlight = 16;
-const maxInboundBytes = 16_384;
+const maxInboundBytes = 131_072;
 const usualMaxPacketBytes = 256 * 1024;
 const slowestBytesPerS = 1000;
 const maxCommandBytes = 256;
@@ -101,6 +103,7 @@ export class Uplink {
   #lastBlock: AgentBlock | null = null;
   #marker: ((payload: Buffer) => void) | null = null;
   #connects = 0;
+  #oversized = 0;
   readonly #warned = new Set<string>();
 
   constructor(settings: UplinkSettings, host: UplinkHost) {
@@ -227,6 +230,7 @@ export class Uplink {
       connects: this.#connects,
       inFlight: this.#drainer.inFlight,
       asks: { ...this.#asks.counters },
+      oversized: this.#oversized,
       bytesToday: this.#ledger.lines(),
       leftTodayBytes: this.#ledger.leftBytes(),
     };
@@ -276,6 +280,12 @@ export class Uplink {
         down(end);
       },
       message: (topic, payload, retained) => this.#message(topic, payload, retained),
+      oversized: () => {
+        this.#oversized++;
+        this.#host.log('warn', 'the broker sent a packet larger than agreed; the surplus is dropped', {
+          maxBytes: maxInboundBytes,
+        });
+      },
     });
     this.#ledger.follow(connection.meter);
     return connection;

@@ -184,7 +184,7 @@ describe.runIf(haveSocat)('asks', () => {
     };
     expect(await error('readings', '{"id":"m-1", oops', 'm-1')).toBe('the payload is not a JSON object');
     const large = JSON.stringify({ id: 'm-2', machine: 'pump-1', by, text: 'x'.repeat(5000) });
-    expect(await error('note', large, 'm-2')).toMatch(/^an ask may have 4096 bytes, this one has 50\d\d$/);
+    expect(await error('note', large, 'm-2')).toBe('an ask may have 4096 bytes, this one has more');
     expect(await refused('dance', {})).toBe('there is no such ask');
     expect(await refused('snapshot', { machine: 'pump-1' })).toBe('snapshot is not enabled at this station');
     const answers = () => rig.heard.filter(({ topic }) => topic.startsWith('answer/')).length;
@@ -199,7 +199,7 @@ describe.runIf(haveSocat)('asks', () => {
     expect(answers() - before).toBe(1);
   }, 60_000);
 
-  it('refuses what comes too fast, and then ignores it', async () => {
+  it('answers each of thirty that come at once, and refuses those that are too many', async () => {
     await sleep(10_000);
     await Promise.all(
       Array.from({ length: 30 }, (_, i) =>
@@ -207,15 +207,12 @@ describe.runIf(haveSocat)('asks', () => {
       ),
     );
     await sleep(2000);
-    const answers = Array.from({ length: 30 }, (_, i) => rig.last(`answer/f-${i}`)).filter(
-      (a) => a !== undefined,
-    );
+    const answers = Array.from({ length: 30 }, (_, i) => rig.last(`answer/f-${i}`)!);
+    expect(answers).not.toContain(undefined);
     const served = answers.filter(({ ok }) => ok === true);
     expect(served.length).toBeGreaterThan(0);
     expect(served.length).toBeLessThanOrEqual(11);
     for (const { error } of answers.filter(({ ok }) => ok === false)) expect(error).toMatch(/^too many asks/);
-    expect(answers.length).toBeGreaterThan(served.length);
-    expect(answers.length).toBeLessThan(30);
   }, 40_000);
 
   it('the journal command prints the same, while the agent runs and after it', async () => {

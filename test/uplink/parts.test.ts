@@ -26,31 +26,64 @@ describe('the packet guard', () => {
   const pingreq = Buffer.from([0xc0, 0]);
   const stream = (sizes: readonly number[]) => Buffer.concat([...sizes.map(publish), pingreq]);
 
+  /** What goes on of a stream that comes in these pieces, and how many packets were too large. */
+  const through = (most: number, bytes: Buffer, edges: readonly number[]) => {
+    let oversized = 0;
+    const guard = new PacketGuard(most, () => oversized++);
+    const pieces = edges.map((edge, i) => guard.filter(bytes.subarray(edges[i - 1] ?? 0, edge)));
+    return { oversized, out: Buffer.concat(pieces.map((piece) => piece!)) };
+  };
+  const byteByByte = (bytes: Buffer) => Array.from(bytes, (_, i) => i + 1);
+
   it('lets packets pass up to the size agreed and not one byte more, wherever the stream is split', () => {
-    const sizes = [0, 5, 121, 122, 123, 124, 125, 300];
-    const bytes = stream(sizes);
+    const bytes = stream([0, 5, 121, 122, 123, 300, 124, 125]);
     const largest = publish(300).length;
+    // Of one that is a byte too large goes on what fits with a header of five bytes; the rest as it came.
+    const cut = Buffer.concat([
+      ...[0, 5, 121, 122, 123].map(publish),
+      publish(largest - 1 - 5 - 3),
+      ...[124, 125].map(publish),
+      pingreq,
+    ]);
+    const holds = (edges: readonly number[]) => {
+      expect(through(largest, bytes, edges)).toEqual({ oversized: 0, out: bytes });
+      expect(through(largest - 1, bytes, edges)).toEqual({ oversized: 1, out: cut });
+    };
+    holds(byteByByte(bytes));
     fc.assert(
-      fc.property(fc.array(fc.nat(bytes.length), { maxLength: 12 }), (cuts) => {
-        const edges = [0, ...cuts.toSorted((a, b) => a - b), bytes.length];
-        const verdict = (most: number) => {
-          const guard = new PacketGuard(most);
-          return edges.slice(1).every((edge, i) => guard.accepts(bytes.subarray(edges[i], edge)));
-        };
-        expect(verdict(largest)).toBe(true);
-        expect(verdict(largest - 1)).toBe(false);
-      }),
+      fc.property(fc.array(fc.nat(bytes.length), { maxLength: 12 }), (cuts) =>
+        holds([...cuts.toSorted((a, b) => a - b), bytes.length]),
+      ),
       { seed: 11, numRuns: 200 },
     );
   });
 
-  it('refuses a length that does not end', () => {
-    expect(new PacketGuard(1e9).accepts(Uint8Array.from([0x30, 0xff, 0xff, 0xff, 0xff, 1]))).toBe(false);
+  it('keeps type, QoS, topic and packet identifier of a message that it cuts short', () => {
+    // PUBLISH of QoS 1, retained: flags 3, the identifier after the topic (MQTT 3.1.1, 3.3.1 and 3.3.2).
+    const body = Buffer.concat([Buffer.from([0, 1, 0x74, 0x12, 0x34]), Buffer.alloc(500, 0x78)]);
+    const bytes = Buffer.concat([Buffer.from([0x33, 0xf9, 0x03]), body, pingreq]);
+    const expected = Buffer.concat([Buffer.from([0x33, 95]), body.subarray(0, 95), pingreq]);
+    for (const edges of [[bytes.length], byteByByte(bytes)])
+      expect(through(100, bytes, edges)).toEqual({ oversized: 1, out: expected });
   });
 
-  it('refuses at the header, before the bytes come', () => {
+  it('drops whole what is too large and no message', () => {
+    // SUBACK of 300 bytes (MQTT 3.1.1, 3.9).
+    const bytes = Buffer.concat([publish(5), Buffer.from([0x90, 0xac, 0x02]), Buffer.alloc(300), pingreq]);
+    const expected = Buffer.concat([publish(5), pingreq]);
+    for (const edges of [[bytes.length], byteByByte(bytes)])
+      expect(through(100, bytes, edges)).toEqual({ oversized: 1, out: expected });
+  });
+
+  it('gives up on a length that does not end', () => {
+    const guard = new PacketGuard(1e9, () => undefined);
+    expect(guard.filter(Buffer.from([0x30, 0xff, 0xff, 0xff, 0xff, 1]))).toBeNull();
+  });
+
+  it('tells of it at the header, before the bytes come', () => {
     // Remaining length 2 097 151 in three bytes (MQTT 5, 1.5.5).
-    expect(new PacketGuard(1000).accepts(Uint8Array.from([0x30, 0xff, 0xff, 0x7f]))).toBe(false);
+    const header = Buffer.from([0x30, 0xff, 0xff, 0x7f]);
+    expect(through(1000, header, [4]).oversized).toBe(1);
   });
 });
 
@@ -163,11 +196,11 @@ describe('asks', () => {
   it('that come too fast are refused, then not even that, and taken again after a while', async () => {
     nowS = 0;
     const { asks, answers, take } = make();
-    for (let k = 0; k < 50; k++) await take('readings', { id: `fast-${k}` });
-    expect(asks.counters).toEqual({ done: 10, refused: 10, ignored: 30 });
+    for (let k = 0; k < 200; k++) await take('readings', { id: `fast-${k}` });
+    expect(asks.counters).toEqual({ done: 10, refused: 60, ignored: 130 });
     expect(answers.at(-1)).toEqual([
-      'fast-19',
-      { ask: 'fast-19', ok: false, error: 'too many asks: wait a few seconds' },
+      'fast-69',
+      { ask: 'fast-69', ok: false, error: 'too many asks: wait a few seconds' },
     ]);
     nowS = 3;
     for (let k = 0; k < 5; k++) await take('readings', { id: `slow-${k}` });

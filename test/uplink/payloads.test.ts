@@ -150,6 +150,7 @@ describe('the health sections', () => {
       connects: 2,
       inFlight: 1,
       asks: { done: 1, refused: 0, ignored: 3 },
+      oversized: 2,
       bytesToday: [{ day: 1, class: 'link', sentBytes: 500, receivedBytes: 300 }],
       leftTodayBytes: 1_999_200,
     };
