@@ -5,9 +5,9 @@
  * `zone` is over from k = 10 on, told at 15, and stays: 3.7 is above 3.6. From k = 60 on it is not, told at 65.
  * `bare` is told at 10, falls at 21, is told anew at 22, falls at 23, and the third announcement within a minute at 24
  * is chattering: it is held until it has been off for 60 s, k = 58 being its last time on, and returns at 118.
- * Six messages of a machine fit into a minute. Two of its state (at 0 and at 10) and four alarms are sent by 22; what
- * happened at 23 and 24 waits until the first of them is a minute old, and is told as it then stands, with the time of
- * its last change. The journal has both.
+ * Six messages of a machine fit into a minute. Three of its state (at 0, and at 10 and 15 with each announcement) and
+ * three alarms are sent by 21; what happened at 22, 23 and 24 waits until the first of them is a minute old, and is told
+ * as it then stands, with the time of its last change. The journal has all three.
  */
 import { type Case, tell } from '../signal.ts';
 
