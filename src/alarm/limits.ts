@@ -108,7 +108,7 @@ function judgeLimits(
   const value = asPublished(figure.value);
   const beyond = (level: Level, slack: number) => {
     const at = limit[level];
-    return at !== null && sign * value > asPublished(sign * at - slack);
+    return at !== null && sign * value > (slack === 0 ? sign * at : asPublished(sign * at - slack));
   };
   const levels = (slack: (at: number) => number) => ({
     alert: beyond('alert', slack(limit.alert ?? 0)) || beyond('danger', slack(limit.danger ?? 0)),
@@ -133,20 +133,22 @@ function judgeZones(rule: Rule, point: Point, reading: Reading): Verdict | null 
   const boundary = { alert: 1, danger: 2 } as const;
   const over = { alert: reading.zone === 'C' || reading.zone === 'D', danger: reading.zone === 'D' };
   const near = { alert: over.alert, danger: over.danger };
+  let heldByUm = false;
   for (const level of LEVELS) {
     const limitMmS = table.velocityMmS[boundary[level]];
     const limitUm = table.displacementUm?.[boundary[level]] ?? null;
     const slackUm = limitUm !== null && 'pct' in rule.deadband ? slackOf(rule, limitUm) : 0;
-    near[level] ||= mmS > asPublished(limitMmS - slackOf(rule, limitMmS));
-    near[level] ||= limitUm !== null && um !== null && um > asPublished(limitUm - slackUm);
+    const nearMmS = mmS > asPublished(limitMmS - slackOf(rule, limitMmS));
+    const nearUm = limitUm !== null && um !== null && um > asPublished(limitUm - slackUm);
+    near[level] ||= nearMmS || nearUm;
+    if (level === 'alert') heldByUm = nearUm && !nearMmS;
   }
-  // Displacement decides where it alone is over: then it is the figure to tell.
+  // Displacement decides where it alone is over, or holds: then it is the figure to tell.
   const decider = over.danger ? boundary.danger : boundary.alert;
   const byDisplacement =
     table.displacementUm !== null &&
     um !== null &&
-    um > table.displacementUm[decider] &&
-    mmS <= table.velocityMmS[decider];
+    ((um > table.displacementUm[decider] && mmS <= table.velocityMmS[decider]) || (!over.alert && heldByUm));
   const [shown, boundaries, unit] = byDisplacement
     ? [um, table.displacementUm!, 'µm']
     : [mmS, table.velocityMmS, 'mm/s'];

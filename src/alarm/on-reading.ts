@@ -20,6 +20,7 @@ import {
   clearedReason,
   conditionCheck,
   conditionReason,
+  fallenReason,
   resumedReason,
   riseReason,
   sensorClearedReason,
@@ -68,20 +69,21 @@ function judgeRule(
 ): void {
   const verdict = judge(alarm.rule, alarm.point, reading, baseline);
   if (verdict === null) return;
-  const next = stepCondition(work.alarm(alarm.key).condition, alarm.timing, verdict, elapsedS, work.t);
-  const level = conditionLevel(next);
-  applyCondition(work, alarm, next, elapsedS, conditionWords(alarm, verdict, next, level), reading);
+  const was = work.alarm(alarm.key).condition;
+  const next = stepCondition(was, alarm.timing, verdict, elapsedS, work.t);
+  applyCondition(work, alarm, next, elapsedS, conditionWords(alarm, verdict, was, next), reading);
 }
 
 function conditionWords(
   alarm: PointAlarm,
   verdict: Verdict,
+  was: ConditionState,
   next: ConditionState,
-  level: Level | null,
 ): Words {
   const { value, unit, limit } = verdict;
+  const level = conditionLevel(next);
   if (level === null) {
-    const reason = clearedReason(alarm.rule.watch, alarm.timing);
+    const reason = clearedReason(alarm.rule, alarm.timing);
     return { value, unit, limit: limit.alert ?? limit.danger, reason };
   }
   return {
@@ -89,7 +91,10 @@ function conditionWords(
     unit,
     limit: limit[level],
     since: next[level].since,
-    reason: conditionReason(alarm.rule, verdict, level),
+    reason:
+      level === 'alert' && was.danger.on
+        ? fallenReason(alarm.rule, verdict)
+        : conditionReason(alarm.rule, verdict, level),
     check: conditionCheck(alarm.rule.watch, level),
   };
 }

@@ -40,19 +40,52 @@ function forHowLong(timing: Timing): string {
 
 /** What was measured, against which limit and whose, for how long. */
 export function conditionReason(rule: Rule, verdict: Verdict, level: Level): string {
-  const what = figureWords(rule.watch);
   const long = forHowLong(rule);
-  if (rule.test.kind === 'is') return `${what} accuse ${verdict.value ?? 'nothing now'}${long}`;
-  const limit = verdict.limit[level];
-  const side = watchesFall(rule.test) ? 'below' : 'above';
-  const at = limit === null ? '' : ` ${figure4(limit)}${verdict.unit ? ` ${verdict.unit}` : ''}`;
-  if (rule.test.kind === 'zones') {
-    const shown = verdict.unit === 'µm' ? 'displacement rms' : what;
-    return `${shown} ${side}${at}${long}: zone ${level === 'danger' ? 'D' : 'C'}, ${verdict.whose}`;
+  if (rule.test.kind === 'is') return `${wordReason(rule.watch, rule.test.values, verdict.value)}${long}`;
+  return `${shownFigure(rule, verdict)} ${beyond(rule, verdict, level)}${long}: ${whoseLimit(rule, verdict, level)}`;
+}
+
+/** Danger is over while the alert still stands: by a figure over its limit, its deadband or its off-delay. */
+export function fallenReason(rule: Rule, verdict: Verdict): string {
+  const what = shownFigure(rule, verdict);
+  const clear = forHowLong({ ...rule, onDelayS: rule.offDelayS });
+  if (rule.readings !== null) {
+    const alert = limitWords(verdict, 'alert');
+    return `danger is over: ${what} no longer ${beyond(rule, verdict, 'danger')}${clear}; alert is held: not yet so for ${alert}`;
   }
-  const times = rule.test.kind === 'baseline' ? rule.test[level] : null;
-  const factor = times === null ? '' : `, factor ${figure4(times)}`;
-  return `${what} ${side}${at}${long}: ${level} limit of ${verdict.whose}${factor}`;
+  const over = `danger is over: ${what} back within ${limitWords(verdict, 'danger')} and its deadband${clear}`;
+  const side = beyond(rule, verdict, 'alert');
+  if (verdict.over.alert) return `${over}; alert stands: ${side}, ${whoseLimit(rule, verdict, 'alert')}`;
+  return verdict.near.alert
+    ? `${over}; alert is held: not ${side}, but still within the deadband of that limit`
+    : `${over}; alert is held: no longer ${side}, but not yet clear of its deadband${clear}`;
+}
+
+/** What a rule for words has seen; a bearing is accused, everything else just is. */
+function wordReason(watch: string, values: readonly string[], value: Verdict['value']): string {
+  const what = figureWords(watch);
+  return watch === 'envelope.defect'
+    ? `${what} accuse ${value ?? 'nothing now'}`
+    : `${what} is ${values.join(' or ')}`;
+}
+
+function shownFigure({ watch, test }: Rule, { unit }: Verdict): string {
+  return test.kind === 'zones' && unit === 'µm' ? 'displacement rms' : figureWords(watch);
+}
+
+function limitWords({ limit, unit }: Verdict, level: Level): string {
+  const at = limit[level];
+  return at === null ? 'its limit' : `${figure4(at)}${unit ? ` ${unit}` : ''}`;
+}
+
+function beyond({ test }: Rule, verdict: Verdict, level: Level): string {
+  return `${watchesFall(test) ? 'below' : 'above'} ${limitWords(verdict, level)}`;
+}
+
+function whoseLimit({ test }: Rule, { whose }: Verdict, level: Level): string {
+  if (test.kind === 'zones') return `zone ${level === 'danger' ? 'D' : 'C'}, ${whose}`;
+  const times = test.kind === 'baseline' ? test[level] : null;
+  return `${level} limit of ${whose}${times === null ? '' : `, factor ${figure4(times)}`}`;
 }
 
 export function riseReason(rule: Rule, rise: Rise, overDays: number): string {
@@ -62,7 +95,12 @@ export function riseReason(rule: Rule, rise: Rise, overDays: number): string {
   );
 }
 
-export function clearedReason(watch: string, timing: Timing): string {
+export function clearedReason({ watch, test }: Rule, timing: Timing): string {
+  if (test.kind === 'is') {
+    const clear = forHowLong({ ...timing, onDelayS: timing.offDelayS });
+    const what = watch === 'envelope.defect' ? 'accuse it' : test.values.join(' or ');
+    return `${figureWords(watch)} no longer ${what}${clear}`;
+  }
   const long = timing.offDelayS > 0 ? ` for ${figure4(timing.offDelayS)} s` : '';
   return `${figureWords(watch)} back within its limit and deadband${long}`;
 }
