@@ -3,6 +3,7 @@
  * be answered, for want of a usable id, and whoever goes on too fast even to be refused, is only counted.
  */
 
+import { askTrouble } from './ask-trouble.ts';
 import { type Ask, type AskVerb, askSchemas } from './payload-schemas.ts';
 
 export interface AskHost {
@@ -134,8 +135,7 @@ export class AskDispatcher {
     if (this.#underWay >= atOnce) return 'too many asks at the same time';
     const checked = askSchemas[verb as AskVerb].safeParse(body);
     if (checked.success) return null;
-    const issue = checked.error.issues[0]!;
-    return issue.path.length === 0 ? issue.message : `${issue.path.join('.')}: ${issue.message}`;
+    return askTrouble(checked.error.issues[0]!, body);
   }
 
   async #refuse(id: string, error: string): Promise<void> {

@@ -47,7 +47,7 @@ describe.runIf(haveSocat)('asks', () => {
     expect(await refused('acknowledge', { alarm: 'pump-9/h.zone', by })).toBe(
       'no alarm pump-9/h.zone in this station',
     );
-    expect(await refused('acknowledge', { alarm })).toMatch(/^by: /);
+    expect(await refused('acknowledge', { alarm })).toBe('by is missing');
     expect(rig.last(zone)).toMatchObject({ state: 'unacknowledged' });
     await done('acknowledge', { alarm, raised, by });
     await rig.until(zone, { state: 'acknowledged', acknowledged_by: by, raised });
@@ -59,7 +59,7 @@ describe.runIf(haveSocat)('asks', () => {
   it('shelve and unshelve: for a time, by somebody, and once', async () => {
     const alarm = 'pump-3/h.zone';
     expect(await refused('shelve', { alarm, by, minutes: 0.5 })).toBe('minutes is a number from 1 to 1440');
-    expect(await refused('shelve', { alarm, by, minutes: 'long' })).toMatch(/^minutes: /);
+    expect(await refused('shelve', { alarm, by, minutes: 'long' })).toBe('minutes must be a number');
     await done('shelve', { alarm, by, minutes: 30 });
     const told = await rig.until('pump-3/alarm/h.zone', { state: 'shelved' });
     expect(told.reason).toBe('shelved by ann for 30 min');
@@ -70,7 +70,7 @@ describe.runIf(haveSocat)('asks', () => {
 
   it('out-of-service and in-service: an alarm, a point or a machine, with a reason', async () => {
     const why = 'the bearing is being changed';
-    expect(await refused('out-of-service', { machine: 'pump-6', by })).toMatch(/^why: /);
+    expect(await refused('out-of-service', { machine: 'pump-6', by })).toBe('why is missing');
     expect(await refused('out-of-service', { machine: 'pump-6', point: 'pump-6/p', by, why })).toBe(
       'one of alarm, point, machine is needed',
     );
@@ -141,7 +141,7 @@ describe.runIf(haveSocat)('asks', () => {
     expect(after.journal).toEqual(all.journal.slice(all.journal.indexOf(tested!) + 1));
     const from = (await done('journal', { since: String(tested?.t) })) as typeof all;
     expect(from.journal[0]).toEqual(tested);
-    expect(await refused('journal', { since: 'yesterday' })).toMatch(/^since: /);
+    expect(await refused('journal', { since: 'yesterday' })).toMatch(/^since is neither an id nor a time/);
     expect(await refused('journal', { since: 'other0-1' })).toMatch(
       /neither a time nor an id of this station/,
     );
