@@ -1,8 +1,11 @@
-/** Likely faults told only when they persist: one odd evaluation must not make a message. */
+/**
+ * Likely faults told only when they persist: one odd evaluation must not make a message. Where no reading of the machine
+ * counts (stopped, starting, nothing valid) an evaluation says nothing of its faults, and what stands is held.
+ */
 
 import type { Finding } from '../machine/finding-evidence.ts';
 import type { AlarmInput } from './effects.ts';
-import type { FindingsRow } from './state.ts';
+import type { FindingsRow, PointRow } from './state.ts';
 import type { StepWork } from './work.ts';
 
 /** It must show in 3 of the last 5 evaluations to appear, and in none of them to go. Common practice, no source. */
@@ -13,7 +16,9 @@ export function onFindings(
   work: StepWork,
   { machineId, findings }: Extract<AlarmInput, { kind: 'findings' }>,
 ): void {
-  if (!work.plan.machines.has(machineId)) throw new RangeError(`no machine ${machineId} in this station`);
+  const machine = work.plan.machines.get(machineId)?.machine;
+  if (machine === undefined) throw new RangeError(`no machine ${machineId} in this station`);
+  if (!machine.points.some(({ key }) => isJudged(work.point(key)))) return;
   const row = work.machine(machineId);
   const next = holdFindings(row.findings, findings);
   work.setMachine(machineId, { ...row, findings: next }, false);
@@ -21,6 +26,11 @@ export function onFindings(
   if (describe(next.standing) === describe(row.findings.standing)) return;
   const payload = { id: work.allocateId(), t: work.t, findings: next.standing };
   work.effects.push({ kind: 'publish', class: 'finding', topic: `${machineId}/finding`, payload });
+}
+
+/** Whether the latest reading of a point counts and has figures. */
+function isJudged({ running, startedS, uncountedS, invalid }: PointRow): boolean {
+  return running === true && startedS === null && uncountedS === 0 && invalid === 0;
 }
 
 function holdFindings(from: FindingsRow, findings: readonly Finding[]): FindingsRow {

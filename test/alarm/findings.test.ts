@@ -3,7 +3,7 @@ import { machineEvidence } from '../../src/alarm/evidence.ts';
 import type { Finding } from '../../src/machine/finding-evidence.ts';
 import { findingsFor } from '../../src/machine/findings.ts';
 import type { Reading } from '../../src/measure/reading.ts';
-import { Bench, makeReading, onePoint, statesIn } from './support.ts';
+import { Bench, makeReading, onePoint, type Shown, statesIn } from './support.ts';
 
 const unbalance: Finding = {
   fault: 'unbalance',
@@ -37,8 +37,39 @@ test('a finding is told when it shows in three of five evaluations, and gone whe
   expect(statesIn(bench.effects).at(-1)!.finding).toBeNull();
 });
 
+test('a finding is held through stops, starts and readings without figures, and told once', () => {
+  const bench = new Bench(onePoint());
+  const told: unknown[] = [];
+  const go = (n: number, shown: Shown, findings: readonly Finding[]) => {
+    for (let i = 0; i < n; i++) {
+      bench.read(shown);
+      told.push(...publish(bench, findings));
+    }
+  };
+  for (let run = 0; run < 5; run++) {
+    // The start delay is 20 s: two readings, in which the hard start shows nothing of the fault.
+    if (run > 0) go(2, { mmS: 9 }, []);
+    go(6, { mmS: 5 }, [unbalance]);
+    go(6, { mmS: null, why: ['flat line: the counts never change'] }, []);
+    go(6, { mmS: 5 }, [unbalance]);
+    go(20, { mmS: 0.05, running: false }, []);
+  }
+  expect(told).toHaveLength(1);
+  expect(statesIn(bench.effects).at(-1)!.finding).toBe('unbalance');
+  // Nor do the starts by themselves make one.
+  const hard = new Bench(onePoint());
+  const unheard: unknown[] = [];
+  for (let start = 0; start < 5; start++) {
+    hard.read({ mmS: 0.05, running: false });
+    hard.read({ mmS: 9 });
+    unheard.push(...publish(hard, [unbalance]));
+  }
+  expect(unheard).toEqual([]);
+});
+
 test('flickering between possible and likely is one message', () => {
   const bench = new Bench(onePoint());
+  bench.read({ mmS: 5 });
   const told = Array.from({ length: 40 }, (_, i) =>
     publish(bench, [{ ...unbalance, likelihood: i % 2 === 0 ? 'likely' : 'possible' }]),
   ).flat();
