@@ -59,6 +59,11 @@ export class OutboxDrainer {
     return this.#inFlight.size;
   }
 
+  /** Something is in flight, or about to be. */
+  get busy(): boolean {
+    return this.#filling || this.#inFlight.size > 0;
+  }
+
   /** Bytes that are not acknowledged yet. */
   get inFlightBytes(): number {
     return [...this.#inFlight.values()].reduce((sum, { bytes }) => sum + bytes, 0);

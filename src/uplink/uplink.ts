@@ -104,6 +104,7 @@ export class Uplink {
   #marker: ((payload: Buffer) => void) | null = null;
   #connects = 0;
   #oversized = 0;
+  #stopping = false;
   readonly #warned = new Set<string>();
 
   constructor(settings: UplinkSettings, host: UplinkHost) {
@@ -237,11 +238,16 @@ export class Uplink {
   }
 
   async stop(withinMs: number): Promise<void> {
+    this.#stopping = true;
     if (this.#booking !== null) clearInterval(this.#booking);
     const connection = this.#loop.stop();
     if (connection?.isUp === true && this.#block !== null) {
       const until = performance.now() + withinMs / 2;
-      while (connection.isUp && this.#drainer.inFlight > 0 && performance.now() < until) await pause(10);
+      while (connection.isUp && this.#drainer.busy && performance.now() < until) await pause(10);
+      // What comes from here on stays in the store: nothing follows the last word.
+      const end: End = { kind: 'asked', error: new Error('the agent stops') };
+      this.#parts.detach();
+      await this.#drainer.detach(end);
       const n = this.#block.first + agentBlock - 1;
       await this.#sayAgent(connection, n, 'offline', withinMs / 4).catch(() => undefined);
       await connection.goodbye(withinMs / 4);
@@ -313,13 +319,14 @@ export class Uplink {
     await this.#subscribe(connection, [...own, this.topics.asks]);
     for (const topic of this.#settings.commandTopics) await this.#subscribe(connection, [topic]);
     await this.#host.store.releaseRefused();
+    if (this.#stopping) return;
     this.#drainer.attach(connection);
     this.#parts.attach(connection);
     if (!brokerKept(await marker, this.#host.ids.storeId, last)) {
       await this.#host.store.resendRetained();
       this.#drainer.kick();
     }
-    if (!connection.isUp) return;
+    if (!connection.isUp || this.#stopping) return;
     await this.#sayAgent(connection, block.first + block.used++, 'online');
     for (const topic of own) await connection.unsubscribe(topic, this.#timing.ackTimeoutMs);
   }

@@ -84,6 +84,29 @@ for (const kind of kinds.filter(({ present }) => present)) {
       expect(latecomer.heard.every((message) => message.retained)).toBe(true);
     });
 
+    it('stops without a warning while messages still come: they stay, and nothing follows its last word', async () => {
+      const port = await kind.port();
+      const room = await join(port);
+      const rig = await agentAt(port, kind.protocol);
+      await rig.uplink.start();
+      await until(() => room.last(agentTopic)?.state === 'online', 'the agent to be online');
+      const before = await Promise.all(Array.from({ length: 10 }, (_, k) => rig.alarm(k)));
+      let stopped = false;
+      const stopping = rig.uplink.stop(2000).then(() => {
+        stopped = true;
+      });
+      for (let k = 10; !stopped; k++) {
+        await rig.alarm(k);
+        await sleep(1);
+      }
+      await stopping;
+      await until(() => room.last(agentTopic)?.state === 'offline', 'the agent to be offline');
+      await room.hears(before);
+      expect(room.heard.at(-1)?.topic).toBe(agentTopic);
+      expect((await rig.store.counters()).outbox.rows).toBeGreaterThan(0);
+      expect(rig.lines.filter(({ level }) => level !== 'info')).toEqual([]);
+    });
+
     it('has a will that orders behind every message of the connection', async () => {
       const port = await kind.port();
       const proxy = later(await FaultyLink.start(port), (made) => made.stop());
