@@ -14,6 +14,8 @@ export interface DecimatedRecord {
   readonly firstAt: number;
   readonly factor: number;
   readonly spectrum: Spectrum;
+  /** Spacing of the lines where the record is long enough, Hz. */
+  readonly fullLineHz: number;
   /** null, or what is missing of the averages and lines asked for. */
   readonly short: string | null;
 }
@@ -68,6 +70,7 @@ export function decimateRecord(
     firstAt: decimation.firstOutputAt,
     factor,
     spectrum,
+    fullLineHz: decimatedHz / blockSamples,
     short,
   };
 }

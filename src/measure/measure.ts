@@ -57,8 +57,15 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
     if (figure.why !== null) why.push(figure.why);
     return figure.value;
   };
-  const velocity = (bandHz: readonly [number, number], name: string): number | null =>
-    bandHz[0] < leastHz ? null : take(velocityRms(decimated, bandHz, name));
+  /** What the settings rule out is told, but makes no reading uncertain. */
+  const ruledOut: string[] = [];
+  const bandVelocity = (bandHz: readonly [number, number], name: string): number | null => {
+    if (bandHz[0] < leastHz) return null;
+    const figure = velocityRms(decimated, bandHz, name, 'shared');
+    if (!figure.settled) return take(figure);
+    ruledOut.push(figure.why);
+    return null;
+  };
 
   const running = isRunning(plan, record, given, decimated, leastHz);
   if (running === null && plan.machine.running.kind === 'mqtt') {
@@ -70,13 +77,14 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
   if (running !== false) why.push(...shaft.why);
 
   const bandHz = overallBandHz(shaft.hz ?? expectedShaftHz(plan), decimated.fmaxHz);
-  const overall = velocity(bandHz, 'overall velocity');
+  const overall =
+    bandHz[0] < leastHz ? null : take(velocityRms(decimated, bandHz, 'overall velocity', 'whole'));
   const displacement = overall === null ? null : displacementRms(decimated, bandHz).value;
   const bands: Record<string, number | null> = {};
   for (const { id, range } of plan.point.measure.bands) {
     const unitHz = 'hz' in range ? 1 : shaft.hz;
     const edges = 'hz' in range ? range.hz : range.orders;
-    bands[id] = unitHz === null ? null : velocity([edges[0] * unitHz, edges[1] * unitHz], `band ${id}`);
+    bands[id] = unitHz === null ? null : bandVelocity([edges[0] * unitHz, edges[1] * unitHz], `band ${id}`);
   }
   const p2p = overall === null ? null : take(displacementPeakToPeak(decimated, bandHz));
   const { hz: shaftHz } = shaft;
@@ -92,6 +100,7 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
     why.push(`no envelope: ${band} holds nothing but rounding of the counts; is the sensor loose?`);
   }
   const uncertain = why.length > 0 || (envelope.uncertain && envelopeWhy.length > 0);
+  why.push(...ruledOut);
   if (!silent) why.push(...envelopeWhy);
   const phase = shaft.source === 'tachometer' && hasPhase(plan, record) ? shaft.tachometer : null;
   return {
@@ -157,7 +166,7 @@ function isRunning(
     case 'velocity': {
       const bandHz = overallBandHz(speedHz(plan, given), decimated.fmaxHz);
       if (bandHz[0] < leastHz) return null;
-      const overall = velocityRms(decimated, bandHz, 'overall velocity').value;
+      const overall = velocityRms(decimated, bandHz, 'overall velocity', 'whole').value;
       return overall === null ? null : overall > rule.aboveMmS;
     }
     case 'tachometer':

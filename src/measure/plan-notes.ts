@@ -1,5 +1,6 @@
 /** What a plan has to say to whoever wrote the settings, and which frequencies its lines cannot tell apart. */
 
+import { mainLobeHalfWidthBins, type WindowName } from '../signal/window.ts';
 import type { PointPlan } from './plan.ts';
 
 /** A record promises 0 to rate/2.56 (common practice, no source). */
@@ -50,6 +51,8 @@ function noteBands(
     const unitHz = 'hz' in band.range ? 1 : nominalHz;
     if (unitHz === null) continue;
     const [low, high] = [edges[0] * unitHz, edges[1] * unitHz];
+    const coarse = tooLow(low, spectrum, `band ${band.id}`);
+    if (coarse !== null) notes.warn(`${coarse}: give more lines`);
     if (high > spectrum.fmaxHz) {
       notes.warn(`band ${band.id} reaches ${hz(high)}, above Fmax ${hz(spectrum.fmaxHz)}: it will be null`);
     } else if (high - low < 2 * TELL_APART_LINES * spectrum.lineHz) {
@@ -106,6 +109,19 @@ function noteBearings(plan: Omit<PointPlan, 'warnings' | 'caveats'>, notes: Plan
       notes.warn(`${name} (${hz(lineHz)}) lies on ${harmonic}x of the shaft (${hz(harmonicHz)})`);
     }
   }
+}
+
+/**
+ * null, or that the lines cannot keep a band apart from 0 Hz, where the record drifts: the main lobe of a line at its
+ * lower edge reaches there.
+ */
+export function tooLow(
+  lowHz: number,
+  { lineHz, window }: { readonly lineHz: number; readonly window: WindowName },
+  name: string,
+): string | null {
+  if (lowHz >= mainLobeHalfWidthBins(window) * lineHz) return null;
+  return `${name} from ${hz(lowHz)} needs lines finer than ${hz(lineHz)}`;
 }
 
 /** A frequency for a person. */

@@ -9,7 +9,7 @@ import { synchronousHz } from '../machine/electrical.ts';
 import { chooseFactor, type DecimationPlan, planDecimation } from '../signal/decimate.ts';
 import type { WindowName } from '../signal/window.ts';
 import { ENVELOPE_EDGE_S, type EnvelopePlan, planEnvelope } from './plan-envelope.ts';
-import { hz, noteFrequencies, PlanNotes, RATE_OVER_FMAX, range } from './plan-notes.ts';
+import { hz, noteFrequencies, PlanNotes, RATE_OVER_FMAX, range, tooLow } from './plan-notes.ts';
 
 /** The filter keeps this much more than Fmax clean: a node's clock may be several percent slow. */
 const CLOCK_SLACK = 1.05;
@@ -118,6 +118,8 @@ export function planPoint(point: Point, machine: Machine, rateHz: number, mainsH
   if (overallHz[1] < OVERALL_HZ.high) {
     notes.warn(`overall velocity ends at Fmax, ${hz(overallHz[1])}, instead of 1000 Hz`);
   }
+  const coarse = tooLow(overallHz[0], spectrum, 'overall velocity');
+  if (coarse !== null) notes.warn(`${coarse}: give more lines`);
   const usable = point.sensor.usableHz;
   if (usable !== null && (usable[0] > overallHz[0] || usable[1] < overallHz[1])) {
     notes.caution(

@@ -7,20 +7,26 @@ import {
   velocityWeights,
 } from '../signal/integrate.ts';
 import { SignalRangeError } from '../signal/range-error.ts';
-import { bandMeanSquare, lineAmplitude, type Spectrum, strongestBin } from '../signal/spectrum.ts';
-import { mainLobeHalfWidthBins } from '../signal/window.ts';
+import {
+  type BandEdges,
+  bandMeanSquare,
+  lineAmplitude,
+  type Spectrum,
+  strongestBin,
+} from '../signal/spectrum.ts';
 import type { DecimatedRecord } from './decimated.ts';
-import { hz, range } from './plan-notes.ts';
+import { hz, range, tooLow } from './plan-notes.ts';
 
-/** A figure, or why it cannot be had. */
+/** A figure, or why it cannot be had; `settled`: by the settings, so that no record whatever would have it. */
 export type Figure =
-  | { readonly value: number; readonly why: null }
-  | { readonly value: null; readonly why: string };
+  | { readonly value: number; readonly why: null; readonly settled: false }
+  | { readonly value: null; readonly why: string; readonly settled: boolean };
 
 /**
  * RMS velocity of a band, mm/s.
  *
  * @param name of the figure, for the reason.
+ * @param edges `whole` for the overall, as ISO 2954 wants it; `shared` where bands stand side by side.
  * @returns no value where the band reaches beyond what the record carries, or lies so near to 0 Hz that the lines
  *   cannot keep it apart from the record's own drift.
  */
@@ -28,17 +34,20 @@ export function velocityRms(
   record: DecimatedRecord,
   bandHz: readonly [number, number],
   name: string,
+  edges: BandEdges,
 ): Figure {
   const out = outOfReach(record, bandHz, name);
-  if (out !== null) return { value: null, why: out };
-  return { value: bandRms(record.spectrum, bandHz, velocityWeights(record.spectrum, 'g')), why: null };
+  if (out !== null) return out;
+  const { spectrum } = record;
+  return figure(bandMeanSquare(spectrum, bandHz, { weight: velocityWeights(spectrum, 'g'), edges }));
 }
 
 /** RMS displacement of a band, µm; limits as those of the velocity. */
 export function displacementRms(record: DecimatedRecord, bandHz: readonly [number, number]): Figure {
   const out = outOfReach(record, bandHz, 'displacement');
-  if (out !== null) return { value: null, why: out };
-  return { value: bandRms(record.spectrum, bandHz, displacementWeights(record.spectrum, 'g')), why: null };
+  if (out !== null) return out;
+  const { spectrum } = record;
+  return figure(bandMeanSquare(spectrum, bandHz, { weight: displacementWeights(spectrum, 'g') }));
 }
 
 /** Peak to peak displacement of a band over the record, µm, from the time signal. */
@@ -49,7 +58,8 @@ export function displacementPeakToPeak(record: DecimatedRecord, bandHz: readonly
     waveform = displacementWaveform(samples, { rateHz, bandHz, unit: 'g' });
   } catch (error) {
     if (!(error instanceof SignalRangeError)) throw error;
-    return { value: null, why: `record too short: no displacement over time from ${hz(bandHz[0])}` };
+    const why = `record too short: no displacement over time from ${hz(bandHz[0])}`;
+    return { value: null, why, settled: false };
   }
   let low = Number.POSITIVE_INFINITY;
   let high = Number.NEGATIVE_INFINITY;
@@ -57,7 +67,7 @@ export function displacementPeakToPeak(record: DecimatedRecord, bandHz: readonly
     if (value < low) low = value;
     if (value > high) high = value;
   }
-  return { value: high - low, why: null };
+  return { value: high - low, why: null, settled: false };
 }
 
 /** The strongest line about a frequency: its place and RMS velocity in mm/s; null where there is no bin. */
@@ -73,24 +83,20 @@ export function lineVelocity(
   return { hz: line.hz, mmS };
 }
 
-function bandRms(spectrum: Spectrum, bandHz: readonly [number, number], weight: Float64Array): number {
-  return Math.sqrt(bandMeanSquare(spectrum, bandHz, { weight }));
+function figure(meanSquare: number): Figure {
+  return { value: Math.sqrt(meanSquare), why: null, settled: false };
 }
 
-function outOfReach(record: DecimatedRecord, bandHz: readonly [number, number], name: string): string | null {
-  const { spectrum, fmaxHz } = record;
+function outOfReach(record: DecimatedRecord, bandHz: readonly [number, number], name: string): Figure | null {
+  const { spectrum, fmaxHz, fullLineHz } = record;
   // A hair above: a band that ends at Fmax is in reach whatever the last bit.
   if (bandHz[1] > fmaxHz * (1 + 1e-9)) {
-    return `${name}: ${range(bandHz)} reaches above Fmax, ${hz(fmaxHz)}`;
+    const why = `${name}: ${range(bandHz)} reaches above Fmax, ${hz(fmaxHz)}`;
+    return { value: null, why, settled: false };
   }
-  const leastHz = lowestHz(spectrum);
-  if (bandHz[0] < leastHz) {
-    return `record too short: ${name} from ${hz(bandHz[0])} needs lines finer than ${hz(spectrum.lineHz)}`;
-  }
-  return null;
-}
-
-/** Below this the main lobe of a line reaches to 0 Hz. */
-function lowestHz(spectrum: Spectrum): number {
-  return mainLobeHalfWidthBins(spectrum.window) * spectrum.lineHz;
+  const { lineHz, window } = spectrum;
+  const settings = tooLow(bandHz[0], { lineHz: fullLineHz, window }, name);
+  if (settings !== null) return { value: null, why: `${settings}: give more lines`, settled: true };
+  const short = tooLow(bandHz[0], { lineHz, window }, name);
+  return short === null ? null : { value: null, why: `record too short: ${short}`, settled: false };
 }

@@ -121,11 +121,18 @@ export function bandBins(spectrum: Spectrum, bandHz: readonly [number, number]):
 }
 
 /**
- * Mean square of what lies in a band; edges as in `bandBins`.
+ * How the edges of a band are taken. `whole`: it reaches outward as in `bandBins`, so that a line on an edge is read
+ * whole. `shared`: a bin counts by the share of it that lies within, so that noise is read as it is, bands side by side
+ * add up to the whole, and a line on an edge is halved between its two neighbours.
+ */
+export type BandEdges = 'whole' | 'shared';
+
+/**
+ * Mean square of what lies in a band.
  *
  * @param spectrum From `averagedSpectrum`.
  * @param bandHz Edges, Hz.
- * @param options weight: a factor for each bin (from `velocityWeights`), 1 if left out.
+ * @param options weight: a factor for each bin (from `velocityWeights`), 1 if left out. edges: `whole` if left out.
  * @returns Mean square in the signal's unit squared (or that of the weight); 0 where the band lies beyond the spectrum.
  * @throws SignalRangeError if the edges are not in order or the weights do not fit.
  * @example 10 Hz at 1 g peak, 10–1000 Hz, velocity weights: 110.36 mm/s after the root.
@@ -133,10 +140,10 @@ export function bandBins(spectrum: Spectrum, bandHz: readonly [number, number]):
 export function bandMeanSquare(
   spectrum: Spectrum,
   bandHz: readonly [number, number],
-  options: { readonly weight?: Float64Array } = {},
+  options: { readonly weight?: Float64Array; readonly edges?: BandEdges } = {},
 ): number {
   const { meanSquare } = spectrum;
-  const { weight } = options;
+  const { weight, edges = 'whole' } = options;
   if (weight !== undefined && weight.length !== meanSquare.length) {
     throw new SignalRangeError(
       'weight.length',
@@ -146,9 +153,23 @@ export function bandMeanSquare(
   }
   const [first, last] = bandBins(spectrum, bandHz);
   let sum = 0;
-  if (weight === undefined) for (let k = first; k <= last; k++) sum += meanSquare[k]!;
-  else for (let k = first; k <= last; k++) sum += meanSquare[k]! * weight[k]!;
+  for (let k = first; k <= last; k++) {
+    const share = edges === 'whole' ? 1 : shareWithin(spectrum, k, bandHz);
+    sum += share * meanSquare[k]! * (weight === undefined ? 1 : weight[k]!);
+  }
   return sum;
+}
+
+/** Of a bin, which stands for half a bin to each side, within 0 Hz and half the rate. */
+function shareWithin(
+  { binHz, meanSquare }: Spectrum,
+  bin: number,
+  bandHz: readonly [number, number],
+): number {
+  const from = Math.max(0, bin - 0.5);
+  const to = Math.min(meanSquare.length - 1, bin + 0.5);
+  const inside = Math.min(to, bandHz[1] / binHz) - Math.max(from, bandHz[0] / binHz);
+  return Math.max(0, inside) / (to - from);
 }
 
 /**

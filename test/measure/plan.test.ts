@@ -1,6 +1,7 @@
 import { describe, expect, it } from 'vitest';
+import { measureRecord } from '../../src/measure/measure.ts';
 import { PlanError } from '../../src/measure/plan.ts';
-import { planOf, usual } from './bench.ts';
+import { gOfVelocity, planOf, recordOf, usual } from './bench.ts';
 
 describe('sizes of a point', () => {
   it('are the worked case: 3200 lines of 1000 Hz at 40 960 Hz', () => {
@@ -177,5 +178,24 @@ describe('what settings ask for and cannot have', () => {
     expect(text).toMatch(/band high reaches 1200 Hz, above Fmax 1000 Hz/);
     expect(text).toMatch(/band narrow is 0.4933 Hz wide/);
     expect(text).not.toMatch(/band fine/);
+  });
+
+  it('names bands too low for the lines, which are null and leave the rest of a reading as good', () => {
+    const velocity = { ...usual.velocity, lines: 800 };
+    const plan = planOf({ measure: { velocity } });
+    const text = 'band low from 2 Hz needs lines finer than 1.25 Hz: give more lines';
+    expect(plan.warnings).toEqual([text]);
+    const tones = [[24.7, gOfVelocity(3, 24.7)]] as const;
+    const record = recordOf({ rateHz: 40_960, samples: plan.recordSamples, tones, noiseG: 0.05 });
+    const reading = measureRecord(plan, record);
+    expect(reading).toMatchObject({ quality: 'good', why: [text], velocity: { low: null } });
+    expect(Math.abs(reading.velocity.overall! / 3 - 1)).toBeLessThan(0.02);
+    const slow = {
+      measure: { velocity },
+      machine: { shaft: { kind: 'fixed', rpm: 300, tolerancePct: 3 } },
+    } as const;
+    expect(planOf(slow).warnings).toContainEqual(
+      'overall velocity from 2 Hz needs lines finer than 1.25 Hz: give more lines',
+    );
   });
 });

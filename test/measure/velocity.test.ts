@@ -146,3 +146,20 @@ describe('nothing folds into the velocity band', () => {
     }
   });
 });
+
+describe('configured bands of broadband vibration', () => {
+  // With and without padded blocks: 3.2 s are 8192 and 9600 samples.
+  it.each([2560, 3000])('hold what the density of white noise says, at a rate of %d Hz', (rateHz) => {
+    const noiseG = 0.05;
+    const shaft = { kind: 'fixed', rpm: 300, tolerancePct: 0 } as const;
+    const plan = planOf({ rateHz, machine: { shaft }, measure: { everyS: 600 } });
+    const { velocity } = measureRecord(plan, recordOf({ rateHz, samples: plan.recordSamples, noiseG }));
+    // A flat density of σ²/(rate/2), over (2πf)², from edge to edge: the integral of 1/f² is 1/f1 − 1/f2.
+    const expected = (low: number, high: number) =>
+      Math.sqrt((noiseG ** 2 / (rateHz / 2)) * (9806.65 / (2 * Math.PI)) ** 2 * (1 / low - 1 / high));
+    // Random error of the RMS 1/(2√(BT)), B some 2 Hz at least: 1.4 % (Bendat and Piersol, from memory); twice that.
+    expect(Math.abs(Number(velocity.low) / expected(2, 10) - 1)).toBeLessThan(0.03);
+    expect(Math.abs(Number(velocity['running-speed']) / expected(4, 6) - 1)).toBeLessThan(0.03);
+    expect(Math.abs(Number(velocity.harmonics) / expected(9, 51) - 1)).toBeLessThan(0.03);
+  });
+});

@@ -182,7 +182,16 @@ describe('the cascade', () => {
       return Math.sin(2 * Math.PI * (60 * t - t * t));
     });
     const spectrum = averagedSpectrum(samples, { rateHz, blockSamples: rateHz, window: 'hann' });
-    const whole = { samples, rateHz, fmaxHz: 1000, firstAt: 0, factor: 1, spectrum, short: null };
+    const whole = {
+      samples,
+      rateHz,
+      fmaxHz: 1000,
+      firstAt: 0,
+      factor: 1,
+      spectrum,
+      fullLineHz: spectrum.lineHz,
+      short: null,
+    };
     const cascade = cascadeOf(whole, 50)!;
     expect(cascade.timesS.length).toBeGreaterThan(20);
     cascade.timesS.forEach((timeS, k) => {
@@ -196,7 +205,16 @@ describe('the cascade', () => {
   it('is none of a recording too short for a row', () => {
     const samples = new Float64Array(200);
     const spectrum = averagedSpectrum(samples, { rateHz: 2560, blockSamples: 128, window: 'hann' });
-    const whole = { samples, rateHz: 2560, fmaxHz: 1000, firstAt: 0, factor: 1, spectrum, short: null };
+    const whole = {
+      samples,
+      rateHz: 2560,
+      fmaxHz: 1000,
+      firstAt: 0,
+      factor: 1,
+      spectrum,
+      fullLineHz: spectrum.lineHz,
+      short: null,
+    };
     expect(cascadeOf(whole, 25)).toBeNull();
   });
 });

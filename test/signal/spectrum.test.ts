@@ -140,6 +140,21 @@ describe('bands', () => {
     expect(bandMeanSquare(spectrumOf(35), [40, 60])).toBeLessThan(1e-6);
   });
 
+  it.each([1024, 700])('share their edges with their neighbours, blocks of %d samples', (blockSamples) => {
+    const x = noise(200_000, 5);
+    const spectrum = averagedSpectrum(x, { rateHz, blockSamples, window: 'hann' });
+    const shared = (low: number, high: number) => bandMeanSquare(spectrum, [low, high], { edges: 'shared' });
+    const all = shared(0, 512);
+    expect(all).toBeCloseTo(total(spectrum.meanSquare), 9);
+    expect(shared(0, 7.3) + shared(7.3, 7.4) + shared(7.4, 40.5) + shared(40.5, 512)).toBeCloseTo(all, 9);
+    expect(shared(600, 700)).toBe(0);
+    // White noise: by the width of the band. Random error 1/√(BT) (Bendat and Piersol, from memory): 2.9 %; twice that.
+    expect(Math.abs(((shared(40.2, 46.3) / all) * 512) / 6.1 - 1)).toBeLessThan(0.058);
+    // A tone on the edge: half of it at each side.
+    expect(bandMeanSquare(spectrumOf(40), [40, 60], { edges: 'shared' })).toBeCloseTo(0.25, 3);
+    expect(bandMeanSquare(spectrumOf(40), [20, 40], { edges: 'shared' })).toBeCloseTo(0.25, 3);
+  });
+
   it('weigh each bin, and are 0 beyond the spectrum', () => {
     const spectrum = spectrumOf(50);
     const weight = new Float64Array(spectrum.meanSquare.length).fill(2);
