@@ -121,7 +121,10 @@ function publishState(work: StepWork, machineId: string): void {
   if (told === row.told && row.sinceToldS < STATE_AT_LEAST_S) return;
   const sent = work.quiet.sent[machineId] ?? [];
   const states = sent.filter((message) => !message.alarm).length;
-  const most = isDetail(row.told, facts) ? STATE_DETAILS : MACHINE_STATES;
+  const detail = isDetail(row.told, facts);
+  // One point's zone goes when it stops, and the machine stops with the next: a moment later both are one message.
+  if (detail && !work.ticked) return;
+  const most = detail ? STATE_DETAILS : MACHINE_STATES;
   if (sent.length >= MACHINE_MESSAGES || states >= most) return;
   const payload = machinePayload(facts, row, work.allocateId(), work.t);
   work.effects.push({ kind: 'publish', class: 'state', topic: `${machineId}/state`, payload });
@@ -139,6 +142,7 @@ function isDetail(told: string, facts: MachineFacts): boolean {
 
 /** Every machine's state is looked at again, since one may have waited and the hour may be over. */
 export function tickStates(work: StepWork, elapsedS: number): void {
+  work.ticked = true;
   for (const id of work.plan.machines.keys()) {
     const row = work.machine(id);
     work.setMachine(id, { ...row, sinceToldS: row.sinceToldS + elapsedS }, false);

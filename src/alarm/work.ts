@@ -22,6 +22,8 @@ export class StepWork {
   readonly changeIds = new Map<string, string>();
   /** Alarms that a person acted on in this step. */
   readonly asked = new Set<string>();
+  /** The step is a tick, with which details of a machine's state are told. */
+  ticked = false;
   waiting: readonly string[];
   quiet: QuietRow;
   readonly #alarms = new Map<string, AlarmRow>();

@@ -388,6 +388,7 @@ describe('machine state', () => {
     });
     bench.seconds += 86_400;
     bench.read({ mmS: 2 });
+    bench.tick(1);
     expect(statesIn(bench.effects).at(-1)!.starts_today).toBe(0);
   });
 

@@ -29,6 +29,7 @@ test('a finding is told when it shows in three of five evaluations, and gone whe
   const [told] = publish(bench, [unbalance]);
   expect(Object.keys(told!)).toEqual(['id', 't', 'findings']);
   expect(told!.findings).toEqual([unbalance]);
+  bench.tick(1);
   expect(statesIn(bench.effects).at(-1)!.finding).toBe('unbalance');
   for (let i = 0; i < 4; i++) expect(publish(bench, [])).toEqual([]);
   expect(publish(bench, [])[0]!.findings).toEqual([]);

@@ -298,3 +298,14 @@ test('an acknowledgement shows in the state at once, and a machine that flaps le
   }
   expect(watcher.most(60, () => true)).toBe(4);
 });
+
+test('points that stop one after the other are one message', () => {
+  const { bench, all } = many(1, 3);
+  bench.read(all(1), 2);
+  bench.tick(1);
+  const before = statesIn(bench.effects).length;
+  const stopped = Object.fromEntries(Object.keys(all(1)).map((key) => [key, { mmS: 0.1, running: false }]));
+  const told = [...bench.read(stopped, 2), ...bench.tick(1)];
+  expect(before).toBe(1);
+  expect(statesIn(told).map(({ running, zone }) => [running, zone])).toEqual([[false, null]]);
+});
