@@ -5,6 +5,7 @@ import { mkdtempSync, readdirSync, readFileSync, rmSync, writeFileSync } from 'n
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
 import { fileURLToPath } from 'node:url';
+import { spawnDependent } from './dependent.ts';
 import { sleep } from './proxy.ts';
 
 export const command = fileURLToPath(new URL('../../dist/cli/main.js', import.meta.url));
@@ -62,12 +63,12 @@ export class AgentProcess {
 
   async start(): Promise<void> {
     const args = [...this.nodeArgs, command, 'run', '-c', this.stationFile];
-    const child = spawn(process.execPath, args, { stdio: ['ignore', 'inherit', 'pipe'], env: this.env });
-    this.#child = child;
     // Left behind, it would go on opening devices whose names belong to somebody else by then.
-    const end = () => child.kill('SIGKILL');
-    process.once('exit', end);
-    child.once('exit', () => process.off('exit', end));
+    const child = spawnDependent(process.execPath, args, {
+      stdio: ['ignore', 'inherit', 'pipe'],
+      env: this.env,
+    });
+    this.#child = child;
     const seen = this.#log.length;
     child.stderr?.on('data', (chunk) => this.#take(String(chunk)));
     while (!this.#log.slice(seen).some(({ msg }) => msg === 'running')) {

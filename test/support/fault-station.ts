@@ -307,24 +307,19 @@ export class FaultStation {
     this.room.client.publish(`forebay/${site}/ask/${verb}`, JSON.stringify({ id }), { qos: 1 });
   }
 
-  /** An ask each 120 ms until the returned function is called. */
+  /** Alarm load until the returned function is called: somewhat more asks than are served for long. */
   load(): () => void {
-    const timer = setInterval(() => this.ask(1), 120);
+    const timer = setInterval(() => this.#ask(), 250);
     return () => clearInterval(timer);
   }
 
-  /** Alarm load: a shelf set anew is an alarm message each time, and no flood limit holds it back. */
-  ask(count: number): void {
-    for (let i = 0; i < count; i++) {
-      const k = this.#asks++;
-      const body = {
-        id: `ask-${process.pid}-${k}`,
-        alarm: `${pointKeys[k % 4]}.high`,
-        by: 'test',
-        minutes: 1 + (k % 60),
-      };
-      this.room.client.publish(`forebay/${site}/ask/shelve`, JSON.stringify(body), { qos: 1 });
-    }
+  /** On the shelf and off it again: an alarm message each time, and no flood limit holds back what a person asked for. */
+  #ask(): void {
+    const k = this.#asks++;
+    const verb = Math.floor(k / 4) % 2 === 0 ? 'shelve' : 'unshelve';
+    const ask = { id: `ask-${process.pid}-${k}`, alarm: `${pointKeys[k % 4]}.high`, by: 'test' };
+    const body = JSON.stringify(verb === 'shelve' ? { ...ask, minutes: 30 } : ask);
+    this.room.client.publish(`forebay/${site}/ask/${verb}`, body, { qos: 1 });
   }
 
   /** Until each of the points has a good reading of samples sent after now; how long that took, in seconds. */

@@ -1,10 +1,11 @@
 /** A real mosquitto on a loopback port of its own, that can be killed, paused and started again. */
-import { type ChildProcess, spawn } from 'node:child_process';
+import type { ChildProcess } from 'node:child_process';
 import { once } from 'node:events';
 import { existsSync, mkdtempSync, rmSync, writeFileSync } from 'node:fs';
 import { connect, createServer } from 'node:net';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
+import { spawnDependent } from './dependent.ts';
 import { hasTool } from './tools.ts';
 
 export const haveMosquitto = hasTool('mosquitto') && hasTool('mosquitto_sub');
@@ -65,15 +66,12 @@ export class Mosquitto {
   }
 
   async restart(): Promise<void> {
-    const child = spawn(binary, ['-c', this.#config], { stdio: ['ignore', 'ignore', 'pipe'] });
+    const child = spawnDependent(binary, ['-c', this.#config], { stdio: ['ignore', 'ignore', 'pipe'] });
     let said = '';
     child.stderr?.on('data', (chunk) => {
       said += String(chunk);
     });
     this.#child = child;
-    const end = () => child.kill('SIGKILL');
-    process.once('exit', end);
-    child.once('exit', () => process.off('exit', end));
     while (!(await answers(this.port))) {
       if (child.exitCode !== null) throw new Error(`mosquitto ended with ${child.exitCode}: ${said}`);
       await new Promise((resolve) => setTimeout(resolve, 10));
