@@ -93,13 +93,13 @@ describe('a node on a pseudo-terminal', () => {
     const { seen, deframer } = collector();
     const chunk = Buffer.alloc(65_536);
     const drain = async () => {
-      for (let idle = 0; idle < 5; ) {
+      for (let idle = 0; idle < 10; ) {
         const { bytesRead } = await device.read(chunk, 0, chunk.length, null).catch(() => ({ bytesRead: 0 }));
         deframer.push(chunk.subarray(0, bytesRead));
         if (bytesRead > 0) idle = 0;
         else {
           idle++;
-          await new Promise((resolve) => setTimeout(resolve, 5));
+          await new Promise((resolve) => setTimeout(resolve, 10));
         }
       }
     };
@@ -170,7 +170,7 @@ describe('a node on a socket', () => {
     const node = new SimulatedNode({ node: 3, serialNumber: 'P1' }, source(), socketSink(socket));
     node.advanceTo(0.2);
     reader.on('data', (chunk) => deframer.push(chunk));
-    while (seen.samples < node.counts.samples) await new Promise((resolve) => setTimeout(resolve, 5));
+    while (seen.samples < node.counts.samples) await new Promise((resolve) => setTimeout(resolve, 10));
     expect(seen).toMatchObject({ errors: 0, described: true });
     socket.cork();
     node.advanceTo(1);
