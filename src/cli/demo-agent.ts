@@ -19,9 +19,13 @@ export class DemoAgent {
     this.#logFile = logFile;
     this.#child = spawn(process.execPath, [main, 'run', '-c', stationFile], { stdio: ['ignore', log, log] });
     closeSync(log);
+    // A demo that falls over must not leave an agent behind that holds devices and a port.
+    const end = () => this.#child.kill('SIGKILL');
+    process.once('exit', end);
     this.#ended = new Promise((resolve) => {
       const over = () => {
         this.#over = true;
+        process.off('exit', end);
         resolve();
       };
       this.#child.on('error', over);
