@@ -67,15 +67,20 @@ describe.runIf(haveSocat)('the life of an alarm', () => {
     for (const about of ['machine', 'p', 'q']) {
       await rig.until(`pump-6/alarm/${about}.zone`, { state: 'normal' }, 90);
     }
-    // Each announcement has a `raised` of its own, and no other message carries it as news.
-    const announced = alarmsHeard().filter(({ payload }) => payload.id === payload.raised);
-    expect(new Set(announced.map(({ payload }) => payload.raised)).size).toBe(announced.length);
-    expect(announced.map(({ topic }) => topic).sort()).toEqual(
-      [1, 2, 3, 4, 5]
-        .map(zoneOf)
-        .concat(['machine', 'p', 'q'].map((about) => `pump-6/alarm/${about}.zone`))
-        .sort(),
+    // Each alarm was announced once: one `raised` each, all different. The message that tells it first may carry an id
+    // of its own, where the machine had spoken six times that minute and it had to wait.
+    const raised = new Map<string, Set<unknown>>();
+    for (const { topic, payload } of alarmsHeard()) {
+      if (payload.raised === null) continue;
+      raised.set(topic, (raised.get(topic) ?? new Set()).add(payload.raised));
+    }
+    const once = [1, 2, 3, 4, 5]
+      .map(zoneOf)
+      .concat(['machine', 'p', 'q'].map((about) => `pump-6/alarm/${about}.zone`));
+    expect([...raised].map(([topic, ids]) => `${topic} ${ids.size}`).sort()).toEqual(
+      once.map((topic) => `${topic} 1`).sort(),
     );
+    expect(new Set([...raised.values()].flatMap((ids) => [...ids])).size).toBe(once.length);
     expect(rig.invalid()).toEqual([]);
   }, 240_000);
 
