@@ -69,18 +69,18 @@ describe.runIf(haveSocat)('the life of an alarm', () => {
     }
     // Each alarm was announced once: one `raised` each, all different. The message that tells it first may carry an id
     // of its own, where the machine had spoken six times that minute and it had to wait.
-    const raised = new Map<string, Set<unknown>>();
+    const announced = new Map<string, Set<unknown>>();
     for (const { topic, payload } of alarmsHeard()) {
       if (payload.raised === null) continue;
-      raised.set(topic, (raised.get(topic) ?? new Set()).add(payload.raised));
+      announced.set(topic, (announced.get(topic) ?? new Set()).add(payload.raised));
     }
     const once = [1, 2, 3, 4, 5]
       .map(zoneOf)
       .concat(['machine', 'p', 'q'].map((about) => `pump-6/alarm/${about}.zone`));
-    expect([...raised].map(([topic, ids]) => `${topic} ${ids.size}`).sort()).toEqual(
+    expect([...announced].map(([topic, ids]) => `${topic} ${ids.size}`).sort()).toEqual(
       once.map((topic) => `${topic} 1`).sort(),
     );
-    expect(new Set([...raised.values()].flatMap((ids) => [...ids])).size).toBe(once.length);
+    expect(new Set([...announced.values()].flatMap((ids) => [...ids])).size).toBe(once.length);
     expect(rig.invalid()).toEqual([]);
   }, 240_000);
 
