@@ -215,10 +215,15 @@ export class PumpRig {
     for (let i = 0; i < n; i++) {
       const sine = Math.sin((2 * Math.PI * shaftHz * (first + i)) / rateHz);
       for (const [c, name] of channels.entries()) {
-        const g = gPerMmS * this.mmS[name] * sine + 0.01 * (random() - 0.5);
+        const g = gPerMmS * this.mmS[name] * sine + 0.003 * gauss(random);
         counts[i * channels.length + c] = Math.round(g / gPerCount);
       }
     }
     return counts;
   }
+}
+
+/** Standard normal, by Box and Muller (1958). Evenly spread noise has an edge, which looks like a rail to the agent. */
+function gauss(random: () => number): number {
+  return Math.sqrt(-2 * Math.log(1 - random())) * Math.cos(2 * Math.PI * random());
 }
