@@ -14,8 +14,10 @@ export interface DecimatedRecord {
   readonly firstAt: number;
   readonly factor: number;
   readonly spectrum: Spectrum;
-  /** Spacing of the lines where the record is long enough, Hz. */
-  readonly fullLineHz: number;
+  /** Spacing of the lines as planned, at the nominal rate: what settings allow does not hang on a clock's drift. */
+  readonly plannedLineHz: number;
+  /** The same, or wider where the record is too short for it. */
+  readonly shortLineHz: number;
   /** null, or what is missing of the averages and lines asked for. */
   readonly short: string | null;
 }
@@ -70,7 +72,8 @@ export function decimateRecord(
     firstAt: decimation.firstOutputAt,
     factor,
     spectrum,
-    fullLineHz: decimatedHz / blockSamples,
+    plannedLineHz: plan.spectrum.lineHz,
+    shortLineHz: fits ? plan.spectrum.lineHz : spectrum.lineHz,
     short,
   };
 }

@@ -8,20 +8,16 @@ import { expectedHz, type FoundLine, findBearingLine, lineNames, lineTitles } fr
 import { judgeRecord } from './envelope-judgement.ts';
 import { type EnvelopeSpectrum, envelopeOfBand, spectrumOfEnvelope } from './envelope-spectrum.ts';
 import type { PlannedBearing, PointPlan } from './plan.ts';
-import { ENVELOPE_EDGE_S, type EnvelopePlan } from './plan-envelope.ts';
+import { ENVELOPE_EDGE_S, type EnvelopePlan, LEAST_TURNS, longestBlockS } from './plan-envelope.ts';
 import { hz } from './plan-notes.ts';
 import type { EnvelopeReading } from './reading.ts';
 
 /** The band filter needs most of what the plan leaves at each end, the decimation after it the rest. */
 export const CUT_S = 0.7 * ENVELOPE_EDGE_S;
-/** A spectrum is averaged over two half-overlapped blocks at least; a shorter record gets wider lines instead. */
-const LEAST_BLOCKS = 1.5;
 /** Fewer lines than this tell nothing apart. */
 const LEAST_LINES = 100;
 /** A bearing is judged on blocks of this many turns where the record allows: lines 1/100 of an order apart. */
 const WANTED_TURNS = 100;
-/** With fewer, a line is wider than the distance of one bearing's cage from another's, or of a race from the shaft. */
-const LEAST_TURNS = 20;
 /** Two lines closer than the half width of a Hann main lobe look like one. */
 const TELL_APART_LINES = 2;
 /** Bands down to 1/16 of the spectrum: narrower ones follow single tones. */
@@ -55,12 +51,14 @@ export function measureEnvelope(
   const { fmaxHz } = settings;
   const doubts: string[] = [];
 
-  const longestS = (accelerationG.length / rateHz - 2 * ENVELOPE_EDGE_S) / LEAST_BLOCKS;
+  const longestS = longestBlockS(accelerationG.length, rateHz);
   const blockS = Math.min(settings.blockS, longestS);
-  if (blockS * fmaxHz < LEAST_LINES) {
+  // Whether a record suffices is told at the nominal rate, at which it was planned: else that hangs on a clock's drift.
+  const suffices = longestBlockS(accelerationG.length, plan.rateHz) >= settings.blockS * (1 - 1e-9);
+  if (!suffices && blockS * fmaxHz < LEAST_LINES) {
     return { reading: null, why: ['record too short for an envelope'], uncertain: true };
   }
-  if (blockS < settings.blockS) {
+  if (!suffices) {
     doubts.push(`record too short: envelope lines of ${hz(1 / blockS)} instead of ${hz(settings.lineHz)}`);
   }
   const transform = recordTransform(accelerationG, { rateHz, cutS: CUT_S });

@@ -57,15 +57,15 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
     if (figure.why !== null) why.push(figure.why);
     return figure.value;
   };
-  /** What the settings rule out is told, but makes no reading uncertain. */
+  /** What is simply not to be had is told, but makes no reading uncertain. */
   const ruledOut: string[] = [];
-  const bandVelocity = (bandHz: readonly [number, number], name: string): number | null => {
-    if (bandHz[0] < leastHz) return null;
-    const figure = velocityRms(decimated, bandHz, name, 'shared');
+  const takeOrRuleOut = (figure: Figure): number | null => {
     if (!figure.settled) return take(figure);
     ruledOut.push(figure.why);
     return null;
   };
+  const bandVelocity = (bandHz: readonly [number, number], name: string): number | null =>
+    bandHz[0] < leastHz ? null : takeOrRuleOut(velocityRms(decimated, bandHz, name, 'shared'));
 
   const running = isRunning(plan, record, given, decimated, leastHz);
   if (running === null && plan.machine.running.kind === 'mqtt') {
@@ -86,7 +86,7 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
     const edges = 'hz' in range ? range.hz : range.orders;
     bands[id] = unitHz === null ? null : bandVelocity([edges[0] * unitHz, edges[1] * unitHz], `band ${id}`);
   }
-  const p2p = overall === null ? null : take(displacementPeakToPeak(decimated, bandHz));
+  const p2p = overall === null ? null : takeOrRuleOut(displacementPeakToPeak(decimated, bandHz));
   const { hz: shaftHz } = shaft;
   const otherHz = shaftHz === null ? [] : plan.otherRatios.map((ratio) => shaftHz * ratio);
   const envelope = measureEnvelope(plan, acceleration, rateHz, shaft.hz, otherHz);

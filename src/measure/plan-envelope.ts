@@ -1,10 +1,17 @@
 /** The sizes of an envelope measurement: the band that the rate and the sensor leave, its spectrum, its length. */
 
 import type { Point } from '../config/station.ts';
-import { hz, type PlanNotes, RATE_OVER_FMAX, range } from './plan-notes.ts';
+import { hz, LEAST_AVERAGES, type PlanNotes, RATE_OVER_FMAX, range } from './plan-notes.ts';
 
 /** Cut from each end of a squared envelope, where the band's filter has not settled. */
 export const ENVELOPE_EDGE_S = 0.05;
+/** A spectrum is averaged over two half-overlapped blocks at least; a shorter record gets wider lines instead. */
+const LEAST_BLOCKS = 1.5;
+/**
+ * A bearing is judged on blocks of so many turns at least: with fewer a line is wider than the distance of one bearing's
+ * cage from another's, or of a race from the shaft.
+ */
+export const LEAST_TURNS = 20;
 /** Bearing tones lie about 500 Hz to 16 kHz (common practice, no source). */
 const AUTO_LOW_HZ = 500;
 const LEAST_FMAX_HZ = 500;
@@ -18,6 +25,11 @@ export interface EnvelopePlan {
   readonly lineHz: number;
   readonly blockS: number;
   readonly averages: number;
+}
+
+/** The longest block, in seconds, of which a record holds two. */
+export function longestBlockS(samples: number, rateHz: number): number {
+  return (samples / rateHz - 2 * ENVELOPE_EDGE_S) / LEAST_BLOCKS;
 }
 
 /**
@@ -63,6 +75,6 @@ export function planEnvelope(
     lines: asked.lines,
     lineHz,
     blockS: 1 / lineHz,
-    averages: asked.averages,
+    averages: Math.max(LEAST_AVERAGES, asked.averages),
   };
 }

@@ -5,6 +5,8 @@ import type { PointPlan } from './plan.ts';
 
 /** A record promises 0 to rate/2.56 (common practice, no source). */
 export const RATE_OVER_FMAX = 2.56;
+/** A spectrum is averaged over two blocks at least: one alone hardly hears the record's ends. */
+export const LEAST_AVERAGES = 2;
 /** Two components closer than the main lobe of a Hann window, four lines wide between zeros, look like one. */
 const TELL_APART_LINES = 2;
 

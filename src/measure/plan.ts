@@ -7,9 +7,24 @@ import type { Machine, Point } from '../config/station.ts';
 import { type BearingMultiples, type BearingRates, bearingMultiples } from '../machine/bearing.ts';
 import { synchronousHz } from '../machine/electrical.ts';
 import { chooseFactor, type DecimationPlan, planDecimation } from '../signal/decimate.ts';
+import { DISPLACEMENT_PERIODS } from '../signal/integrate.ts';
 import type { WindowName } from '../signal/window.ts';
-import { ENVELOPE_EDGE_S, type EnvelopePlan, planEnvelope } from './plan-envelope.ts';
-import { hz, noteFrequencies, PlanNotes, RATE_OVER_FMAX, range, tooLow } from './plan-notes.ts';
+import {
+  ENVELOPE_EDGE_S,
+  type EnvelopePlan,
+  LEAST_TURNS,
+  longestBlockS,
+  planEnvelope,
+} from './plan-envelope.ts';
+import {
+  hz,
+  LEAST_AVERAGES,
+  noteFrequencies,
+  PlanNotes,
+  RATE_OVER_FMAX,
+  range,
+  tooLow,
+} from './plan-notes.ts';
 
 /** The filter keeps this much more than Fmax clean: a node's clock may be several percent slow. */
 const CLOCK_SLACK = 1.05;
@@ -161,7 +176,25 @@ export function planPoint(point: Point, machine: Machine, rateHz: number, mainsH
     bearings,
   };
   noteFrequencies(plan, notes);
+  noteLength(plan, notes);
   return { ...plan, warnings: notes.warnings, caveats: notes.caveats };
+}
+
+/** Notes figures for which the record is too short by the settings. */
+function noteLength(plan: Omit<PointPlan, 'warnings' | 'caveats'>, notes: PlanNotes): void {
+  const { recordSamples, rateHz, spectrum, overallHz, shaft, envelope, bearings } = plan;
+  if ((recordSamples - 2 * spectrum.marginSamples) * overallHz[0] < DISPLACEMENT_PERIODS * rateHz) {
+    notes.warn(
+      `displacement peak to peak will be null: a record of ${(recordSamples / rateHz).toFixed(1)} s holds fewer than ${Math.ceil(DISPLACEMENT_PERIODS)} periods of ${hz(overallHz[0])}; give more lines or averages`,
+    );
+  }
+  if (envelope === null || shaft?.nominalHz == null) return;
+  const turns = longestBlockS(recordSamples, rateHz) * shaft.nominalHz;
+  if (turns < LEAST_TURNS && bearings.some(({ multiples }) => multiples !== null)) {
+    notes.warn(
+      `no bearing will be judged: ${Math.floor(turns)} turns a block, ${LEAST_TURNS} are needed; give the envelope more lines or averages`,
+    );
+  }
 }
 
 /** Behind a belt or gear only the pump's own points are on the impeller's shaft. */
@@ -210,6 +243,7 @@ function planSpectrum(point: Point, rateHz: number, notes: PlanNotes): SpectrumP
   const decimatedHz = rateHz / factor;
   const blockSamples = Math.round(decimatedHz / lineHz);
   const decimation = decimationOf(rateHz, factor, fmaxHz);
+  const averages = Math.max(LEAST_AVERAGES, asked.averages);
   return {
     factor,
     rateHz: decimatedHz,
@@ -217,10 +251,10 @@ function planSpectrum(point: Point, rateHz: number, notes: PlanNotes): SpectrumP
     lines: Math.floor(fmaxHz / lineHz),
     lineHz,
     blockSamples,
-    averages: asked.averages,
+    averages,
     window: asked.window,
     marginSamples: decimation.marginSamples,
-    rawSamples: decimation.inputLength(blockSamples + (asked.averages - 1) * Math.ceil(blockSamples / 2)),
+    rawSamples: decimation.inputLength(blockSamples + (averages - 1) * Math.ceil(blockSamples / 2)),
   };
 }
 

@@ -1,6 +1,7 @@
 /** Velocity and displacement figures of a spectrum: overall, the configured bands. */
 
 import {
+  DISPLACEMENT_PERIODS,
   displacementWaveform,
   displacementWeights,
   GRAVITY_M_S2,
@@ -17,7 +18,7 @@ import {
 import type { DecimatedRecord } from './decimated.ts';
 import { hz, range, tooLow } from './plan-notes.ts';
 
-/** A figure, or why it cannot be had; `settled`: by the settings, so that no record whatever would have it. */
+/** A figure, or why it cannot be had; `settled`: it is simply not there, and no other figure is the worse for it. */
 export type Figure =
   | { readonly value: number; readonly why: null; readonly settled: false }
   | { readonly value: null; readonly why: string; readonly settled: boolean };
@@ -58,8 +59,8 @@ export function displacementPeakToPeak(record: DecimatedRecord, bandHz: readonly
     waveform = displacementWaveform(samples, { rateHz, bandHz, unit: 'g' });
   } catch (error) {
     if (!(error instanceof SignalRangeError)) throw error;
-    const why = `record too short: no displacement over time from ${hz(bandHz[0])}`;
-    return { value: null, why, settled: false };
+    const why = `no displacement over time from ${hz(bandHz[0])}: that takes ${Math.ceil(DISPLACEMENT_PERIODS)} periods`;
+    return { value: null, why, settled: true };
   }
   let low = Number.POSITIVE_INFINITY;
   let high = Number.NEGATIVE_INFINITY;
@@ -88,15 +89,15 @@ function figure(meanSquare: number): Figure {
 }
 
 function outOfReach(record: DecimatedRecord, bandHz: readonly [number, number], name: string): Figure | null {
-  const { spectrum, fmaxHz, fullLineHz } = record;
+  const { fmaxHz, plannedLineHz, shortLineHz } = record;
   // A hair above: a band that ends at Fmax is in reach whatever the last bit.
   if (bandHz[1] > fmaxHz * (1 + 1e-9)) {
     const why = `${name}: ${range(bandHz)} reaches above Fmax, ${hz(fmaxHz)}`;
     return { value: null, why, settled: false };
   }
-  const { lineHz, window } = spectrum;
-  const settings = tooLow(bandHz[0], { lineHz: fullLineHz, window }, name);
+  const { window } = record.spectrum;
+  const settings = tooLow(bandHz[0], { lineHz: plannedLineHz, window }, name);
   if (settings !== null) return { value: null, why: `${settings}: give more lines`, settled: true };
-  const short = tooLow(bandHz[0], { lineHz, window }, name);
+  const short = tooLow(bandHz[0], { lineHz: shortLineHz, window }, name);
   return short === null ? null : { value: null, why: `record too short: ${short}`, settled: false };
 }

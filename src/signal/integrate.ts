@@ -60,14 +60,22 @@ export interface DisplacementOptions {
   readonly unit: AccelerationUnit;
 }
 
+/** Periods of the lower edge over which a stretch is faded in, and out. */
+const FADE_PERIODS = 1.9;
+/** Fades' worth left out of the result at each end, where the fade still rings. */
+const CUT_FADES = 3;
+/** Fades' worth that a stretch needs: both cuts, and something between. */
+const NEEDED_FADES = 8;
+/** What a stretch needs in periods of the lower edge. */
+export const DISPLACEMENT_PERIODS = NEEDED_FADES * FADE_PERIODS;
+
 /**
  * Displacement over time: acceleration of one stretch, integrated twice in the frequency domain within a band. The
- * stretch is faded in and out over two periods of the lower edge; six periods at each end, where that still rings, are left
- * out of the result.
+ * stretch is faded in and out over 1.9 periods of the lower edge; three times that at each end is left out of the result.
  *
- * @param x Acceleration, at least 16 periods of the lower edge.
+ * @param x Acceleration, at least 15.2 periods of the lower edge.
  * @param options Rate, band, unit.
- * @returns µm, shorter than x by 6·rate/lower edge at each end.
+ * @returns µm, shorter than x by 5.7·rate/lower edge at each end.
  * @throws SignalRangeError if the band is not in order, lies above half the rate, or the stretch is too short.
  * @see Kinematics; 1 g = 9.80665 m/s².
  * @example 10 Hz at 1 g peak swings 4968.1 µm peak to peak.
@@ -80,9 +88,9 @@ export function displacementWaveform(x: Float64Array, options: DisplacementOptio
   if (!(highHz > lowHz && highHz <= rateHz / 2)) {
     throw new SignalRangeError('bandHz', bandHz, `needs edges in order, the upper at most ${rateHz / 2} Hz`);
   }
-  const fade = Math.ceil((2 * rateHz) / lowHz);
-  const cut = 3 * fade;
-  const needed = 8 * fade;
+  const fade = Math.ceil((FADE_PERIODS * rateHz) / lowHz);
+  const cut = CUT_FADES * fade;
+  const needed = NEEDED_FADES * fade;
   if (x.length < needed) {
     throw new SignalRangeError(
       'x.length',

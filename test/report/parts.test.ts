@@ -189,7 +189,8 @@ describe('the cascade', () => {
       firstAt: 0,
       factor: 1,
       spectrum,
-      fullLineHz: spectrum.lineHz,
+      plannedLineHz: spectrum.lineHz,
+      shortLineHz: spectrum.lineHz,
       short: null,
     };
     const cascade = cascadeOf(whole, 50)!;
@@ -212,7 +213,8 @@ describe('the cascade', () => {
       firstAt: 0,
       factor: 1,
       spectrum,
-      fullLineHz: spectrum.lineHz,
+      plannedLineHz: spectrum.lineHz,
+      shortLineHz: spectrum.lineHz,
       short: null,
     };
     expect(cascadeOf(whole, 25)).toBeNull();

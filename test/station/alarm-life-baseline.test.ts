@@ -59,7 +59,7 @@ describe.runIf(haveSocat)('with time', () => {
 
     rig.mmS[2] = 5;
     await rig.until('pump-2/alarm/h.zone', { state: 'unacknowledged' });
-    const { status, out } = await forebay('learn', '-c', rig.agent.stationFile, '--hours', String(25 / 3600));
+    const { status, out } = await forebay('learn', '-c', rig.agent.stationFile, '--hours', String(40 / 3600));
     expect(out).toMatch(/^pump-2: refused: pump-2\/h is in zone C/m);
     const learned =
       /^pump-1\/h: learned at (\S+) to (\S+) Hz from (\d+) readings: velocity\.overall (\S+) ± /m.exec(out);
