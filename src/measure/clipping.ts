@@ -58,20 +58,29 @@ function atRail(counts: Int32Array, sign: 1 | -1): number {
   }
   if (places.length < LEAST) return 0;
   const height = (extreme - opposite) / 2;
-  const piledUp = REACHES.some(
-    (reach, r) => reach <= height / 2 && isPiledUp(places.length, near[r]!, reach),
+  const expected = REACHES.flatMap((reach, r) =>
+    reach === 1 || reach <= height / 2 ? [mostByChance(near[r]!, reach)] : [],
   );
-  const clipped = hasPlateau(counts, places) || (piledUp && isUneven(counts, places, height));
+  const least = Math.min(...expected);
+  const clipped =
+    hasPlateau(counts, places, least) ||
+    (isPiledUp(places.length, least) && isUneven(counts, places, height));
   return clipped ? places.length : 0;
 }
 
-/** A run of equal samples that the waveform enters or leaves with a corner. */
-function hasPlateau(counts: Int32Array, places: readonly number[]): boolean {
+/**
+ * A run of equal samples that the waveform enters or leaves with a corner, longer than chance makes where so many
+ * samples stand at a natural edge.
+ *
+ * @param expected how many do, at most
+ */
+function hasPlateau(counts: Int32Array, places: readonly number[], expected: number): boolean {
+  const share = expected / counts.length;
   for (let from = 0; from < places.length; ) {
     let to = from;
     while (to + 1 < places.length && places[to + 1] === places[to]! + 1) to++;
     const length = to - from + 1;
-    if (length >= LEAST) {
+    if (length >= LEAST && counts.length * share ** length < RAIL_PROBABILITY) {
       const level = counts[places[from]!]!;
       const beside = Math.ceil(length / 2);
       const drops = [places[from]! - beside, places[to]! + beside]
@@ -85,12 +94,15 @@ function hasPlateau(counts: Int32Array, places: readonly number[]): boolean {
 }
 
 /**
- * Whether so many samples on the extreme are more than chance makes of any natural edge. The steepest one is that of a
- * sine: of the samples within d counts of its top there are √d as many, so the topmost count has at most 1/(√(1+r) − 1)
- * of what lies within r counts below it.
+ * How many samples a natural edge has on its topmost count, at most. The steepest edge is that of a sine: of the samples
+ * within d counts of its top there are √d as many, so 1/(√(1+r) − 1) of what lies within r counts below it.
  */
-function isPiledUp(samples: number, near: number, reach: number): boolean {
-  const expected = Math.max(1, near) / (Math.sqrt(1 + reach) - 1);
+function mostByChance(near: number, reach: number): number {
+  return Math.max(1, near) / (Math.sqrt(1 + reach) - 1);
+}
+
+/** Whether so many samples on the extreme are more than chance makes of a natural edge. */
+function isPiledUp(samples: number, expected: number): boolean {
   if (expected >= samples) return false;
   // Poisson: P(n ≥ samples) is at most a geometric tail from its first term.
   let logTerm = -expected;

@@ -128,6 +128,20 @@ describe('clipping before the converter', () => {
     expect(clippedSamples(stepped(clip(sine(3300, 900, 1), 800)))).toBeGreaterThan(0);
   });
 
+  it('is not seen in noise that ends at an edge of its own, nor in tones with it', () => {
+    const random = gaussian(17);
+    // Phases of many turns make an even spread.
+    const even = () => (1000 * random()) % 1;
+    for (const halfWidth of [1, 5, 20.5, 100]) {
+      for (const amplitude of [0, 20, 93, 465]) {
+        for (let record = 0; record < 40; record++) {
+          const counts = sine(40, amplitude, 0, 8192).map((count) => count + Math.round(halfWidth * even()));
+          expect(clippedSamples(counts), `${amplitude} with ±${halfWidth}, record ${record}`).toBe(0);
+        }
+      }
+    }
+  });
+
   it('is not seen in noise, nor in tones with noise, from less than a count to thousands', () => {
     for (const noise of [0.3, 1, 3, 10, 100, 3000]) {
       for (const amplitude of [0, 20, 900, 20_000]) {

@@ -223,7 +223,7 @@ export class PumpRig {
   }
 }
 
-/** Standard normal, by Box and Muller (1958). Evenly spread noise has an edge, which looks like a rail to the agent. */
+/** Standard normal, by Box and Muller (1958). */
 function gauss(random: () => number): number {
   return Math.sqrt(-2 * Math.log(1 - random())) * Math.cos(2 * Math.PI * random());
 }
