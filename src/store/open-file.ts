@@ -9,7 +9,7 @@
  * file, so it is an error and the file stays.
  */
 
-import { existsSync, readdirSync, renameSync, rmSync, statSync } from 'node:fs';
+import { existsSync, readdirSync, renameSync, rmSync, statfsSync, statSync } from 'node:fs';
 import { join } from 'node:path';
 import SqliteDatabase, { type Database } from 'better-sqlite3';
 import { ForebayError } from '../config/errors.ts';
@@ -18,6 +18,7 @@ import { schemaVersion } from './schema.ts';
 const fileName = 'forebay.db';
 const suffixes = ['', '-wal', '-shm'] as const;
 const brokenKept = 3;
+const fullBelowBytes = 1 << 20;
 
 export interface OpenedFile {
   db: Database;
@@ -125,6 +126,16 @@ function isBroken(error: unknown): boolean {
   return code === 'SQLITE_ERROR' && /no such (table|column)/.test((error as Error).message);
 }
 
+/** Whether next to nothing is free: a write that fails on a disk with room fails for another reason, as a worn card. */
+function isFull(path: string): boolean {
+  try {
+    const { bavail, bsize } = statfsSync(path);
+    return bavail * bsize < fullBelowBytes;
+  } catch {
+    return false;
+  }
+}
+
 /** Tells troubles of the disk, of the file and of the program apart. */
 export function storeError(error: unknown, where: string): unknown {
   if (error instanceof ForebayError) return error;
@@ -132,7 +143,7 @@ export function storeError(error: unknown, where: string): unknown {
   if (code === '') return error;
   const message = `${where}: ${(error as Error).message} (${code})`;
   const cause = { cause: error };
-  if (code === 'SQLITE_FULL' || code === 'SQLITE_IOERR_WRITE')
+  if (code === 'SQLITE_FULL' || (code === 'SQLITE_IOERR_WRITE' && isFull(where)))
     return new ForebayError('store.full', message, cause);
   if (isBroken(error)) return new ForebayError('store.broken', message, cause);
   if (/^SQLITE_(READONLY|CANTOPEN|IOERR|PERM|AUTH|NOLFS)/.test(code)) {

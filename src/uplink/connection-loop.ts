@@ -57,6 +57,21 @@ export class ConnectionLoop {
     return this.#connection;
   }
 
+  /** What ended the connections before is gone: the next attempt comes as soon as after a first failure. */
+  soon(): void {
+    this.#failures = 0;
+    if (this.#timer === null || this.#stopped) return;
+    clearTimeout(this.#timer);
+    this.#attemptIn(this.#settings.firstPauseMs);
+  }
+
+  #attemptIn(pauseMs: number): void {
+    this.#timer = setTimeout(() => {
+      this.#timer = null;
+      void this.#attempt();
+    }, pauseMs);
+  }
+
   async #attempt(): Promise<void> {
     const generation = ++this.#generation;
     let steady: NodeJS.Timeout | undefined;
@@ -87,7 +102,7 @@ export class ConnectionLoop {
     const pauseMs = atOnce ? 0 : this.#pauseMs(end);
     if (!atOnce) this.#failures++;
     this.#host.ended(end, pauseMs);
-    this.#timer = setTimeout(() => void this.#attempt(), pauseMs);
+    this.#attemptIn(pauseMs);
   }
 
   /** True: the other version is to be tried at once. */

@@ -17,6 +17,8 @@ export interface DrainerHost {
   beside(): { messages: number; bytes: number };
   /** A message is no longer in flight. */
   settled(): void;
+  /** The message over which the broker hung up is set aside. */
+  relieved(): void;
   log(level: 'warn' | 'error', message: string, details: Record<string, unknown>): void;
 }
 
@@ -89,7 +91,8 @@ export class OutboxDrainer {
     if (end.kind !== 'closed') return;
     for (const { row } of flight) {
       const poison = flight.length === 1 && row.tries + 1 >= poisonTries;
-      await this.#reject(row, `the broker hung up ${row.tries + 1} times over it`, poison);
+      const done = await this.#reject(row, `the broker hung up ${row.tries + 1} times over it`, poison);
+      if (poison && done) this.#host.relieved();
     }
   }
 

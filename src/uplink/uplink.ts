@@ -122,6 +122,7 @@ export class Uplink {
         published: (name, bytes) => this.#ledger.published(name, bytes),
         beside: () => ({ messages: this.#parts.inFlight, bytes: this.#parts.inFlightBytes }),
         settled: () => this.#parts.kick(),
+        relieved: () => this.#loop.soon(),
         log: (...line) => host.log(...line),
       },
       {

@@ -4,7 +4,17 @@
  * prints the table of the README.
  */
 import { spawnSync } from 'node:child_process';
-import { closeSync, mkdirSync, openSync, truncateSync, writeFileSync, writeSync } from 'node:fs';
+import {
+  closeSync,
+  existsSync,
+  mkdirSync,
+  openSync,
+  rmdirSync,
+  rmSync,
+  truncateSync,
+  writeFileSync,
+  writeSync,
+} from 'node:fs';
 import { join } from 'node:path';
 import { until } from './broker-rig.ts';
 import { type FaultStation, pointKeys, stationText } from './fault-station.ts';
@@ -52,6 +62,57 @@ function smallDisk(): Start {
       if (status !== 0) throw new Error('no tmpfs');
       station.onStop(() => void spawnSync('umount', ['-l', station.directory]));
     },
+  };
+}
+
+/** The station's folder on a card of its own, with a file system that turns read-only by itself when it fails. */
+function cardOf(station: FaultStation) {
+  const image = join(station.agent.folder, 'card.img');
+  const run = (command: string, ...args: string[]) => {
+    const { status, stderr } = spawnSync(command, args, { encoding: 'utf8' });
+    if (status !== 0) throw new Error(`${command} ${args.join(' ')}: ${stderr}`);
+  };
+  return {
+    make: () => {
+      mkdirSync(station.directory, { recursive: true });
+      writeFileSync(image, '');
+      truncateSync(image, 32 << 20);
+      run('mkfs.ext4', '-q', '-F', image);
+    },
+    insert: () => run('mount', '-o', 'loop,errors=remount-ro', image, station.directory),
+    /** What the kernel does when the card's journal cannot be written: files that are open turn read-only as well. */
+    fail: () => run('mount', '-o', 'remount,abort', station.directory),
+    remove: () => run('umount', station.directory),
+  };
+}
+
+function ownCard(): Start {
+  return {
+    prepare: (station) => {
+      const card = cardOf(station);
+      card.make();
+      card.insert();
+      station.onStop(() => void spawnSync('umount', ['-l', station.directory]));
+    },
+  };
+}
+
+/** A control group whose memory is limited; the kernel kills what wants more (memory.oom_control, memory.max). */
+function memoryGroup(limitBytes: number): { add(pid: number): void; remove(): void } | null {
+  const [root, limit] = existsSync('/sys/fs/cgroup/cgroup.controllers')
+    ? ['/sys/fs/cgroup', 'memory.max']
+    : ['/sys/fs/cgroup/memory', 'memory.limit_in_bytes'];
+  const folder = join(root, `forebay-test-${process.pid}`);
+  try {
+    mkdirSync(folder, { recursive: true });
+    writeFileSync(join(folder, limit), String(limitBytes));
+  } catch {
+    rmSync(folder, { recursive: true, force: true });
+    return null;
+  }
+  return {
+    add: (pid) => writeFileSync(join(folder, 'cgroup.procs'), String(pid)),
+    remove: () => rmdirSync(folder),
   };
 }
 
@@ -406,6 +467,41 @@ export const faults: readonly Fault[] = [
       if (!refused.includes('store.unwritable')) throw new Error(`started all the same: ${refused}`);
       if (!remount('rw')) throw new Error('the disk stayed read-only');
       await station.agent.start();
+    },
+  },
+  {
+    name: 'disk turns read-only while running',
+    room: 'agent',
+    times: 1,
+    costs: 40,
+    start: ownCard,
+    untested: mayMount,
+    inject: async (station) => {
+      const card = cardOf(station);
+      card.fail();
+      await until(() => said(station, 'store.unwritable'), 'a word on the disk', 20_000);
+      await station.agent.stop();
+      card.remove();
+      card.insert();
+      await station.agent.start();
+    },
+  },
+  {
+    name: 'memory ceiling hit (killed by the kernel)',
+    room: 'agent',
+    times: 1,
+    costs: 12,
+    untested: () => {
+      const group = memoryGroup(1 << 30);
+      group?.remove();
+      return group === null ? 'it needs the right to make a control group' : null;
+    },
+    inject: async ({ agent }) => {
+      const group = memoryGroup(4 << 20)!;
+      group.add(agent.pid);
+      await until(() => !agent.running, 'the agent to be killed', 60_000);
+      group.remove();
+      await agent.start();
     },
   },
   ...(['truncated', 'garbage', 'empty'] as const).map(

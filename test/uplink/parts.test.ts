@@ -271,6 +271,7 @@ describe('the outbox drainer', () => {
             sent.push({ topic, settle: (error) => (error === undefined ? resolve() : reject(error)) });
           }),
       }) as unknown as Connection;
+    const relieved = { times: 0 };
     const drainer = new OutboxDrainer(
       {
         store,
@@ -278,6 +279,7 @@ describe('the outbox drainer', () => {
         published: () => undefined,
         beside: () => ({ messages: 0, bytes: 0 }),
         settled: () => undefined,
+        relieved: () => void relieved.times++,
         log: () => undefined,
       },
       {
@@ -289,7 +291,7 @@ describe('the outbox drainer', () => {
         ...changes,
       },
     );
-    return { store, sent, connection, drainer };
+    return { store, sent, connection, drainer, relieved };
   };
 
   it('keeps within what both sides take, one message a topic', async () => {
@@ -354,6 +356,19 @@ describe('the outbox drainer', () => {
     }
     const [row] = await store.batch({ max: 9, busyTopics: [], classes: messageClasses });
     expect(row?.tries).toBe(0);
+  });
+
+  it('sets a message aside over which the broker hung up eight times, and says so once', async () => {
+    const { store, sent, connection, drainer, relieved } = make();
+    await store.commit({ outbox: [message(1)] });
+    for (let round = 1; round <= 8; round++) {
+      expect(relieved.times).toBe(0);
+      drainer.attach(connection(10));
+      await until(() => sent.length === round, 'the message');
+      await drainer.detach({ kind: 'closed', error: new Error('the broker hung up') });
+    }
+    expect(relieved.times).toBe(1);
+    expect((await store.counters()).setAside.rows).toBe(1);
   });
 
   it('rests when the store fails, and goes on afterwards', async () => {
