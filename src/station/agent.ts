@@ -106,6 +106,7 @@ export class Agent {
       log: this.#log,
       monotonicS: () => this.#clock.monotonicS(),
       disk: (trouble) => this.#gateway('disk', trouble !== null, trouble),
+      storage: () => void this.#parts?.uplink.agentChanged(),
       fatal: (error) => this.#options.fatal(error),
     });
     this.#told = new ToldValues(toldTopics(station.machines), () => this.#clock.monotonicS());
@@ -326,6 +327,7 @@ export class Agent {
         version: this.#options.version,
         config: this.#station.configHash,
         clock: this.#clockSays,
+        storage: this.#watch.says,
       }),
       command: (topic, text) => this.#told.hear(topic, text),
       log: (level, message, details) => {

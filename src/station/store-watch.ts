@@ -7,23 +7,31 @@ import { ForebayError } from '../config/errors.ts';
 import type { OpenReport, Store } from '../store/types.ts';
 import type { Log } from './log.ts';
 
+export type StorageState = 'ok' | 'failing';
+
 export interface StoreWatchHost {
   store: Pick<Store, 'open'>;
   log: Log;
   monotonicS(): number;
   /** The disk is in trouble, or no longer. */
   disk(trouble: string | null): void;
+  /** For ten seconds nothing could be written, so nothing leaves either; or that is over. */
+  storage(says: StorageState): void;
   /** The agent cannot go on with this database. */
   fatal(error: Error): void;
 }
 
 const REOPEN_MS = 1000;
+/** Trouble that lasts so long is no hiccup. */
+const FAILING_MS = 10_000;
 
 export class StoreWatch {
   readonly #host: StoreWatchHost;
   #openedS = 0;
   #runSAtOpen = 0;
   #trouble = false;
+  #says: StorageState = 'ok';
+  #failing: NodeJS.Timeout | null = null;
   #givenUp = false;
 
   constructor(host: StoreWatchHost) {
@@ -33,6 +41,10 @@ export class StoreWatch {
   /** Run time, as the store counts it, in seconds. */
   get runS(): number {
     return this.#runSAtOpen + this.#host.monotonicS() - this.#openedS;
+  }
+
+  get says(): StorageState {
+    return this.#says;
   }
 
   async open(): Promise<OpenReport> {
@@ -47,12 +59,15 @@ export class StoreWatch {
     if (error instanceof ForebayError && error.code === 'store.broken') this.#giveUp(error);
     if (this.#trouble) return;
     this.#trouble = true;
+    this.#failing = setTimeout(() => this.#say('failing'), FAILING_MS).unref();
     this.#host.disk(error instanceof Error ? error.message : String(error));
   }
 
   works(): void {
     if (!this.#trouble) return;
     this.#trouble = false;
+    if (this.#failing) clearTimeout(this.#failing);
+    this.#say('ok');
     this.#host.disk(null);
   }
 
@@ -70,6 +85,12 @@ export class StoreWatch {
         await new Promise((resolve) => setTimeout(resolve, REOPEN_MS));
       }
     }
+  }
+
+  #say(says: StorageState): void {
+    if (says === this.#says) return;
+    this.#says = says;
+    this.#host.storage(says);
   }
 
   #giveUp(error: Error): void {

@@ -130,6 +130,7 @@ const agent = z.looseObject({
   version: z.string(),
   config: z.string(),
   clock: z.enum(['synchronised', 'free']),
+  storage: z.enum(['ok', 'failing']),
 });
 
 const bytesByClass = z.record(z.string(), z.looseObject({ sent: count, received: count }));

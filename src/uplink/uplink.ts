@@ -52,7 +52,7 @@ export interface UplinkHost {
   runS(): number;
   /** Wall time, ISO 8601 UTC. */
   now(): string;
-  agent(): { version: string; config: string; clock: 'synchronised' | 'free' };
+  agent(): { version: string; config: string; clock: 'synchronised' | 'free'; storage: 'ok' | 'failing' };
   command(topic: string, text: string): void;
   log(level: 'info' | 'warn' | 'error', message: string, details: Record<string, unknown>): void;
 }

@@ -66,7 +66,7 @@ export class Rig {
       ids,
       runS: () => performance.now() / 1000,
       now: () => new Date().toISOString(),
-      agent: () => ({ version: '0.1.0', config: '0123456789ab', clock: this.clock }),
+      agent: () => ({ version: '0.1.0', config: '0123456789ab', clock: this.clock, storage: 'ok' as const }),
       command: (topic, text) => this.commands.push([topic, text]),
       log: (level, message, details) => this.lines.push({ level, message, details }),
     });

@@ -480,6 +480,7 @@ export const faults: readonly Fault[] = [
       const card = cardOf(station);
       card.fail();
       await until(() => said(station, 'store.unwritable'), 'a word on the disk', 20_000);
+      await until(() => station.room.latest.get('agent')?.storage === 'failing', 'a word to SCADA', 20_000);
       await station.agent.stop();
       card.remove();
       card.insert();
