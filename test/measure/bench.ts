@@ -3,6 +3,7 @@
 import type { Machine, MeasureSettings, Point } from '../../src/config/station.ts';
 import { type PointPlan, planPoint } from '../../src/measure/plan.ts';
 import type { SampleRecord } from '../../src/measure/record.ts';
+import { gaussian } from '../support/seeded.ts';
 
 /** 2⁻¹² g, as the sensor link's test vectors have it. */
 export const G_PER_COUNT = 2 ** -12;
@@ -108,18 +109,4 @@ export function recordOf(options: RecordOptions): SampleRecord {
 /** Amplitude in g of a tone with this RMS velocity. */
 export function gOfVelocity(mmS: number, hz: number): number {
   return (mmS * Math.SQRT2 * 2 * Math.PI * hz) / (1000 * GRAVITY);
-}
-
-/** Seeded standard normal numbers. */
-export function gaussian(seed: number): () => number {
-  let state = seed >>> 0;
-  const uniform = () => {
-    // mulberry32, public domain.
-    state = (state + 0x6d2b79f5) >>> 0;
-    let t = state;
-    t = Math.imul(t ^ (t >>> 15), t | 1);
-    t ^= t + Math.imul(t ^ (t >>> 7), t | 61);
-    return (((t ^ (t >>> 14)) >>> 0) + 0.5) / 4_294_967_296;
-  };
-  return () => Math.sqrt(-2 * Math.log(uniform())) * Math.cos(2 * Math.PI * uniform());
 }

@@ -3,7 +3,8 @@ import { CUT_S } from '../../src/measure/envelope.ts';
 import { evidenceBands } from '../../src/measure/envelope-bands.ts';
 import { envelopeOfBand, linesOf, spectrumOfEnvelope } from '../../src/measure/envelope-spectrum.ts';
 import { recordTransform } from '../../src/signal/envelope.ts';
-import { gaussian, planOf, usual } from './bench.ts';
+import { gaussian } from '../support/seeded.ts';
+import { planOf, usual } from './bench.ts';
 
 /** A carrier at 3 kHz whose power is modulated: (1 + Σ depth·cos). */
 function withPower(

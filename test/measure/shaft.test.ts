@@ -1,6 +1,7 @@
 import { describe, expect, it } from 'vitest';
 import { measureRecord } from '../../src/measure/measure.ts';
-import { type BenchOptions, gaussian, gOfVelocity, planOf, recordOf, type Tone } from './bench.ts';
+import { gaussian } from '../support/seeded.ts';
+import { type BenchOptions, gOfVelocity, planOf, recordOf, type Tone } from './bench.ts';
 
 const RATE_HZ = 12_000;
 

@@ -9,7 +9,8 @@ import { runningMedian } from '../../src/signal/peaks.ts';
 import { averagedSpectrum, bandMeanSquare, lineAmplitudes } from '../../src/signal/spectrum.ts';
 import { statistics } from '../../src/signal/statistics.ts';
 import { coherentGain, enbwBins, makeWindow, type WindowName } from '../../src/signal/window.ts';
-import { sine, sum, uniform } from '../signal/support.ts';
+import { sine, sum } from '../signal/support.ts';
+import { seeded } from '../support/seeded.ts';
 
 interface Recipe {
   samples: number;
@@ -62,7 +63,7 @@ export interface Vectors {
 const ROUNDING = 1e-9;
 
 function recordOf({ samples, rateHz, seed, tones, offset = 0 }: Recipe): Float64Array {
-  const next = uniform(seed);
+  const next = seeded(seed);
   const noise = Float64Array.from({ length: samples }, () => next() - 0.5 + offset);
   return sum(noise, ...tones.map(([hz, amplitude]) => sine(samples, { rateHz, hz, amplitude })));
 }

@@ -29,6 +29,7 @@ import {
   windowResponse,
 } from '../../src/signal/window.ts';
 import { decibels, noise, sine } from '../signal/support.ts';
+import { velocityResponse } from './velocity-response.ts';
 
 export interface OutsideCheck {
   readonly id: string;
@@ -342,33 +343,7 @@ const conversionChecks: OutsideCheck[] = [
   },
 ];
 
-const ISO_2954 = 'ISO 2954, tolerances of the velocity response';
-const responseTable: [number, number, number, 'repro' | 'memory'][] = [
-  // Hz, least, most. The outer four are of the edition of 1975.
-  [1, 0, 0.001, 'memory'],
-  [2.5, 0, 0.016, 'memory'],
-  [10, 0.8, 1.1, 'repro'],
-  [20, 0.9, 1.1, 'repro'],
-  [40, 0.9, 1.1, 'repro'],
-  [80, 0.999, 1.001, 'repro'],
-  [160, 0.9, 1.1, 'repro'],
-  [500, 0.9, 1.1, 'repro'],
-  [1000, 0.8, 1.1, 'repro'],
-  [4000, 0, 0.016, 'memory'],
-  [10_000, 0, 0.001, 'memory'],
-];
-
-const responseChecks = responseTable.map(
-  ([hz, least, most, status]): OutsideCheck => ({
-    id: `response.${hz}-hz`,
-    source: ISO_2954,
-    status,
-    value: (least + most) / 2,
-    tolerance: (most - least) / 2,
-    unit: 'of the true velocity',
-    measure: () => velocityMmS(hz, accelerationOf(1, hz), 'm/s2'),
-  }),
-);
+const responseChecks = velocityResponse('response', (hz) => velocityMmS(hz, accelerationOf(1, hz), 'm/s2'));
 
 const averagingChecks = [1, 4, 16, 100].map(
   (blocks): OutsideCheck => ({

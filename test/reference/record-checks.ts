@@ -4,6 +4,7 @@ import { measureRecord } from '../../src/measure/measure.ts';
 import type { Reading } from '../../src/measure/reading.ts';
 import { G_PER_COUNT, planOf, type RecordOptions, recordOf, type Tone } from '../measure/bench.ts';
 import type { OutsideCheck } from './outside-checks.ts';
+import { velocityResponse } from './velocity-response.ts';
 
 /** Case Western Reserve University bearing data center, drive end: published multiples. */
 const cwru6205: Bearing = {
@@ -147,37 +148,12 @@ const orderRows = (['1', '2', '3'] as const).map(
   ],
 );
 
-const ISO_2954 = 'ISO 2954, tolerances of the velocity response, 10 to 1000 Hz';
-const responseTable = [
-  // Hz, least, most. The outer four are of the edition of 1975.
-  [1, 0, 0.001, 'memory'],
-  [2.5, 0, 0.016, 'memory'],
-  [10, 0.8, 1.1, 'repro'],
-  [20, 0.9, 1.1, 'repro'],
-  [40, 0.9, 1.1, 'repro'],
-  [80, 0.999, 1.001, 'repro'],
-  [160, 0.9, 1.1, 'repro'],
-  [500, 0.9, 1.1, 'repro'],
-  [1000, 0.8, 1.1, 'repro'],
-  [4000, 0, 0.016, 'memory'],
-  [10_000, 0, 0.001, 'memory'],
-] as const;
-const responses = responseTable.map(
-  ([hz, least, most, status]): OutsideCheck => ({
-    id: `record.response.${hz}-hz`,
-    source: ISO_2954,
-    status,
-    value: (least + most) / 2,
-    tolerance: (most - least) / 2,
-    unit: 'of the true velocity',
-    measure: () => {
-      // As large as 16 bit of 2⁻¹² g hold, so that what is left outside of the band stands over their rounding.
-      const mmS = Math.min(10, 4 / gPeak(1, hz));
-      const { velocity } = reading(`response-${hz}`, [[hz, gPeak(mmS, hz)]], { noiseG: 0.3 * G_PER_COUNT });
-      return (velocity.overall ?? Number.NaN) / mmS;
-    },
-  }),
-);
+const responses = velocityResponse('record.response', (hz) => {
+  // As large as 16 bit of 2⁻¹² g hold, so that what is left outside of the band stands over their rounding.
+  const mmS = Math.min(10, 4 / gPeak(1, hz));
+  const { velocity } = reading(`response-${hz}`, [[hz, gPeak(mmS, hz)]], { noiseG: 0.3 * G_PER_COUNT });
+  return (velocity.overall ?? Number.NaN) / mmS;
+});
 
 /** (1 + 0.5·cos)·carrier of 1 g, modulated at the BPFO of the bearing of `planOf` below. */
 const modulated = () => {

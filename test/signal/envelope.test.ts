@@ -5,7 +5,8 @@ import { kurtogram } from '../../src/signal/kurtogram.ts';
 import { SignalRangeError } from '../../src/signal/range-error.ts';
 import { averagedSpectrum, lineAmplitude, strongestBin } from '../../src/signal/spectrum.ts';
 import { statistics } from '../../src/signal/statistics.ts';
-import { noise, sine, sum, uniform } from './support.ts';
+import { seeded } from '../support/seeded.ts';
+import { noise, sine, sum } from './support.ts';
 
 const rateHz = 40_960;
 
@@ -190,7 +191,7 @@ describe('spectral kurtosis (Antoni 2007: 0 for complex Gaussian, −1 for const
 
   it('finds the resonance that rings under noise', () => {
     // Impulses at 90 Hz ringing at 7 kHz, damping 2000 1/s, in noise of the whole band.
-    const next = uniform(5);
+    const next = seeded(5);
     const x = noise(4 * rateHz, 22).map((v) => 0.3 * v);
     for (let at = 100; at < x.length - 400; at += Math.round((rateHz / 90) * (1 + 0.01 * (next() - 0.5)))) {
       for (let i = 0; i < 400; i++) {

@@ -1,4 +1,5 @@
 /** Signals for the tests of the signal room; all seeded or closed-form. */
+import { gaussian } from '../support/seeded.ts';
 
 export function sine(
   n: number,
@@ -20,25 +21,10 @@ export function sum(...signals: Float64Array[]): Float64Array {
   return signals[0]!.map((_, i) => signals.reduce((total, signal) => total + signal[i]!, 0));
 }
 
-/** Uniform in 0..1: mulberry32, a public-domain 32-bit generator. */
-export function uniform(seed: number): () => number {
-  let state = seed >>> 0;
-  return () => {
-    state = (state + 0x6d2b79f5) >>> 0;
-    let t = state;
-    t = Math.imul(t ^ (t >>> 15), t | 1);
-    t ^= t + Math.imul(t ^ (t >>> 7), t | 61);
-    return ((t ^ (t >>> 14)) >>> 0) / 2 ** 32;
-  };
-}
-
-/** Gaussian noise of deviation 1 (Box and Muller). */
+/** Gaussian noise of deviation 1. */
 export function noise(n: number, seed: number): Float64Array {
-  const next = uniform(seed);
-  return Float64Array.from({ length: n }, () => {
-    const radius = Math.sqrt(-2 * Math.log(1 - next()));
-    return radius * Math.cos(2 * Math.PI * next());
-  });
+  const next = gaussian(seed);
+  return Float64Array.from({ length: n }, next);
 }
 
 /** Amplitude of one frequency in a stretch, by correlation over whole periods or a long Hann window. */

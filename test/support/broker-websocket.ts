@@ -1,10 +1,9 @@
 /** A WebSocket door (RFC 6455) in front of a broker's TCP port: binary frames in, binary frames out. */
 import { createHash } from 'node:crypto';
-import { once } from 'node:events';
 import { createServer } from 'node:http';
 import { connect, type Socket } from 'node:net';
 import type { Duplex } from 'node:stream';
-import type { TestBroker } from './broker.ts';
+import { opened, type TestBroker } from './broker.ts';
 
 export async function startWebSocketDoor(target: number): Promise<TestBroker> {
   const open = new Set<Duplex>();
@@ -33,18 +32,7 @@ export async function startWebSocketDoor(target: number): Promise<TestBroker> {
     });
     unframe(socket, far);
   });
-  server.listen(0, '127.0.0.1');
-  await once(server, 'listening');
-  const address = server.address();
-  if (address === null || typeof address === 'string') throw new Error('no port');
-  return {
-    port: address.port,
-    stop: async () => {
-      for (const end of open) end.destroy();
-      server.close();
-      await once(server, 'close');
-    },
-  };
+  return await opened(server, open);
 }
 
 /** RFC 6455, 5.2: final binary frame, not masked. */

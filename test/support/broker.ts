@@ -1,6 +1,7 @@
 /** Brokers that are no mosquitto: aedes as it comes, and a listener that answers CONNECT with what it is told. */
 import { once } from 'node:events';
 import { createServer, type Server, type Socket } from 'node:net';
+import type { Duplex } from 'node:stream';
 import { Aedes } from 'aedes';
 
 export interface TestBroker {
@@ -47,14 +48,20 @@ export async function startAnswering(
 export const connack = (version: number, code: number): Uint8Array =>
   Uint8Array.from(version === 5 ? [0x20, 3, 0, code, 0] : [0x20, 2, 0, code]);
 
-async function listen(take: (socket: Socket) => void): Promise<TestBroker> {
+function listen(take: (socket: Socket) => void): Promise<TestBroker> {
   const sockets = new Set<Socket>();
-  const server: Server = createServer((socket) => {
+  const server = createServer((socket) => {
     sockets.add(socket);
     socket.on('close', () => sockets.delete(socket));
     socket.on('error', () => socket.destroy());
     take(socket);
-  }).listen(0, '127.0.0.1');
+  });
+  return opened(server, sockets);
+}
+
+/** Opens a server on a port of its own. @param sockets what is cut when it stops. */
+export async function opened(server: Server, sockets: ReadonlySet<Duplex>): Promise<TestBroker> {
+  server.listen(0, '127.0.0.1');
   await once(server, 'listening');
   const address = server.address();
   if (address === null || typeof address === 'string') throw new Error('no port');

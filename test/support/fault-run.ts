@@ -2,6 +2,7 @@
 import { FaultStation } from './fault-station.ts';
 import type { Fault } from './faults.ts';
 import { sleep } from './proxy.ts';
+import { seeded } from './seeded.ts';
 
 export interface FaultRow {
   fault: string;
@@ -12,17 +13,6 @@ export interface FaultRow {
   readingsLost: number;
   /** Longest time from the end of the cause to a good reading of every point, of samples sent since. */
   recoverS: number;
-}
-
-/** mulberry32, so that a failure can be had again. */
-export function seeded(seed: number): () => number {
-  let a = seed;
-  return () => {
-    a = (a + 0x6d2b79f5) | 0;
-    let t = Math.imul(a ^ (a >>> 15), 1 | a);
-    t = (t + Math.imul(t ^ (t >>> 7), 61 | t)) ^ t;
-    return ((t ^ (t >>> 14)) >>> 0) / 4294967296;
-  };
 }
 
 /** @param recoverWithinS gives up, and throws, after so long. */

@@ -1,9 +1,10 @@
 /** The faults of one kind as tests: what must hold after each, whatever it was. */
 import { afterAll, describe, expect, it } from 'vitest';
-import { runFault, seeded } from './fault-run.ts';
+import { runFault } from './fault-run.ts';
 import { FaultStation, pointKeys } from './fault-station.ts';
 import { type Fault, faults } from './faults.ts';
 import { haveMosquitto } from './mosquitto.ts';
+import { seeded } from './seeded.ts';
 
 /** Samples flow again within 10 s of the cause's end, a reading one record (here a second) later, and on its way. */
 const recoverWithinS = 12;

@@ -7,7 +7,7 @@ import { payloadSchemas } from '../../src/uplink/payload-schemas.ts';
 import { AgentProcess } from './agent.ts';
 import { startAedes, type TestBroker } from './broker.ts';
 import { sleep } from './proxy.ts';
-import { uniform } from './pump-signal.ts';
+import { gaussian } from './seeded.ts';
 import { PacedSender, type SentNode } from './sender.ts';
 import { SocatCable } from './socat.ts';
 
@@ -96,9 +96,9 @@ export class PumpRig {
     this.#broker = broker;
     this.#client = client;
     this.agent = new AgentProcess(stationText(broker.port, asks));
-    const random = uniform(11);
+    const noise = gaussian(11);
     this.#sender = new PacedSender(node, (bytes) => this.#cable?.write(bytes), {
-      counts: (first, n) => this.#counts(first, n, random),
+      counts: (first, n) => this.#counts(first, n, noise),
     });
     client.on('message', (topic, bytes) => this.#hear(topic.slice('forebay/weir/'.length), bytes));
   }
@@ -208,22 +208,17 @@ export class PumpRig {
     this.heard.push({ topic, payload });
   }
 
-  #counts(first: number, n: number, random: () => number): Int16Array {
+  #counts(first: number, n: number, noise: () => number): Int16Array {
     const counts = new Int16Array(n * channels.length);
     // An RMS velocity of V mm/s at f is a peak acceleration of √2·2πf·V/1000 m/s²; 1 g = 9.80665 m/s².
     const gPerMmS = (Math.SQRT2 * 2 * Math.PI * shaftHz) / 1000 / 9.80665;
     for (let i = 0; i < n; i++) {
       const sine = Math.sin((2 * Math.PI * shaftHz * (first + i)) / rateHz);
       for (const [c, name] of channels.entries()) {
-        const g = gPerMmS * this.mmS[name] * sine + 0.003 * gauss(random);
+        const g = gPerMmS * this.mmS[name] * sine + 0.003 * noise();
         counts[i * channels.length + c] = Math.round(g / gPerCount);
       }
     }
     return counts;
   }
-}
-
-/** Standard normal, by Box and Muller (1958). */
-function gauss(random: () => number): number {
-  return Math.sqrt(-2 * Math.log(1 - random())) * Math.cos(2 * Math.PI * random());
 }

@@ -2,10 +2,11 @@
  * A station left alone for hours: simulated nodes, a real broker, and a fault every so often. It is watched from
  * outside: memory and descriptors by the kernel, the delay of the event loop by its own `health`.
  */
-import { runFault, seeded } from './fault-run.ts';
+import { runFault } from './fault-run.ts';
 import { FaultStation } from './fault-station.ts';
 import { faults } from './faults.ts';
 import { sleep } from './proxy.ts';
+import { seeded } from './seeded.ts';
 
 export interface SoakOptions {
   hours: number;

@@ -4,20 +4,10 @@ import { type WorkerStore as Made, WorkerStore } from '../../src/store/worker-st
 import { ControlRoom, Rig, remoteBroker, until } from '../support/broker-rig.ts';
 import { haveMosquitto, Mosquitto } from '../support/mosquitto.ts';
 import { FaultyLink, sleep } from '../support/proxy.ts';
+import { seeded } from '../support/seeded.ts';
 import { makeFolder, removeFolders, roomyLimits, storeWorkerUrl } from '../support/store.ts';
 
 afterAll(removeFolders);
-
-/** Seeded, so that a failure can be had again (mulberry32). */
-function seeded(seed: number): () => number {
-  let a = seed;
-  return () => {
-    a = (a + 0x6d2b79f5) | 0;
-    let t = Math.imul(a ^ (a >>> 15), 1 | a);
-    t = (t + Math.imul(t ^ (t >>> 7), 61 | t)) ^ t;
-    return ((t ^ (t >>> 14)) >>> 0) / 4294967296;
-  };
-}
 
 it.runIf(haveMosquitto)(
   'an alarm that was committed arrives, in order, whatever is killed',
