@@ -4,7 +4,6 @@ import { accessSync, constants } from 'node:fs';
 import { ForebayError } from '../config/errors.ts';
 import { loadStation } from '../config/load.ts';
 import type { Station } from '../config/station.ts';
-import { PlanError } from '../measure/plan.ts';
 import { type CheckWarning, reportLinks, reportUplink } from './check-load.ts';
 import { reportPoints } from './check-report.ts';
 import { linkText, pointText, uplinkText } from './check-text.ts';
@@ -63,9 +62,8 @@ export async function checkCommand(options: CheckOptions): Promise<number> {
     out.write(`${text.join('\n')}\n`);
     return 0;
   } catch (error) {
-    if (!(error instanceof ForebayError || error instanceof PlanError)) throw error;
-    const fix = error instanceof ForebayError ? `\n${error.fix}` : '';
-    err.write(`${error.message}${fix}\n`);
+    if (!(error instanceof ForebayError)) throw error;
+    err.write(`${error.message}\n${error.fix}\n`);
     return 2;
   }
 }

@@ -16,6 +16,7 @@ export const errorCatalogue = {
   'config.duplicate-id': 'Give each its own id.',
   'config.reserved-id': 'Choose another id: this one is a topic of the agent.',
   'config.impossible': 'Check the figure against the nameplate or the data sheet.',
+  'config.unmeasurable': 'Change the settings that are named, or the sample rate of the node.',
   'config.secret': 'Move the secret into a file of its own and name that in broker.password_file.',
   'config.needs-restart': 'Restart the agent for this change, or take it back.',
   'file.unreadable': 'Check the path and that this user may read it.',

@@ -45,6 +45,9 @@ const TOOTH_LINES = 0.75;
 /** Scores in lines of full height at the first harmonic: the least, and what leaves nothing to wish for. */
 const LEAST_SCORE = 0.3;
 const FULL_SCORE = 1.5;
+/** A tooth meets a line that has this height; a comb that meets only multiples of one tooth counts this share. */
+const MET = 0.3;
+const PART_SHARE = 0.5;
 /** How near the next best may come, and one that is a whole multiple or part of the best and meets some of its lines. */
 const NEXT_BEST_SHARE = 0.8;
 const RELATED_SHARE = 0.9;
@@ -79,7 +82,10 @@ export function findShaftSpeed(spectra: readonly SpeedLines[], range: SpeedRange
   }
   const combs = spectra.map((spectrum) => prepare(spectrum, range));
   const ranked = scores(combs, lowHz, highHz)
-    .map(({ hz, score }) => ({ hz: refine(combs, hz), score }))
+    .map(({ hz, score }) => ({
+      hz: refine(combs, hz),
+      score: isPart(combs, hz) ? score * PART_SHARE : score,
+    }))
     .sort((a, b) => b.score - a.score);
   const best = ranked[0];
   if (best === undefined || best.score < LEAST_SCORE) return unknown('no line stands out where it could be');
@@ -119,6 +125,7 @@ function outshining(spectra: readonly SpeedLines[], range: SpeedRange, foundHz: 
       ({ hz, overFloorDb }) =>
         overFloorDb >= leastDb &&
         !isMains(hz, mainsHz, lineHz) &&
+        !isHarmonic(hz, foundHz, reachHz) &&
         ((hz > highHz + reachHz && hz < highHz * (1 + JUST_OUTSIDE)) ||
           (hz < lowHz - reachHz && hz > lowHz * (1 - JUST_OUTSIDE))),
     );
@@ -205,6 +212,31 @@ function scoreOf(comb: Comb, hz: number): number {
     score += best / Math.sqrt(k);
   }
   return score;
+}
+
+/** Whether a comb meets several lines, all of them multiples of one above the first: then that one turns, or strikes. */
+function isPart(combs: readonly Comb[], hz: number): boolean {
+  const met = combs.flatMap((comb) =>
+    [...comb.hz]
+      .filter(
+        (lineHz, j) => lineHz <= comb.topHz && comb.height[j]! >= MET && isNear(lineHz, hz, comb.reachHz),
+      )
+      .map((lineHz) => Math.round(lineHz / hz)),
+  );
+  return met.length > 1 && met.reduce(commonDivisor) > 1;
+}
+
+function isNear(lineHz: number, hz: number, reachHz: number): boolean {
+  const k = Math.round(lineHz / hz);
+  return k >= 1 && Math.abs(lineHz - k * hz) < reachHz;
+}
+
+function isHarmonic(lineHz: number, hz: number, reachHz: number): boolean {
+  return lineHz > 1.5 * hz && isNear(lineHz, hz, reachHz);
+}
+
+function commonDivisor(a: number, b: number): number {
+  return b === 0 ? a : commonDivisor(b, a % b);
 }
 
 /** Least squares over the lines that the teeth meet, weighted by height. */

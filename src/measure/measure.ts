@@ -6,12 +6,12 @@ import { type DecimatedRecord, decimateRecord } from './decimated.ts';
 import { measureEnvelope } from './envelope.ts';
 import { isSilent } from './mount.ts';
 import { NO_ORDERS, orderFigures } from './orders.ts';
-import { expectedShaftHz, overallBandHz, type PointPlan } from './plan.ts';
+import { bordersHz, expectedShaftHz, overallBandHz, type PointPlan } from './plan.ts';
 import { range } from './plan-notes.ts';
 import type { Reading } from './reading.ts';
 import type { SampleRecord } from './record.ts';
 import { foundShaft, givenShaft, type ShaftFigures } from './shaft.ts';
-import { tachometerSpeed } from './tachometer.ts';
+import { pulsesTooShort, tachometerSpeed } from './tachometer.ts';
 import { NO_TONES, toneFigures } from './tones.ts';
 import { gPerCount, judgeSamples } from './validity.ts';
 import { displacementPeakToPeak, displacementRms, type Figure, velocityRms } from './velocity.ts';
@@ -46,7 +46,11 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
   const given = givenShaft(plan, record);
   const { rms, peak, crest, kurtosis } = statistics(acceleration);
   const clipped = overRange !== null;
-  const drift = biasDrift(decimated, overallBandHz(speedHz(plan, given), decimated.fmaxHz)[0], rms);
+  const drift = biasDrift(
+    decimated,
+    overallBandHz(bordersOf(plan, given?.hz ?? null), decimated.fmaxHz)[0],
+    rms,
+  );
   if (drift !== null) {
     why.push(
       `bias drift: the mean moves by ${drift.toPrecision(2)} g, nothing from below ${DRIFT_SPOILS_BELOW_HZ} Hz is told`,
@@ -76,7 +80,7 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
   // the threshold and still have a bearing that tells something.
   if (running !== false) why.push(...shaft.why);
 
-  const bandHz = overallBandHz(shaft.hz ?? expectedShaftHz(plan), decimated.fmaxHz);
+  const bandHz = overallBandHz(bordersOf(plan, shaft.hz), decimated.fmaxHz);
   const overall =
     bandHz[0] < leastHz ? null : take(velocityRms(decimated, bandHz, 'overall velocity', 'whole'));
   const displacement = overall === null ? null : displacementRms(decimated, bandHz).value;
@@ -132,7 +136,13 @@ export function measureRecord(plan: PointPlan, record: SampleRecord): Reading {
       mean_hz: meanFrequency(acceleration, rateHz),
     },
     envelope: silent ? null : envelope.reading,
-    zone: zoneFor(plan.point, running, shaft.hz ?? plan.shaft?.nominalHz ?? null, overall, displacement),
+    zone: zoneFor(
+      plan.point,
+      running,
+      bordersHz(plan.shaft?.nominalHz ?? null, shaft.hz),
+      overall,
+      displacement,
+    ),
   };
 }
 
@@ -148,9 +158,8 @@ function accelerationG(record: SampleRecord): Float64Array {
   return acceleration;
 }
 
-/** Before it is looked for in the record. */
-function speedHz(plan: PointPlan, given: ShaftFigures | null): number | null {
-  return given?.hz ?? expectedShaftHz(plan);
+function bordersOf(plan: PointPlan, shaftHz: number | null): number | null {
+  return bordersHz(plan.shaft?.nominalHz ?? null, shaftHz) ?? expectedShaftHz(plan);
 }
 
 /** @param leastHz velocity from below this cannot be told. */
@@ -164,7 +173,7 @@ function isRunning(
   const rule = plan.machine.running;
   switch (rule.kind) {
     case 'velocity': {
-      const bandHz = overallBandHz(speedHz(plan, given), decimated.fmaxHz);
+      const bandHz = overallBandHz(bordersOf(plan, given?.hz ?? null), decimated.fmaxHz);
       if (bandHz[0] < leastHz) return null;
       const overall = velocityRms(decimated, bandHz, 'overall velocity', 'whole').value;
       return overall === null ? null : overall > rule.aboveMmS;
@@ -173,7 +182,7 @@ function isRunning(
       if (record.toldRunning !== null) return record.toldRunning;
       if (record.tachometer !== null) {
         const { counts, pulsesPerRev } = record.tachometer;
-        return tachometerSpeed(counts, pulsesPerRev, record.rate.hz) !== null;
+        return pulsesTooShort(counts) || tachometerSpeed(counts, pulsesPerRev, record.rate.hz) !== null;
       }
       return record.toldShaftHz === null ? null : record.toldShaftHz > 0;
     case 'mqtt':

@@ -4,6 +4,7 @@ import { strongestBin } from '../signal/spectrum.ts';
 import { makeWindow } from '../signal/window.ts';
 import type { DecimatedRecord } from './decimated.ts';
 import { overFloorDb } from './lines.ts';
+import { ordersMerge } from './plan-notes.ts';
 import type { OrderReading, Reading } from './reading.ts';
 import { type TachometerSpeed, turnsAt } from './tachometer.ts';
 import { lineVelocity } from './velocity.ts';
@@ -27,6 +28,7 @@ export function orderFigures(
   leastHz: number,
 ): Reading['orders'] {
   const orders = { ...NO_ORDERS };
+  if (ordersMerge(shaftHz, record.spectrum)) return orders;
   for (const order of ORDERS) {
     const hz = order * shaftHz;
     // Where the line would not lie clear of the edge.

@@ -1,5 +1,6 @@
 /** What a plan has to say to whoever wrote the settings, and which frequencies its lines cannot tell apart. */
 
+import { knownSourceAt } from '../machine/evidence-lines.ts';
 import { mainLobeHalfWidthBins, type WindowName } from '../signal/window.ts';
 import type { PointPlan } from './plan.ts';
 
@@ -36,7 +37,20 @@ export function noteFrequencies(plan: Omit<PointPlan, 'warnings' | 'caveats'>, n
 
 type Frequency = readonly [name: string, hz: number];
 
-function noteShaft({ machine, point }: Omit<PointPlan, 'warnings' | 'caveats'>, notes: PlanNotes): void {
+function noteShaft(plan: Omit<PointPlan, 'warnings' | 'caveats'>, notes: PlanNotes): void {
+  const { machine, point, shaft, spectrum, otherRatios } = plan;
+  if (shaft !== null && ordersMerge(shaft.lowHz, spectrum)) {
+    notes.warn(`orders will be null at ${hz(shaft.lowHz)}: lines of ${hz(spectrum.lineHz)} are too wide`);
+  }
+  if (shaft !== null && shaft.highHz > shaft.lowHz) {
+    for (const ratio of otherRatios) {
+      if (ratio * shaft.lowHz < shaft.highHz && ratio * shaft.highHz > shaft.lowHz) {
+        notes.warn(
+          'another shaft of the machine turns so nearly as fast that the speed may be taken from its lines: narrow the tolerance or give a tachometer',
+        );
+      }
+    }
+  }
   if (machine.shaft !== null) return;
   const orders = point.measure.bands.filter(({ range: band }) => 'orders' in band).map(({ id }) => id);
   const without = [...orders.map((id) => `band ${id}`), ...point.bearings.map(({ id }) => `bearing ${id}`)];
@@ -47,18 +61,23 @@ function noteBands(
   { point, shaft, spectrum }: Omit<PointPlan, 'warnings' | 'caveats'>,
   notes: PlanNotes,
 ): void {
-  const nominalHz = shaft?.nominalHz ?? null;
   for (const band of point.measure.bands) {
     const edges = 'hz' in band.range ? band.range.hz : band.range.orders;
-    const unitHz = 'hz' in band.range ? 1 : nominalHz;
-    if (unitHz === null) continue;
-    const [low, high] = [edges[0] * unitHz, edges[1] * unitHz];
+    // Within whatever speed the settings allow.
+    const [slowest, fastest] = 'hz' in band.range ? [1, 1] : [shaft?.lowHz, shaft?.highHz];
+    if (slowest === undefined || fastest === undefined) continue;
+    const [low, high] = [edges[0] * slowest, edges[1] * fastest];
     const coarse = tooLow(low, spectrum, `band ${band.id}`);
     if (coarse !== null) notes.warn(`${coarse}: give more lines`);
     if (high > spectrum.fmaxHz) {
-      notes.warn(`band ${band.id} reaches ${hz(high)}, above Fmax ${hz(spectrum.fmaxHz)}: it will be null`);
-    } else if (high - low < 2 * TELL_APART_LINES * spectrum.lineHz) {
-      notes.warn(`band ${band.id} is ${hz(high - low)} wide, too narrow for lines of ${hz(spectrum.lineHz)}`);
+      notes.warn(
+        `band ${band.id} reaches ${hz(high)}, above Fmax ${hz(spectrum.fmaxHz)}: there it will be null`,
+      );
+      continue;
+    }
+    const widthHz = (edges[1] - edges[0]) * ('hz' in band.range ? 1 : (shaft?.nominalHz ?? slowest));
+    if (widthHz < 2 * TELL_APART_LINES * spectrum.lineHz) {
+      notes.warn(`band ${band.id} is ${hz(widthHz)} wide, too narrow for lines of ${hz(spectrum.lineHz)}`);
     }
   }
 }
@@ -84,7 +103,9 @@ function noteBearings(plan: Omit<PointPlan, 'warnings' | 'caveats'>, notes: Plan
       notes.warn(`bearing ${id}: geometry unknown, its frequencies are rules of thumb`);
   }
   if (envelope === null || shaft?.nominalHz == null) return;
+  const { nominalHz: shaftHz } = shaft;
   const reachHz = TELL_APART_LINES * envelope.lineHz;
+  const foreignHz = [2 * plan.mainsHz, ...plan.otherRatios.map((ratio) => ratio * shaftHz)];
   const lines = bearings.flatMap(({ id, nominalHz }): Frequency[] => {
     if (nominalHz === null) return [];
     const { ftf, bsf, bpfo, bpfi } = nominalHz;
@@ -105,10 +126,14 @@ function noteBearings(plan: Omit<PointPlan, 'warnings' | 'caveats'>, notes: Plan
         );
       }
     }
-    const harmonic = Math.round(lineHz / shaft.nominalHz);
-    const harmonicHz = harmonic * shaft.nominalHz;
-    if (harmonic > 0 && Math.abs(lineHz - harmonicHz) < reachHz) {
-      notes.warn(`${name} (${hz(lineHz)}) lies on ${harmonic}x of the shaft (${hz(harmonicHz)})`);
+    const source = knownSourceAt(lineHz, shaftHz, foreignHz, envelope.lineHz);
+    if (source !== null) {
+      const harmonic = Math.round(source / shaftHz);
+      const what =
+        Math.abs(source - harmonic * shaftHz) < 1e-6 * source
+          ? `${harmonic}x of the shaft (${hz(source)})`
+          : `${hz(source)} of another shaft or of twice mains`;
+      notes.warn(`${name} (${hz(lineHz)}) lies on ${what}: that part of the bearing may never be named`);
     }
   }
 }
@@ -124,6 +149,17 @@ export function tooLow(
 ): string | null {
   if (lowHz >= mainLobeHalfWidthBins(window) * lineHz) return null;
   return `${name} from ${hz(lowHz)} needs lines finer than ${hz(lineHz)}`;
+}
+
+/** Half widths of the window's main lobe from one order to the next, below which one order's line lifts the next. */
+const ORDERS_APART = 1.5;
+
+/** Whether the lines are too wide for a shaft so slow to tell its orders apart. */
+export function ordersMerge(
+  shaftHz: number,
+  { lineHz, window }: { readonly lineHz: number; readonly window: WindowName },
+): boolean {
+  return shaftHz < ORDERS_APART * mainLobeHalfWidthBins(window) * lineHz;
 }
 
 /** A frequency for a person. */

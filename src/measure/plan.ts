@@ -3,6 +3,7 @@
  * blocks, which bands its figures cover, and where the settings ask for more than the rate or the sensor carries.
  */
 
+import { ForebayError } from '../config/errors.ts';
 import type { Machine, Point } from '../config/station.ts';
 import { type BearingMultiples, type BearingRates, bearingMultiples } from '../machine/bearing.ts';
 import { synchronousHz } from '../machine/electrical.ts';
@@ -37,9 +38,9 @@ const OVERALL_HZ = { slow: 2, usual: 10, high: 1000 } as const;
 const MAX_RECORD_SAMPLES = 1 << 24;
 
 /** Settings that no record can meet. */
-export class PlanError extends Error {
+export class PlanError extends ForebayError {
   constructor(key: string, message: string) {
-    super(`${key}: ${message}`);
+    super('config.unmeasurable', `${key}: ${message}`);
     this.name = 'PlanError';
   }
 }
@@ -108,6 +109,22 @@ export function expectedShaftHz({ shaft }: Pick<PointPlan, 'shaft'>): number | n
   return shaft?.nominalHz ?? shaft?.lowHz ?? null;
 }
 
+/** Half a percent that a speed is off does not put a machine of 600 r/min, or of 120, on the other side of a border. */
+const SPEED_SLACK = 1.005;
+
+/**
+ * The speed by which borders are told, of the overall band and of a table's scope: that of the settings where they give
+ * one, so that no figure comes and goes with the load; else the one at hand, leaning to the faster side.
+ */
+export function bordersHz(nominalHz: number | null, shaftHz: number | null): number | null {
+  return nominalHz ?? (shaftHz === null ? null : shaftHz * SPEED_SLACK);
+}
+
+/** Nominal speed of the shaft at a point; null: the settings give none. */
+export function nominalHz({ shaft }: Pick<Machine, 'shaft'>, ratio: number): number | null {
+  return shaft?.kind === 'fixed' ? (shaft.rpm / 60) * ratio : null;
+}
+
 /** Edges of the overall velocity: from 10 Hz, or from 2 Hz for a shaft below 600 r/min, to 1000 Hz or Fmax. */
 export function overallBandHz(shaftHz: number | null, fmaxHz: number): [number, number] {
   const low = shaftHz !== null && shaftHz < SLOW_HZ ? OVERALL_HZ.slow : OVERALL_HZ.usual;
@@ -135,6 +152,11 @@ export function planPoint(point: Point, machine: Machine, rateHz: number, mainsH
   }
   const coarse = tooLow(overallHz[0], spectrum, 'overall velocity');
   if (coarse !== null) notes.warn(`${coarse}: give more lines`);
+  if (spectrum.window === 'rectangular') {
+    notes.warn(
+      'window rectangular leaks: displacement and velocity of slow shafts read up to a fifth wrong; hann does not',
+    );
+  }
   const usable = point.sensor.usableHz;
   if (usable !== null && (usable[0] > overallHz[0] || usable[1] < overallHz[1])) {
     notes.caution(
@@ -188,11 +210,11 @@ function noteLength(plan: Omit<PointPlan, 'warnings' | 'caveats'>, notes: PlanNo
       `displacement peak to peak will be null: a record of ${(recordSamples / rateHz).toFixed(1)} s holds fewer than ${Math.ceil(DISPLACEMENT_PERIODS)} periods of ${hz(overallHz[0])}; give more lines or averages`,
     );
   }
-  if (envelope === null || shaft?.nominalHz == null) return;
-  const turns = longestBlockS(recordSamples, rateHz) * shaft.nominalHz;
+  if (envelope === null || shaft === null) return;
+  const turns = longestBlockS(recordSamples, rateHz) * shaft.lowHz;
   if (turns < LEAST_TURNS && bearings.some(({ multiples }) => multiples !== null)) {
     notes.warn(
-      `no bearing will be judged: ${Math.floor(turns)} turns a block, ${LEAST_TURNS} are needed; give the envelope more lines or averages`,
+      `no bearing will be judged at ${hz(shaft.lowHz)}: ${Math.floor(turns)} turns a block, ${LEAST_TURNS} are needed; give the envelope more lines or averages`,
     );
   }
 }
@@ -212,9 +234,9 @@ function otherRatios(point: Point, machine: Machine): number[] {
 function plannedShaft(machine: Machine, ratio: number): PlannedShaft | null {
   const source = machine.shaft;
   if (source?.kind === 'fixed') {
-    const nominalHz = (source.rpm / 60) * ratio;
+    const hz = (source.rpm / 60) * ratio;
     const tolerance = source.tolerancePct / 100;
-    return { lowHz: nominalHz * (1 - tolerance), highHz: nominalHz * (1 + tolerance), nominalHz };
+    return { lowHz: hz * (1 - tolerance), highHz: hz * (1 + tolerance), nominalHz: hz };
   }
   if (source?.kind === 'range') {
     const [low, high] = source.rpmRange;

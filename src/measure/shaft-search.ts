@@ -22,6 +22,8 @@ const LEAST_LINE_DB = 8;
 const BLOCK_TURNS = 80;
 /** A record that is too short for that gives two half-overlapped blocks; one alone has no floor to speak of. */
 const LEAST_BLOCKS = 1.5;
+/** From this share of the mains frequency upward a line of a block of 80 turns may not be clear of it. */
+const BESIDE_MAINS = 0.95;
 /** Below this, drift of bias and leakage; no shaft that the tables know turns slower (120 r/min). */
 const LEAST_HZ = 1.5;
 /** An envelope shorter than this has no lines worth looking at. */
@@ -93,8 +95,10 @@ function envelopeLines(
   bandHz: readonly [number, number],
   fmaxHz: number,
 ): SpeedLines {
-  const topHz = Math.min(fmaxHz, bandHz[1] - bandHz[0]);
-  const envelope = squaredEnvelope(acceleration, { rateHz, bandHz, fmaxHz: topHz });
+  const askedHz = Math.min(fmaxHz, bandHz[1] - bandHz[0]);
+  const envelope = squaredEnvelope(acceleration, { rateHz, bandHz, fmaxHz: askedHz });
+  // A narrow band has a slow envelope, which may carry less than was asked.
+  const topHz = Math.min(askedHz, envelope.rateHz / RATE_OVER_FMAX);
   const factor = chooseFactor(envelope.rateHz, topHz);
   const decimation = planDecimation({
     rateHz: envelope.rateHz,
@@ -114,7 +118,10 @@ function speedLines(
   plan: PointPlan,
   wholeMeanSquare: number,
 ): SpeedLines {
-  const wanted = Math.round((BLOCK_TURNS * rateHz) / rangeOf(plan).lowHz);
+  const { lowHz, highHz, mainsHz } = rangeOf(plan);
+  // A two-pole motor turns so near to the mains frequency that only the finest lines tell the two apart.
+  const besideMains = highHz > BESIDE_MAINS * mainsHz && lowHz < mainsHz;
+  const wanted = besideMains ? samples.length : Math.round((BLOCK_TURNS * rateHz) / lowHz);
   const blockSamples = Math.min(wanted, Math.floor(samples.length / LEAST_BLOCKS));
   const spectrum = averagedSpectrum(samples, { rateHz, blockSamples, window: 'hann' });
   return {

@@ -5,7 +5,7 @@ import type { PointPlan } from './plan.ts';
 import type { ShaftSpeedSource } from './reading.ts';
 import type { SampleRecord } from './record.ts';
 import { searchShaft, speedDrift } from './shaft-search.ts';
-import { type TachometerSpeed, tachometerSpeed } from './tachometer.ts';
+import { pulsesTooShort, type TachometerSpeed, tachometerSpeed } from './tachometer.ts';
 
 export interface ShaftFigures {
   readonly hz: number | null;
@@ -27,13 +27,20 @@ export function givenShaft(plan: PointPlan, record: SampleRecord): ShaftFigures 
   const kind = plan.machine.shaft?.kind;
   if (record.tachometer !== null && kind === 'tachometer') {
     const { counts, pulsesPerRev } = record.tachometer;
+    if (pulsesTooShort(counts)) {
+      return unknown(
+        'tachometer pulses are shorter than two samples; give fewer a turn, or a higher rate',
+        null,
+      );
+    }
     const speed = tachometerSpeed(counts, pulsesPerRev, record.rate.hz);
     if (speed === null) return unknown('no tachometer pulses', null);
     const percent = (speed.spread * 100).toFixed(1);
-    if (speed.spread > NO_ONE_SPEED) {
+    const certain = speed.spread - speed.resolution;
+    if (certain > NO_ONE_SPEED) {
       return unknown(`it varies by ${percent} % within the record, or pulses are missing`, speed);
     }
-    const why = speed.spread > VARIES ? [`speed varies by ${percent} % within the record`] : [];
+    const why = certain > VARIES ? [`speed varies by ${percent} % within the record`] : [];
     return { hz: speed.hz * ratio, source: 'tachometer', confidence: null, tachometer: speed, why };
   }
   if (kind === 'tachometer' || kind === 'mqtt') {

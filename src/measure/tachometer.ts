@@ -5,10 +5,14 @@ export interface TachometerSpeed {
   readonly hz: number;
   /** Largest less smallest speed of single turns, over the mean; 0 where there is but one turn. */
   readonly spread: number;
+  /** How much of the spread whole samples make by themselves, each edge being known to one. */
+  readonly resolution: number;
   /** Where the pulses rise, in samples from the first. */
   readonly edges: Float64Array;
 }
 
+/** More single high samples than this share of all pulses are no glitches: pulses are too short for the rate. */
+const TOO_SHORT_SHARE = 0.05;
 /** The level that counts above 0 cross: whole counts above 0 are at least 1. */
 const LEVEL = 0.5;
 
@@ -23,7 +27,7 @@ export function tachometerSpeed(
   pulsesPerRev: number,
   rateHz: number,
 ): TachometerSpeed | null {
-  const edges = risingEdges(counts);
+  const { edges } = risingEdges(counts);
   if (edges.length < 2) return null;
   const turns = Math.floor((edges.length - 1) / pulsesPerRev);
   // The pulses of one turn need not be evenly spaced: whole turns, where there is one.
@@ -37,19 +41,31 @@ export function tachometerSpeed(
     longest = Math.max(longest, turn);
   }
   const spread = turns > 0 ? (rateHz / shortest - rateHz / longest) / hz : 0;
-  return { hz, spread, edges };
+  return { hz, spread, resolution: (2 * hz) / rateHz, edges };
+}
+
+/** Whether more than a few pulses last but one sample: then others fall between two, and no count of them is a speed. */
+export function pulsesTooShort(counts: Int32Array): boolean {
+  const { edges, single } = risingEdges(counts);
+  const pulses = edges.length + single;
+  return pulses > 2 && single > TOO_SHORT_SHARE * pulses;
 }
 
 /** Where the counts rise above 0, between samples; a single high sample is a glitch and no pulse. */
-function risingEdges(counts: Int32Array): Float64Array {
+function risingEdges(counts: Int32Array): { edges: Float64Array; single: number } {
   const edges: number[] = [];
+  let single = 0;
   for (let i = 1; i < counts.length - 1; i++) {
     const before = counts[i - 1]!;
     const here = counts[i]!;
-    if (before > 0 || here <= 0 || counts[i + 1]! <= 0) continue;
+    if (before > 0 || here <= 0) continue;
+    if (counts[i + 1]! <= 0) {
+      single++;
+      continue;
+    }
     edges.push(i - 1 + (LEVEL - before) / (here - before));
   }
-  return Float64Array.from(edges);
+  return { edges: Float64Array.from(edges), single };
 }
 
 /**

@@ -93,7 +93,7 @@ function outOfReach(record: DecimatedRecord, bandHz: readonly [number, number], 
   // A hair above: a band that ends at Fmax is in reach whatever the last bit.
   if (bandHz[1] > fmaxHz * (1 + 1e-9)) {
     const why = `${name}: ${range(bandHz)} reaches above Fmax, ${hz(fmaxHz)}`;
-    return { value: null, why, settled: false };
+    return { value: null, why, settled: true };
   }
   const { window } = record.spectrum;
   const settings = tooLow(bandHz[0], { lineHz: plannedLineHz, window }, name);

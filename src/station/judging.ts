@@ -13,6 +13,9 @@ import { findingsFor } from '../machine/findings.ts';
 import type { Reading } from '../measure/reading.ts';
 import { runningReading } from '../measure/zone.ts';
 
+/** A machine runs above its threshold, and stops below this share of it. Common practice, no source. */
+const STOPS_BELOW = 0.8;
+
 interface JudgedStep {
   effects: readonly AlarmEffect[];
   /** The state advances here, so that a step whose commit fails never happened. */
@@ -52,13 +55,18 @@ export class Judging {
   settled(pointKey: string, reading: Reading): Reading {
     const entry = this.#plan.points.get(pointKey);
     if (!entry) return reading;
-    this.#ownRunning.set(pointKey, reading.running);
     const { machine, point } = entry;
-    const smooth =
-      machine.running.kind === 'velocity' && reading.running === false && reading.shaft.hz !== null;
+    const ran = this.#ownRunning.get(pointKey) === true;
+    this.#ownRunning.set(pointKey, reading.running);
+    if (machine.running.kind !== 'velocity' || reading.running !== false) return reading;
+    // Hysteresis, for a machine that hovers about the threshold is not started every few seconds.
+    if (ran && (reading.velocity.overall ?? 0) > STOPS_BELOW * machine.running.aboveMmS) {
+      this.#ownRunning.set(pointKey, true);
+      return runningReading(reading, point, machine);
+    }
     const others = machine.points.filter(({ key }) => key !== pointKey);
-    if (!smooth || !others.some(({ key }) => this.#ownRunning.get(key) === true)) return reading;
-    return runningReading(reading, point);
+    const smooth = reading.shaft.hz !== null && others.some(({ key }) => this.#ownRunning.get(key) === true);
+    return smooth ? runningReading(reading, point, machine) : reading;
   }
 
   /** What an input changes; nothing where it is about what has left the configuration. */

@@ -4,7 +4,7 @@ import { parentPort, workerData } from 'node:worker_threads';
 import { RingReader } from '../link/ring.ts';
 import { measureRecord } from '../measure/measure.ts';
 import { type PointPlan, planPoint } from '../measure/plan.ts';
-import { tachometerSpeed } from '../measure/tachometer.ts';
+import { pulsesTooShort, tachometerSpeed } from '../measure/tachometer.ts';
 import type { MeasureJob, MeasureOutcome, MeasuringSetup, RingSpan, ToWorker } from './measure-job.ts';
 
 let setup = workerData as MeasuringSetup;
@@ -66,6 +66,7 @@ function otherTachometerHz(job: MeasureJob): number | null {
   if (!other) return null;
   const counts = countsOf(other.span);
   if (typeof counts === 'string') return null;
+  if (pulsesTooShort(counts)) return null;
   return tachometerSpeed(counts, other.pulsesPerRev, other.rate.hz)?.hz ?? null;
 }
 

@@ -168,6 +168,30 @@ describe('what settings ask for and cannot have', () => {
     expect(planOf().warnings).toEqual([]);
   });
 
+  it('names a bearing line that lies on twice the mains or on another shaft, where no defect can be told', () => {
+    const multiples = { ftf: 0.4, bsf: 2.2, bpfo: 100 / (1480 / 60), bpfi: 5.9 };
+    const { warnings } = planOf({
+      point: { bearings: [{ id: 'de', elements: 10, geometry: null, multiples }] },
+    });
+    expect(warnings.join('\n')).toMatch(
+      /BPFO of de \(100 Hz\) lies on 100 Hz of another shaft or of twice mains/,
+    );
+  });
+
+  it('tells what a range of speeds or a coarse spectrum leaves out', () => {
+    const range = { kind: 'range', rpmRange: [120, 300] } as const;
+    const bearing = { id: 'de', elements: 9, geometry: null, multiples: null };
+    const slow = planOf({ machine: { shaft: range }, point: { bearings: [bearing] } }).warnings.join('\n');
+    expect(slow).toMatch(/no bearing will be judged at 2 Hz: \d+ turns a block/);
+    const coarse = planOf({ measure: { velocity: { ...usual.velocity, lines: 100 } } }).warnings.join('\n');
+    expect(coarse).toMatch(/orders will be null at 23.93 Hz: lines of 10 Hz are too wide/);
+    const edge = planOf({
+      machine: { shaft: { kind: 'fixed', rpm: 1470, tolerancePct: 3 } },
+      measure: { velocity: { ...usual.velocity, fmaxHz: 250 } },
+    }).warnings.join('\n');
+    expect(edge).toMatch(/band harmonics reaches 257.4 Hz, above Fmax 250 Hz: there it will be null/);
+  });
+
   it('names bands out of reach or narrower than the lines', () => {
     const bands = [
       { id: 'high', range: { hz: [900, 1200] } },

@@ -1,7 +1,7 @@
 import { describe, expect, it } from 'vitest';
 import { measureRecord } from '../../src/measure/measure.ts';
 import { gaussian } from '../support/seeded.ts';
-import { type BenchOptions, gOfVelocity, planOf, recordOf, type Tone } from './bench.ts';
+import { type BenchOptions, gOfVelocity, planOf, recordOf, type Tone, usual } from './bench.ts';
 
 const RATE_HZ = 12_000;
 
@@ -90,6 +90,86 @@ describe('shaft speed of a reading', () => {
     // A 60 Hz site has 30 Hz for four poles.
     const site60 = read({ machine: { shaft, motor: { poles: 4, supply: 'mains' } }, mainsHz: 60 }, tones);
     expect(site60.shaft.hz).toBeCloseTo(25, 2);
+  });
+
+  it.each([
+    [50, 2966],
+    [50, 2985],
+    [60, 3575],
+  ])('is told from the mains, of %d Hz, where a two-pole motor turns at %d r/min', (mainsHz, rpm) => {
+    const hz = rpm / 60;
+    const machine = {
+      shaft: { kind: 'fixed', rpm, tolerancePct: 2 },
+      motor: { poles: 2, supply: 'mains' },
+    } as const;
+    const reading = read({ machine, mainsHz }, [[hz, gOfVelocity(2, hz)]]);
+    expect(Math.abs(reading.shaft.hz! / hz - 1)).toBeLessThan(0.0005);
+    expect(reading.quality).toBe('good');
+  });
+
+  it.each([2.93, 3.053, 3.07, 3.1])('is not a part of the strikes of a bearing whose BPFO is %d', (bpfo) => {
+    // A comb at a third of the strikes has them for its teeth, and a shaft of 1480 r/min within the tolerance.
+    const rateHz = 10_240;
+    const hz = 1480 / 60;
+    const multiples = { ftf: bpfo / 8, bsf: 2.2, bpfo, bpfi: 8 - bpfo };
+    const plan = planOf({
+      rateHz,
+      point: { bearings: [{ id: 'de', elements: 8, geometry: null, multiples }] },
+    });
+    const tones = [
+      [hz, gOfVelocity(1.5, hz)],
+      [2 * hz, gOfVelocity(0.3, 2 * hz), 1],
+    ] as const;
+    const record = recordOf({ rateHz, samples: plan.recordSamples, tones, noiseG: 0.03 });
+    const random = gaussian(77);
+    for (let t = 0.003; t < record.counts.length / rateHz; t += (1 + 0.002 * random()) / (bpfo * hz)) {
+      for (let i = Math.ceil(t * rateHz); i < (t + 0.01) * rateHz && i < record.counts.length; i++) {
+        const s = i / rateHz - t;
+        record.counts[i]! += Math.round(4096 * 0.4 * Math.exp(-800 * s) * Math.sin(2 * Math.PI * 1900 * s));
+      }
+    }
+    const reading = measureRecord(plan, record);
+    expect(Math.abs(reading.shaft.hz! / hz - 1)).toBeLessThan(0.001);
+    expect(reading.envelope?.defect).toBe('outer');
+  });
+
+  it.each([
+    ['twice the speed', 1551, [0.5, 1, 0.2]],
+    ['six vanes', 510, [1, 0.2, 0, 0, 0, 1]],
+  ])('is not outshone by %s from outside of the range', (_, rpm, harmonics) => {
+    const hz = rpm / 60;
+    const tones = harmonics.map((mmS, k): Tone => [hz * (k + 1), gOfVelocity(2 * mmS, hz * (k + 1)), k]);
+    const machine = {
+      shaft: { kind: 'range', rpmRange: [500, 3000] },
+      motor: { poles: null, supply: 'inverter' },
+    } as const;
+    const reading = read(
+      { machine },
+      tones.filter(([, g]) => g > 0),
+    );
+    expect(Math.abs(reading.shaft.hz! / hz - 1)).toBeLessThan(0.002);
+  });
+
+  it('is looked for without complaint in whatever band the rate and the settings leave', () => {
+    const bands = [
+      [500, 16_000],
+      [500, 2000],
+      [1000, 2500],
+      [500, 1500],
+      [2000, 3000],
+      [500, 1000],
+    ] as const;
+    for (const rateHz of [2600, 3000, 3200, 5000, 8192, 10_240, 16_384, 20_480]) {
+      for (const bandHz of bands) {
+        if (bandHz[0] >= rateHz / 2.56) continue;
+        const measure = { everyS: 1, envelope: { ...usual.envelope, bandHz, lines: 400 } } as const;
+        const plan = planOf({ rateHz, measure });
+        for (const ratio of [1, 1 - 2e-5, 1 + 2e-5]) {
+          const record = recordOf({ rateHz: rateHz * ratio, samples: plan.recordSamples, noiseG: 0.001 });
+          expect(measureRecord(plan, record).running, `${rateHz} Hz, ${bandHz}`).toBe(false);
+        }
+      }
+    }
   });
 
   it('says so where the speed changes within the record', () => {

@@ -1,9 +1,13 @@
 import { describe, expect, it } from 'vitest';
 import { measureRecord } from '../../src/measure/measure.ts';
-import { tachometerSpeed } from '../../src/measure/tachometer.ts';
+import { pulsesTooShort, tachometerSpeed } from '../../src/measure/tachometer.ts';
 import { gOfVelocity, planOf, recordOf } from './bench.ts';
 
 const RATE_HZ = 40_960;
+
+const tachometer = {
+  shaft: { kind: 'tachometer', link: 'node-1', channel: 't', pulsesPerRev: 1 },
+} as const;
 
 /** High for a third of the time; angle(i) in turns. */
 function pulses(samples: number, angle: (sample: number) => number, perTurn = 1): Int32Array {
@@ -48,6 +52,51 @@ describe('speed from pulses', () => {
     const counts = pulses(409_600, (i) => 0.2 + (20 * i) / RATE_HZ);
     for (const at of [5000, 77_777, 300_001]) counts[at] = 1;
     expect(tachometerSpeed(counts, 1, RATE_HZ)!.hz).toBeCloseTo(20, 3);
+  });
+
+  it.each([
+    // Of these the sound pulses alone would beat at a steady 240 r/min.
+    [6400, 2960, 60],
+    [25_600, 1480, 360],
+    [5120, 1480, 60],
+  ])(
+    'is no speed where pulses are shorter than two samples: %d Hz, %d r/min, %d a turn',
+    (rateHz, rpm, perTurn) => {
+      const hz = (rpm / 60) * perTurn;
+      const counts = Int32Array.from({ length: 10 * rateHz }, (_, i) =>
+        ((i / rateHz) * hz + 0.01) % 1 < 0.5 ? 1 : 0,
+      );
+      expect(pulsesTooShort(counts)).toBe(true);
+      const plan = planOf({ rateHz, machine: tachometer });
+      const pulses = { counts: counts.subarray(0, plan.recordSamples), pulsesPerRev: perTurn };
+      const tones = [[rpm / 60, gOfVelocity(2, rpm / 60)]] as const;
+      const reading = measureRecord(
+        plan,
+        recordOf({ rateHz, samples: plan.recordSamples, tones, tachometer: pulses }),
+      );
+      expect(reading.shaft.hz).toBeNull();
+      expect(reading.why.join()).toMatch(/pulses are shorter than two samples/);
+    },
+  );
+
+  it.each([
+    [2560, 1780],
+    [3200, 2960],
+    [5120, 3550],
+  ])('does not vary for the edges being known to a sample: %d Hz, %d r/min', (rateHz, rpm) => {
+    const plan = planOf({ rateHz, machine: tachometer });
+    const hz = rpm / 60;
+    const counts = Int32Array.from({ length: plan.recordSamples }, (_, i) =>
+      ((i / rateHz) * hz) % 1 < 0.4 ? 1 : 0,
+    );
+    const tones = [[hz, gOfVelocity(2, hz)]] as const;
+    const pulses = { counts, pulsesPerRev: 1 };
+    const reading = measureRecord(
+      plan,
+      recordOf({ rateHz, samples: plan.recordSamples, tones, tachometer: pulses }),
+    );
+    expect(reading.why.filter((text) => text.includes('varies'))).toEqual([]);
+    expect(Math.abs(reading.shaft.hz! / hz - 1)).toBeLessThan(1e-3);
   });
 
   it('is null without two pulses, and nothing is high at 0 or below', () => {

@@ -35,6 +35,22 @@ describe('a point that vibrates less than the threshold', () => {
     expect(judging.settled(a, smooth)).toBe(smooth);
   });
 
+  it('goes on running until it falls well below the threshold, so that hovering about it starts nothing', () => {
+    const judging = bench();
+    const at = (mmS: number) => judging.settled(h, makeReading({ mmS, running: mmS > 0.5 })).running;
+    // 0.5 mm/s is the threshold, 0.4 where it stops.
+    expect([0.45, 0.6, 0.45, 0.52, 0.42, 0.39, 0.45, 0.6].map(at)).toEqual([
+      false,
+      true,
+      true,
+      true,
+      true,
+      false,
+      false,
+      true,
+    ]);
+  });
+
   it('goes by what is told where the machine is told of', () => {
     const judging = bench({ running: { kind: 'mqtt', topic: 'plc/run' } });
     judging.settled(h, shaking);
