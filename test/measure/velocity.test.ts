@@ -2,7 +2,7 @@ import { describe, expect, it } from 'vitest';
 import { decimateRecord } from '../../src/measure/decimated.ts';
 import { measureRecord } from '../../src/measure/measure.ts';
 import { lineAmplitudes } from '../../src/signal/spectrum.ts';
-import { G_PER_COUNT, gOfVelocity, planOf, recordOf } from './bench.ts';
+import { G_PER_COUNT, gOfVelocity, planOf, recordOf, usual } from './bench.ts';
 
 describe('velocity of a tone, at rates that are and are not multiples of 2.56·Fmax', () => {
   it.each([40_960, 12_000, 25_600, 48_828])(
@@ -35,6 +35,20 @@ describe('velocity of a tone, at rates that are and are not multiples of 2.56·F
       expect(Math.abs(reading.acceleration.rms! / Math.SQRT1_2 - 1)).toBeLessThan(0.001);
     },
   );
+
+  it.each([
+    [400, 0.002],
+    [200, 0.036],
+  ])('a tone on the lower edge is read whole, but for the widest lines allowed: %d lines', (lines, share) => {
+    const plan = planOf({ measure: { velocity: { ...usual.velocity, lines } } });
+    const tones = [[10, gOfVelocity(10, 10)]] as const;
+    const { velocity } = measureRecord(
+      plan,
+      recordOf({ rateHz: 40_960, samples: plan.recordSamples, tones }),
+    );
+    expect(velocity.overall! / 10).toBeGreaterThan(1 - share);
+    expect(velocity.overall! / 10).toBeLessThan(1.0013);
+  });
 
   it('159.154943 Hz at 10 m/s² is 10 mm/s and 10 µm RMS (hand-held calibrators, common practice)', () => {
     const plan = planOf();
