@@ -2,6 +2,7 @@
  * A station left alone for hours: simulated nodes, a real broker, and a fault every so often. It is watched from
  * outside: memory and descriptors by the kernel, the delay of the event loop by its own `health`.
  */
+import { readFileSync } from 'node:fs';
 import { runFault } from './fault-run.ts';
 import { FaultStation } from './fault-station.ts';
 import { faults } from './faults.ts';
@@ -40,7 +41,7 @@ export interface SoakResult {
 
 export async function soak(options: SoakOptions): Promise<SoakResult> {
   const random = seeded(options.seed);
-  const station = await FaultStation.start();
+  const station = await FaultStation.start({ prepare: ({ agent }) => asTheUnitStarts(agent) });
   const list = faults.filter(
     ({ name, start }) =>
       bearable(name) && (start === undefined || Object.keys(start()).length === 0) && !/SIGKILL/.test(name),
@@ -107,6 +108,20 @@ export async function soak(options: SoakOptions): Promise<SoakResult> {
     clearInterval(watch);
     await station.stop();
   }
+}
+
+/** The options and the environment that the service of `scripts/` gives, for they decide on memory. */
+function asTheUnitStarts(agent: FaultStation['agent']): void {
+  const unit = readFileSync(new URL('../../scripts/forebay.service', import.meta.url), 'utf8');
+  const options = /^ExecStart=\S+ (--.*?) \S+\/main\.js /m.exec(unit)?.[1]?.split(' ');
+  const environment = [...unit.matchAll(/^Environment=(\w+)=(.*)$/gm)].map(([, name, value]) => [
+    name,
+    value,
+  ]);
+  if (options === undefined || environment.length === 0)
+    throw new Error('the unit of the service reads otherwise');
+  agent.nodeArgs = options;
+  agent.env = { ...process.env, ...Object.fromEntries(environment) };
 }
 
 /** Least squares over the second half: what comes before is warming up. */
