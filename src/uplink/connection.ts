@@ -9,7 +9,7 @@ import type { Duplex } from 'node:stream';
 import mqtt, { type IClientOptions, MqttClient } from 'mqtt';
 import { ForebayError } from '../config/errors.ts';
 import type { Meter } from './byte-ledger.ts';
-import { type BrokerAddress, dial, explainDial, type TlsFiles } from './dial.ts';
+import { type BrokerAddress, dial, explainDial, otherSideHungUp, type TlsFiles } from './dial.ts';
 import { PacketGuard } from './packet-guard.ts';
 
 export interface ConnectionSettings {
@@ -38,9 +38,9 @@ export interface End {
     | 'refused'
     /** It never came about: name, route, TLS, time. */
     | 'failed'
-    /** The broker hung up. */
+    /** The broker hung up, as far as one can tell: some routers reset a connection as a broker would. */
     | 'closed'
-    /** We hung up: it did not answer in time, or sent what it must not. */
+    /** The link failed; or we hung up: the broker did not answer in time, or sent what it must not. */
     | 'lost';
   readonly error: Error;
 }
@@ -80,6 +80,8 @@ export class Connection {
   #end: End | null = null;
   #error: Error | null = null;
   #asked = false;
+  /** The broker said that it hangs up (MQTT 5, 3.14). */
+  #dismissed = false;
   #sentPackets = 0;
   #receivedPackets = 0;
   #serverReceiveMaximum = 65_535;
@@ -206,7 +208,9 @@ export class Connection {
     });
     client.on('error', (error) => this.#failed(error));
     client.on('disconnect', (packet) => {
+      this.#dismissed = true;
       this.#noteError(new Error(`the broker hung up with reason ${packet.reasonCode ?? 0}`));
+      this.#closed();
     });
     client.on('connect', (packet) => {
       if (this.#end !== null) return;
@@ -240,10 +244,9 @@ export class Connection {
       this.#error === null
         ? new Error('the broker hung up')
         : explainDial(this.#error, this.#settings.address);
-    const code = String((this.#error as NodeJS.ErrnoException | null)?.code ?? '');
-    const hungUp = this.#error === null || /^(ECONNRESET|EPIPE)$/.test(code);
+    const hungUp = this.#dismissed || otherSideHungUp(this.#error);
     if (this.#asked) this.#finish({ kind: 'asked', error });
-    else if (this.#wasUp) this.#finish({ kind: 'closed', error });
+    else if (this.#wasUp) this.#finish({ kind: hungUp ? 'closed' : 'lost', error });
     else
       this.#finish({ kind: hungUp && (this.#raw?.bytesWritten ?? 0) > 0 ? 'closed-early' : 'failed', error });
   }

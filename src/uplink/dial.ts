@@ -85,3 +85,8 @@ export function explainDial(error: Error, address: BrokerAddress): Error {
   }
   return error;
 }
+
+/** Whether a connection ended as one does that the other side ends; if not, it was the link or this gateway. */
+export function otherSideHungUp(error: Error | null): boolean {
+  return error === null || ['ECONNRESET', 'EPIPE'].includes(String((error as NodeJS.ErrnoException).code));
+}

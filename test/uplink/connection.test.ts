@@ -1,4 +1,6 @@
 // Which version is spoken, when the other one is tried, and what a refusal leads to.
+import { channel } from 'node:diagnostics_channel';
+import type { Socket } from 'node:net';
 import { afterEach, describe, expect, it } from 'vitest';
 import { ForebayError } from '../../src/config/errors.ts';
 import type { End } from '../../src/uplink/connection.ts';
@@ -191,6 +193,50 @@ describe('a connection', () => {
     link.refuse(false);
     await rig.online();
     expect(rig.uplink.status().connects).toBe(1);
+  });
+});
+
+describe('the end of a connection', () => {
+  const kindOf = async (rig: Rig) => {
+    const ends = () => rig.lines.filter(({ message }) => message === 'no connection to the broker');
+    await until(() => ends().length > 0, 'the end');
+    return ends()[0]!.details.kind;
+  };
+
+  /** The sockets that are opened from now on. */
+  const opened = () => {
+    const sockets: Socket[] = [];
+    const take = (message: unknown) => void sockets.push((message as { socket: Socket }).socket);
+    channel('net.client.socket').subscribe(take);
+    cleanups.push(async () => void channel('net.client.socket').unsubscribe(take));
+    return sockets;
+  };
+
+  it('is the broker hanging up where it says so, just closes, or resets', async () => {
+    // DISCONNECT with reason 0x95, packet too large (MQTT 5, 3.14).
+    const dismissal = Uint8Array.from([...connack(5, 0), 0xe0, 2, 0x95, 0]);
+    const dismissing = await answering(() => dismissal);
+    expect(await kindOf(await started(dismissing.port))).toBe('closed');
+    const broker = await running(startAedes);
+    const link = await FaultyLink.start(broker.port);
+    cleanups.push(() => link.stop());
+    const reset = await started(link.port, { protocol: 4 });
+    await reset.online();
+    link.cut();
+    expect(await kindOf(reset)).toBe('closed');
+    const closed = await started(broker.port, { protocol: 4 });
+    await closed.online();
+    await broker.stop();
+    expect(await kindOf(closed)).toBe('closed');
+  });
+
+  it.each(['ETIMEDOUT', 'EHOSTUNREACH', 'ENETDOWN'])('is the link where the socket says %s', async (code) => {
+    const broker = await running(startAedes);
+    const sockets = opened();
+    const rig = await started(broker.port, { protocol: 4 });
+    await rig.online();
+    sockets[0]!.destroy(Object.assign(new Error(`read ${code}`), { code }));
+    expect(await kindOf(rig)).toBe('lost');
   });
 });
 
