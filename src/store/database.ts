@@ -118,6 +118,10 @@ export class Database implements StoreEngine {
     return this.together(() => this.#open().outbox.releaseRefused());
   }
 
+  releaseHungUp(): number {
+    return this.together(() => this.#open().outbox.releaseHungUp());
+  }
+
   resendRetained(): number {
     return this.together(() => this.#open().outbox.resendRetained(this.#runS()));
   }

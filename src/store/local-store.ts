@@ -9,6 +9,7 @@ export function localStore(engine: StoreEngine): Store {
     accept: async (ns) => engine.accept(ns),
     reject: async (n, reason, { poison }) => engine.reject(n, reason, poison),
     releaseRefused: async () => engine.releaseRefused(),
+    releaseHungUp: async () => engine.releaseHungUp(),
     resendRetained: async () => engine.resendRetained(),
     retainedTopics: async () => engine.retainedTopics(),
     counters: async () => engine.counters(),

@@ -7,6 +7,7 @@ import {
   type BudgetLine,
   type Commit,
   givesWay,
+  hungUpReason,
   type JournalEntry,
   type JournalQuery,
   type MessageClass,
@@ -15,6 +16,7 @@ import {
   type OutboxMessage,
   type OutboxRow,
   type RecentTrendQuery,
+  refusedReason,
   type StoreCounters,
   type StoreEngine,
   type StoreLimits,
@@ -99,6 +101,7 @@ export class MemoryStore implements StoreEngine {
         const known = this.#retained.get(row.topic);
         if (row.payload.byteLength === 0) this.#retained.delete(row.topic);
         else if (known === undefined || row.n >= known.n) this.#retained.set(row.topic, row);
+        for (const old of this.#aside()) if (old.topic === row.topic && old.n < row.n) old.retain = false;
       }
       this.#rows.delete(n);
     }
@@ -110,18 +113,21 @@ export class MemoryStore implements StoreEngine {
     row.tries++;
     if (!poison) return;
     row.aside ??= reason;
-    if (reason.startsWith('refused') && row.class === 'alarm') {
+    if (reason.startsWith(refusedReason) && row.class === 'alarm') {
       for (const other of this.#pending())
         if (other.class === 'alarm' && other.topic === row.topic) other.aside = reason;
     }
-    const aside = this.#aside();
-    for (const old of aside.slice(0, Math.max(0, aside.length - this.#limits.setAsideRows))) this.#drop(old);
+    const bounded = this.#aside().filter((held) => held.class !== 'alarm');
+    for (const old of bounded.slice(0, Math.max(0, bounded.length - this.#limits.setAsideRows)))
+      this.#drop(old);
   }
 
   releaseRefused(): number {
-    const refused = this.#aside().filter((row) => row.class === 'alarm' && row.aside?.startsWith('refused'));
-    for (const row of refused) row.aside = null;
-    return refused.length;
+    return this.#release([refusedReason]);
+  }
+
+  releaseHungUp(): number {
+    return this.#release([hungUpReason]);
   }
 
   resendRetained(): number {
@@ -232,12 +238,19 @@ export class MemoryStore implements StoreEngine {
     return [...this.#rows.values()].filter((row) => row.aside !== null).sort((a, b) => a.n - b.n);
   }
 
+  #release(reasons: readonly string[], topic?: string): number {
+    const going = this.#aside().filter(
+      (row) =>
+        row.class === 'alarm' &&
+        (topic === undefined || row.topic === topic) &&
+        reasons.some((reason) => row.aside?.startsWith(reason)),
+    );
+    for (const row of going) row.aside = null;
+    return going.length;
+  }
+
   #add(message: OutboxMessage, runS: number): void {
-    if (message.class === 'alarm') {
-      for (const row of this.#rows.values())
-        if (row.class === 'alarm' && row.topic === message.topic && row.aside?.startsWith('refused'))
-          row.aside = null;
-    }
+    if (message.class === 'alarm') this.#release([refusedReason, hungUpReason], message.topic);
     if (superseded.includes(message.class)) {
       for (const row of this.#pending()) {
         if (row.topic !== message.topic || row.class !== message.class || row.n >= message.n) continue;

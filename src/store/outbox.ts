@@ -3,10 +3,12 @@ import { rowBytes } from './limits.ts';
 import {
   type BatchQuery,
   givesWay,
+  hungUpReason,
   type MessageClass,
   messageClasses,
   type OutboxMessage,
   type OutboxRow,
+  refusedReason,
   type SetAsideRow,
   type StoreCounters,
   type StoreLimits,
@@ -44,7 +46,7 @@ export class Outbox {
         const gone = this.#sql.supersede.run(message.topic, code(message.class), message.n).changes;
         if (gone > 0) this.#count('superseded', gone);
       }
-      // A new alarm is a new try for those of its topic that were refused: one after the other, the oldest first.
+      // A new alarm is a new try for those of its topic that are set aside: one after the other, the oldest first.
       if (message.class === 'alarm') this.#sql.releaseTopic.run(code('alarm'), message.topic);
       this.#sql.insert.run({
         n: message.n,
@@ -86,6 +88,7 @@ export class Outbox {
       if (row.retain === 1) {
         if (row.payload.length === 0) this.#sql.forget.run(row.topic);
         else this.#sql.remember.run(row.topic, row.n, row.class, row.payload, row.qos);
+        this.#sql.overtake.run(row.n, row.topic);
       }
       this.#sql.delete.run(n);
     }
@@ -98,14 +101,19 @@ export class Outbox {
     }
     this.#sql.setAside.run(reason, n);
     // Whoever was refused one alarm must not hear of the next one first.
-    if (reason.startsWith('refused')) this.#sql.setTopicAside.run({ reason, n, alarm: code('alarm') });
-    const surplus = this.#total('aside').rows - this.#limits.setAsideRows;
-    if (surplus > 0) this.#dropEach(this.#sql.oldestAside.all(surplus) as { n: number; class: number }[]);
+    if (reason.startsWith(refusedReason)) this.#sql.setTopicAside.run({ reason, n, alarm: code('alarm') });
+    const surplus = this.#sql.surplusAside.all(code('alarm'), this.#limits.setAsideRows);
+    this.#dropEach(surplus as { n: number; class: number }[]);
   }
 
   /** Alarms only: the broker's access rules may have been mended since. */
   releaseRefused(): number {
-    return this.#sql.release.run(code('alarm')).changes;
+    return this.#sql.release.run(`${refusedReason}%`, code('alarm')).changes;
+  }
+
+  /** Alarms only: it may have been the link that was cut. */
+  releaseHungUp(): number {
+    return this.#sql.release.run(`${hungUpReason}%`, code('alarm')).changes;
   }
 
   resendRetained(runS: number): number {
@@ -225,8 +233,12 @@ const statements = {
   setAside: 'UPDATE outbox SET aside = ?, tries = tries + 1 WHERE n = ? AND aside IS NULL',
   setTopicAside: `UPDATE outbox SET aside = :reason WHERE aside IS NULL AND class = :alarm
     AND topic = (SELECT topic FROM outbox WHERE n = :n AND class = :alarm)`,
-  releaseTopic: "UPDATE outbox SET aside = NULL WHERE aside LIKE 'refused%' AND class = ? AND topic = ?",
-  release: "UPDATE outbox SET aside = NULL WHERE aside LIKE 'refused%' AND class = ?",
+  releaseTopic: `UPDATE outbox SET aside = NULL
+    WHERE (aside LIKE '${refusedReason}%' OR aside LIKE '${hungUpReason}%') AND class = ? AND topic = ?`,
+  release: 'UPDATE outbox SET aside = NULL WHERE aside LIKE ? AND class = ?',
+  // Without the hint every row that waits with a lower number would be looked at.
+  overtake: `UPDATE outbox INDEXED BY outbox_aside SET retain = 0
+    WHERE aside IS NOT NULL AND n < ? AND topic = ?`,
   resend: `INSERT INTO outbox (n, class, topic, payload, qos, retain, made_s, bytes)
     SELECT n, class, topic, payload, qos, 1, ?, length(topic) + length(payload) + 64 FROM retained AS r
     WHERE NOT EXISTS (SELECT 1 FROM outbox AS o WHERE o.topic = r.topic AND o.retain = 1 AND o.aside IS NULL)
@@ -237,7 +249,8 @@ const statements = {
     ) GROUP BY topic ORDER BY topic`,
   staleAnswers: 'SELECT n, class FROM outbox WHERE aside IS NULL AND class = ? AND made_s < ?',
   oldestOf: 'SELECT n, class, bytes FROM outbox WHERE aside IS NULL AND class = ? ORDER BY n LIMIT ?',
-  oldestAside: 'SELECT n, class FROM outbox WHERE aside IS NOT NULL ORDER BY n LIMIT ?',
+  surplusAside: `SELECT n, class FROM outbox WHERE aside IS NOT NULL AND class <> ?
+    ORDER BY n DESC LIMIT -1 OFFSET ?`,
   latestAside: 'SELECT n, topic, aside AS reason FROM outbox WHERE aside IS NOT NULL ORDER BY n DESC LIMIT 1',
   byClass: 'SELECT class, count(*) AS rows FROM outbox WHERE aside IS NULL GROUP BY class',
   oldest: 'SELECT made_s FROM outbox WHERE aside IS NULL ORDER BY n LIMIT 1',

@@ -3,7 +3,7 @@
  *
  * One `commit` is one transaction: alarm state, journal entry and outbox row stand or fall together. A row leaves the
  * outbox only by `accept` (the broker acknowledged it), by being set aside, by a newer state of the same topic, or by
- * the bounds below; the last three are counted.
+ * the bounds below; the last three are counted. An alarm leaves the database by `accept` alone.
  *
  * Time in the store is `run time`: seconds that the agent has been running, summed over restarts. It never jumps, and
  * stands still while the power is off. Wall time is only ever a label.
@@ -18,6 +18,10 @@ export const givesWay: readonly MessageClass[] = ['reading', 'trend', 'health', 
 
 /** Classes that say how things are now: a newer message on the same topic makes an unsent older one pointless. */
 export const superseded: readonly MessageClass[] = ['state', 'health'];
+
+/** What the reason of a row that is set aside begins with, where another chance may go better. */
+export const refusedReason = 'refused';
+export const hungUpReason = 'the broker hung up';
 
 export interface OutboxMessage {
   /** The number in the message's id `<store>-<n>`; unique, counts up. */
@@ -159,6 +163,7 @@ export interface StoreLimits {
   outboxBytes: number;
   /** An answer that waited longer than this is of use to nobody. */
   answerAgeS: number;
+  /** Alarms are beside this. */
   setAsideRows: number;
   journalRows: number;
   journalBytes: number;
@@ -174,6 +179,7 @@ export interface StoreEngine {
   accept(ns: readonly number[]): void;
   reject(n: number, reason: string, poison: boolean): void;
   releaseRefused(): number;
+  releaseHungUp(): number;
   resendRetained(): number;
   retainedTopics(): { topic: string; class: MessageClass }[];
   counters(): StoreCounters;
@@ -192,12 +198,17 @@ export interface Store {
   commit(commit: Commit): Promise<void>;
   /** What to send next: by class, then by number; at most one row a topic, the oldest of it. */
   batch(query: BatchQuery): Promise<OutboxRow[]>;
-  /** The broker acknowledged these: they leave the outbox, and what was retained is remembered. */
+  /**
+   * The broker acknowledged these: they leave the outbox, and what was retained is remembered. What is set aside of an
+   * earlier time of the topic is no longer retained when it is sent after all.
+   */
   accept(ns: readonly number[]): Promise<void>;
   /** It was not acknowledged. `poison`: it never will be, so it is set aside where `counters` shows it. */
   reject(n: number, reason: string, options: { poison: boolean }): Promise<void>;
-  /** Gives alarms that the broker refused (reason starting `refused`) another chance; returns how many. */
+  /** Gives alarms that the broker refused (`refusedReason`) another chance; returns how many. */
   releaseRefused(): Promise<number>;
+  /** The same for alarms over which it hung up (`hungUpReason`); their tries stay as they are. */
+  releaseHungUp(): Promise<number>;
   /** Puts the last retained message of every topic back into the outbox, where no newer one waits; returns how many. */
   resendRetained(): Promise<number>;
   /** Topics that hold a retained message at the broker or are about to. */

@@ -96,6 +96,10 @@ export class WorkerStore implements Store {
     return (await this.#ask('releaseRefused', [])) as number;
   }
 
+  async releaseHungUp(): Promise<number> {
+    return (await this.#ask('releaseHungUp', [])) as number;
+  }
+
   async resendRetained(): Promise<number> {
     return (await this.#ask('resendRetained', [])) as number;
   }

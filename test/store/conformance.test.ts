@@ -163,6 +163,57 @@ for (const [kind, { make, clock }] of Object.entries(kinds)) {
       expect(numbers(await store.batch(every))).toEqual([2, 3]);
     });
 
+    it('gives alarms over which the broker hung up another chance, with the tries they had, and nothing else', async () => {
+      await open();
+      await store.commit({ outbox: [message(1), message(2), message(3, { class: 'reading' })] });
+      for (const n of [1, 3]) await store.reject(n, 'the broker hung up 8 times over it', { poison: true });
+      await store.reject(2, 'refused by the broker: 135', { poison: true });
+      expect(await store.releaseHungUp()).toBe(1);
+      expect(await store.batch(every)).toMatchObject([{ n: 1, tries: 1 }]);
+      expect(await store.releaseHungUp()).toBe(0);
+    });
+
+    it('tries an alarm over which the broker hung up ahead of a new one of its topic, and holds none back for it', async () => {
+      await open();
+      const on = (n: number) => message(n, { topic: 'a' });
+      await store.commit({ outbox: [on(1), on(2)] });
+      await store.reject(1, 'the broker hung up 8 times over it', { poison: true });
+      expect(numbers(await store.batch(every))).toEqual([2]);
+      await store.commit({ outbox: [on(3)] });
+      expect(numbers(await store.batch(every))).toEqual([1]);
+    });
+
+    it('does not put what was set aside back in the place of a later state that arrived', async () => {
+      await open();
+      const on = (n: number, topic: string, text?: string) =>
+        message(n, { topic, retain: true, ...(text === undefined ? {} : { text }) });
+      await store.commit({ outbox: [on(1, 'a'), on(2, 'b'), on(3, 'c')] });
+      for (const n of [1, 2, 3]) await store.reject(n, 'the broker hung up', { poison: true });
+      await store.commit({ outbox: [on(4, 'a'), on(5, 'b', '')] });
+      for (const n of [1, 2]) await store.reject(n, 'the broker hung up', { poison: true });
+      await store.accept([4, 5]);
+      expect(await store.releaseHungUp()).toBe(3);
+      const rows = await store.batch(every);
+      expect(rows.map(({ n, retain }) => [n, retain])).toEqual([
+        [1, false],
+        [2, false],
+        [3, true],
+      ]);
+      await store.accept([1, 2, 3]);
+      expect((await store.retainedTopics()).map(({ topic }) => topic)).toEqual(['a', 'c']);
+    });
+
+    it('never drops an alarm that is set aside', async () => {
+      await open({ setAsideRows: 2 });
+      const readings = [5, 6, 7].map((n) => message(n, { class: 'reading' }));
+      await store.commit({ outbox: [message(1), message(2), message(3), message(4), ...readings] });
+      for (let n = 1; n <= 7; n++) await store.reject(n, 'refused by the broker: 135', { poison: true });
+      const { setAside, dropped } = await store.counters();
+      expect(setAside.rows).toBe(6);
+      expect(dropped).toMatchObject({ alarm: 0, reading: 1 });
+      expect(await store.releaseRefused()).toBe(4);
+    });
+
     it('keeps so many set-aside rows and counts the older ones as dropped', async () => {
       await open({ setAsideRows: 2 });
       await store.commit({ outbox: [1, 2, 3, 4].map((n) => message(n, { class: 'reading' })) });
