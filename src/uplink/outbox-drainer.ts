@@ -2,15 +2,22 @@
  * Carries rows from the outbox to the broker. A row stays in the store until the broker acknowledged it; at most one
  * message a topic is in flight, so that a resend never puts an older state back. What would make the broker hang up
  * is set aside before it is sent; a row that was in flight whenever the broker hung up is sent alone, and set aside
- * when that goes on.
+ * when that goes on. A link that is reset looks the same, so an alarm that was set aside for it is sent again, alone,
+ * once a connection has held and nothing else waits.
  */
 
-import type { MessageClass, OutboxRow, Store } from '../store/types.ts';
+import {
+  hungUpReason,
+  type MessageClass,
+  type OutboxRow,
+  refusedReason,
+  type Store,
+} from '../store/types.ts';
 import { type Connection, type End, PublishRefused } from './connection.ts';
 import { topicTrouble } from './topics.ts';
 
 export interface DrainerHost {
-  readonly store: Pick<Store, 'batch' | 'accept' | 'reject'>;
+  readonly store: Pick<Store, 'batch' | 'accept' | 'reject' | 'releaseHungUp'>;
   allowedClasses(): readonly MessageClass[];
   published(name: MessageClass, packetBytes: number): void;
   /** What else is in flight on this connection. */
@@ -30,6 +37,10 @@ export interface DrainerSettings {
   readonly slowestBytesPerS: number;
   /** Pause after the broker said that it has no room. */
   readonly quotaPauseMs: number;
+  /** A connection that held so long is good enough for what was set aside because the broker hung up. */
+  readonly steadyMs: number;
+  /** Where even that one hung up over it, the next chance comes so much later. */
+  readonly nextChanceMs: number;
 }
 
 /** A row that was in flight so often when the broker hung up is sent alone; after `poisonTries` it is set aside. */
@@ -51,6 +62,10 @@ export class OutboxDrainer {
   #filling = false;
   #again = false;
   #pause: NodeJS.Timeout | null = null;
+  #attachedMs = 0;
+  /** There may be alarms that were set aside because the broker hung up; from before this start, too. */
+  #anyHungUp = true;
+  #chanceFailedMs = Number.NEGATIVE_INFINITY;
 
   constructor(host: DrainerHost, settings: DrainerSettings) {
     this.#host = host;
@@ -77,6 +92,7 @@ export class OutboxDrainer {
 
   attach(connection: Connection): void {
     this.#connection = connection;
+    this.#attachedMs = performance.now();
     this.#inFlight = new Map();
     this.kick();
   }
@@ -84,15 +100,19 @@ export class OutboxDrainer {
   /** The connection ended. Rows in flight stay in the store; where the broker hung up, it may have been for one of them. */
   async detach(end: End): Promise<void> {
     const flight = [...this.#inFlight.values()];
+    const alone = flight.length === 1 && this.#host.beside().messages === 0;
     this.#connection = null;
     this.#inFlight = new Map();
     if (this.#pause !== null) clearTimeout(this.#pause);
     this.#pause = null;
     if (end.kind !== 'closed') return;
     for (const { row } of flight) {
-      const poison = flight.length === 1 && row.tries + 1 >= poisonTries;
-      const done = await this.#reject(row, `the broker hung up ${row.tries + 1} times over it`, poison);
-      if (poison && done) this.#host.relieved();
+      const poison = alone && row.tries + 1 >= poisonTries;
+      const done = await this.#reject(row, `${hungUpReason} ${row.tries + 1} times over it`, poison);
+      if (!poison || !done) continue;
+      this.#anyHungUp = true;
+      if (row.tries >= poisonTries) this.#chanceFailedMs = performance.now();
+      this.#host.relieved();
     }
   }
 
@@ -129,6 +149,7 @@ export class OutboxDrainer {
       classes: this.#host.allowedClasses(),
     });
     if (this.#connection !== connection) return;
+    if (rows.length === 0 && flight.size === 0) await this.#giveChance();
     for (const row of rows) {
       const trouble = this.#troubleWith(row, connection);
       if (trouble !== null) {
@@ -141,6 +162,20 @@ export class OutboxDrainer {
         return;
       }
       if (this.#connection !== connection || this.#suspectAlone()) return;
+    }
+  }
+
+  /** What it releases has been tried so often that each goes alone, and back at once when the broker hangs up. */
+  async #giveChance(): Promise<void> {
+    const nowMs = performance.now();
+    if (!this.#anyHungUp || nowMs - this.#attachedMs < this.#settings.steadyMs) return;
+    if (nowMs - this.#chanceFailedMs < this.#settings.nextChanceMs) return;
+    this.#anyHungUp = false;
+    try {
+      if ((await this.#host.store.releaseHungUp()) > 0) this.#again = true;
+    } catch (error) {
+      this.#anyHungUp = true;
+      throw error;
     }
   }
 
@@ -177,7 +212,12 @@ export class OutboxDrainer {
         this.#host.log('warn', 'a message stays in the outbox', { topic: row.topic, err: error });
         this.#rest();
       } else if (laterCodes.includes(error.reasonCode)) this.#rest();
-      else await this.#reject(row, `refused by the broker: ${error.message} (${error.reasonCode})`, true);
+      else
+        await this.#reject(
+          row,
+          `${refusedReason} by the broker: ${error.message} (${error.reasonCode})`,
+          true,
+        );
     } finally {
       flight.delete(row.topic);
       this.#host.settled();

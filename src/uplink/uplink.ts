@@ -30,7 +30,10 @@ export interface UplinkTiming {
   quotaPauseMs: number;
   /** How long the broker may take to hand out its retained `agent`. */
   markerWaitMs: number;
+  /** What waits is looked at as often, too. */
   bookEveryMs: number;
+  /** How long after a failed second chance the next one comes. */
+  nextChanceMs: number;
 }
 
 export interface UplinkSettings {
@@ -78,6 +81,7 @@ const usualTiming: UplinkTiming = {
   quotaPauseMs: 5000,
   markerWaitMs: 3000,
   bookEveryMs: 60_000,
+  nextChanceMs: 3_600_000,
 };
 const maxInFlight = 16;
 const maxInboundBytes = 131_072;
@@ -131,6 +135,8 @@ export class Uplink {
         ackTimeoutMs: this.#timing.ackTimeoutMs,
         slowestBytesPerS,
         quotaPauseMs: this.#timing.quotaPauseMs,
+        steadyMs: this.#timing.steadyMs,
+        nextChanceMs: this.#timing.nextChanceMs,
       },
     );
     this.#parts = new PartSender(
@@ -282,8 +288,9 @@ export class Uplink {
       },
       down: (_, end) => {
         this.#ledger.follow(null);
-        this.#parts.detach();
+        // First, for it asks what else was in flight.
         void this.#drainer.detach(end);
+        this.#parts.detach();
         down(end);
       },
       message: (topic, payload, retained) => this.#message(topic, payload, retained),

@@ -5,11 +5,7 @@ import fc from 'fast-check';
 import { afterAll, describe, expect, it } from 'vitest';
 import { Database } from '../../src/store/database.ts';
 import { MemoryStore } from '../../src/store/memory-store.ts';
-import {
-  messageClasses,
-  type StoreEngine,
-  type StoreLimits,
-} from '../../src/store/types.ts';
+import { messageClasses, type StoreEngine, type StoreLimits } from '../../src/store/types.ts';
 import { makeFolder, removeFolders, roomyLimits } from '../support/store.ts';
 
 afterAll(removeFolders);

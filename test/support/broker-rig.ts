@@ -19,6 +19,7 @@ const fastTiming: UplinkTiming = {
   quotaPauseMs: 100,
   markerWaitMs: 300,
   bookEveryMs: 200,
+  nextChanceMs: 3_600_000,
 };
 
 export function remoteBroker(

@@ -4,7 +4,7 @@ import fc from 'fast-check';
 import { describe, expect, it } from 'vitest';
 import { localStore } from '../../src/store/local-store.ts';
 import { MemoryStore } from '../../src/store/memory-store.ts';
-import { messageClasses } from '../../src/store/types.ts';
+import { messageClasses, type Store } from '../../src/store/types.ts';
 import { type AskCounters, AskDispatcher } from '../../src/uplink/asks.ts';
 import { ByteLedger, type Meter } from '../../src/uplink/byte-ledger.ts';
 import { type Connection, PublishRefused } from '../../src/uplink/connection.ts';
@@ -272,12 +272,13 @@ describe('the outbox drainer', () => {
           }),
       }) as unknown as Connection;
     const relieved = { times: 0 };
+    const beside = { messages: 0, bytes: 0 };
     const drainer = new OutboxDrainer(
       {
         store,
         allowedClasses: () => messageClasses,
         published: () => undefined,
-        beside: () => ({ messages: 0, bytes: 0 }),
+        beside: () => beside,
         settled: () => undefined,
         relieved: () => void relieved.times++,
         log: () => undefined,
@@ -288,10 +289,18 @@ describe('the outbox drainer', () => {
         ackTimeoutMs: 1000,
         slowestBytesPerS: 1000,
         quotaPauseMs: 30,
+        steadyMs: 40,
+        nextChanceMs: 200,
         ...changes,
       },
     );
-    return { store, sent, connection, drainer, relieved };
+    const hangUp = async () => {
+      const before = sent.length;
+      drainer.attach(connection(10));
+      await until(() => sent.length > before, 'the message');
+      await drainer.detach({ kind: 'closed', error: new Error('the broker hung up') });
+    };
+    return { store, sent, connection, drainer, relieved, beside, hangUp };
   };
 
   it('keeps within what both sides take, one message a topic', async () => {
@@ -369,6 +378,70 @@ describe('the outbox drainer', () => {
     }
     expect(relieved.times).toBe(1);
     expect((await store.counters()).setAside.rows).toBe(1);
+  });
+
+  const asideRows = async (store: Store) => (await store.counters()).setAside.rows;
+  const quiet = () => new Promise((resolve) => setTimeout(resolve, 60));
+
+  it('sends an alarm that was set aside for that again, alone, once a connection held and nothing else waits', async () => {
+    const { store, sent, connection, drainer, hangUp } = make();
+    await store.commit({ outbox: [message(1, { topic: 'first' })] });
+    for (let round = 1; round <= 8; round++) await hangUp();
+    expect(await asideRows(store)).toBe(1);
+    await store.commit({ outbox: [message(2, { topic: 'second' })] });
+    drainer.attach(connection(10));
+    await until(() => sent.length === 9, 'the other message');
+    await quiet();
+    drainer.kick();
+    await quiet();
+    expect(sent.at(-1)!.topic).toBe('second');
+    sent[8]!.settle();
+    await until(() => sent.length === 10, 'the one set aside');
+    expect(sent[9]!.topic).toBe('first');
+    await store.commit({ outbox: [message(3, { topic: 'third' })] });
+    drainer.kick();
+    await quiet();
+    expect(sent).toHaveLength(10);
+    sent[9]!.settle();
+    await until(() => sent.length === 11, 'what came meanwhile');
+    sent[10]!.settle();
+    await until(async () => (await store.counters()).outbox.rows === 0, 'the end');
+    expect(await asideRows(store)).toBe(0);
+  });
+
+  it('sends it not before the connection held, and after a chance that failed not for a while', async () => {
+    const { store, sent, connection, drainer, hangUp, relieved } = make();
+    await store.commit({ outbox: [message(1)] });
+    for (let round = 1; round <= 8; round++) await hangUp();
+    drainer.attach(connection(10));
+    drainer.kick();
+    await new Promise((resolve) => setTimeout(resolve, 10));
+    expect(await asideRows(store)).toBe(1);
+    await quiet();
+    drainer.kick();
+    await until(() => sent.length === 9, 'the chance');
+    await drainer.detach({ kind: 'closed', error: new Error('the broker hung up') });
+    expect(relieved.times).toBe(2);
+    expect((await store.counters()).setAside.latest?.reason).toBe('the broker hung up 9 times over it');
+    drainer.attach(connection(10));
+    await quiet();
+    drainer.kick();
+    await quiet();
+    expect(sent).toHaveLength(9);
+    await new Promise((resolve) => setTimeout(resolve, 200));
+    drainer.kick();
+    await until(() => sent.length === 10, 'the next chance');
+  });
+
+  it('sets nothing aside for a hang-up while more than it was in flight', async () => {
+    const { store, hangUp, beside } = make();
+    await store.commit({ outbox: [message(1)] });
+    beside.messages = 2;
+    for (let round = 1; round <= 10; round++) await hangUp();
+    expect(await asideRows(store)).toBe(0);
+    beside.messages = 0;
+    await hangUp();
+    expect(await asideRows(store)).toBe(1);
   });
 
   it('rests when the store fails, and goes on afterwards', async () => {

@@ -287,6 +287,26 @@ describe.runIf(haveMosquitto)('a real broker that fails', () => {
     expect(rig.said(/did not acknowledge/)).toBe(true);
   });
 
+  it('is behind a link that is reset whenever an alarm is in flight: set aside, and sent once the link holds', async () => {
+    const broker = later(await Mosquitto.start(), (made) => made.stop());
+    const proxy = later(await FaultyLink.start(broker.port), (made) => made.stop());
+    const room = await join(broker.port);
+    const rig = await agentAt(proxy.port, 5);
+    await rig.uplink.start();
+    await until(() => room.last(agentTopic)?.state === 'online', 'the agent to be online');
+    // What goes out now is acknowledged long after the reset.
+    proxy.delayMs = 150;
+    await rig.alarm(1);
+    const aside = async () => (await rig.store.counters()).setAside.rows;
+    while ((await aside()) === 0) {
+      if (rig.uplink.status().inFlight > 0) proxy.cut();
+      await sleep(20);
+    }
+    proxy.delayMs = 0;
+    await room.hears(rig.alarms);
+    expect(await aside()).toBe(0);
+  });
+
   it('does not send the retained messages again when the broker kept them', async () => {
     const broker = later(await Mosquitto.start(), (made) => made.stop());
     const proxy = later(await FaultyLink.start(broker.port), (made) => made.stop());
