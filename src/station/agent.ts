@@ -329,7 +329,7 @@ export class Agent {
         clock: this.#clockSays,
         storage: this.#watch.says,
       }),
-      command: (topic, text) => this.#told.hear(topic, text),
+      command: (topic, text, retained) => this.#told.hear(topic, text, retained),
       log: (level, message, details) => {
         if (level === 'info') this.#log.info(message, details);
         else this.#log.warn(message, details);

@@ -2,6 +2,10 @@
  * What other systems tell of a machine over MQTT: its speed, and whether it runs. A payload is a plain number or word,
  * or JSON: `1480`, `{"rpm": 1480}`, `{"hz": 24.67}` for a speed; `1`, `on`, `true`, `{"running": true}` for running.
  * What was told long ago is unknown again, and so is what cannot be read.
+ *
+ * Nobody knows when a retained payload was told, and the broker hands it out at each connection. So it is taken as told
+ * now only where nothing was told on that topic yet: a pump is known at the start of the agent, and a teller that has
+ * gone grows old whatever the link does.
  */
 
 /** A teller that repeats itself each minute may miss four times. */
@@ -11,6 +15,8 @@ const MAX_PAYLOAD_BYTES = 256;
 interface Told {
   atS: number;
   payload: string;
+  /** It is among the unreadable already. */
+  counted: boolean;
 }
 
 export class ToldValues {
@@ -36,14 +42,15 @@ export class ToldValues {
     return [...this.#topics];
   }
 
-  hear(topic: string, payload: string): void {
-    if (!this.#topics.has(topic)) return;
-    if (payload.length > MAX_PAYLOAD_BYTES) {
-      this.unreadable++;
-      this.#told.delete(topic);
-      return;
-    }
-    this.#told.set(topic, { atS: this.#monotonicS(), payload: payload.trim() });
+  hear(topic: string, payload: string, retained: boolean): void {
+    if (!this.#topics.has(topic) || (retained && this.#told.has(topic))) return;
+    const tooLong = payload.length > MAX_PAYLOAD_BYTES;
+    if (tooLong) this.unreadable++;
+    this.#told.set(topic, {
+      atS: this.#monotonicS(),
+      payload: tooLong ? '' : payload.trim(),
+      counted: tooLong,
+    });
   }
 
   /** Speed in Hz; null: not told, told too long ago, or not readable. */
@@ -59,7 +66,10 @@ export class ToldValues {
     const told = this.#told.get(topic);
     if (!told || this.#monotonicS() - told.atS > FRESH_S) return null;
     const value = parse(parsed(told.payload));
-    if (value === null) this.unreadable++;
+    if (value === null && !told.counted) {
+      told.counted = true;
+      this.unreadable++;
+    }
     return value;
   }
 }

@@ -56,7 +56,8 @@ export interface UplinkHost {
   /** Wall time, ISO 8601 UTC. */
   now(): string;
   agent(): { version: string; config: string; clock: 'synchronised' | 'free'; storage: 'ok' | 'failing' };
-  command(topic: string, text: string): void;
+  /** `retained`: told at any time before this connection; otherwise just now. */
+  command(topic: string, text: string, retained: boolean): void;
   log(level: 'info' | 'warn' | 'error', message: string, details: Record<string, unknown>): void;
 }
 
@@ -386,7 +387,8 @@ export class Uplink {
       if (verb !== null) void this.#asks.take(verb, payload, retained);
       else if (topic === this.topics.agent) {
         if (retained) this.#marker?.(payload);
-      } else if (payload.byteLength <= maxCommandBytes) this.#host.command(topic, payload.toString('utf8'));
+      } else if (payload.byteLength <= maxCommandBytes)
+        this.#host.command(topic, payload.toString('utf8'), retained);
     } catch (error) {
       this.#host.log('error', 'a message from the broker failed', { topic, err: error });
     }

@@ -4,7 +4,7 @@ import { ToldValues } from '../../src/station/told.ts';
 function heard(payload: string, atS = 0): ToldValues {
   const clock = { s: 0 };
   const told = new ToldValues(['plc/pump-1'], () => clock.s);
-  told.hear('plc/pump-1', payload);
+  told.hear('plc/pump-1', payload, false);
   clock.s = atS;
   return told;
 }
@@ -42,10 +42,36 @@ describe('ToldValues', () => {
 
   it('takes nothing from topics that it was not given, nor oversized payloads', () => {
     const told = heard('1480');
-    told.hear('other', '5');
+    told.hear('other', '5', false);
     expect(told.shaftHz('other')).toBeNull();
-    told.hear('plc/pump-1', '1'.repeat(300));
+    told.hear('plc/pump-1', '1'.repeat(300), false);
     expect(told.shaftHz('plc/pump-1')).toBeNull();
     expect(told.unreadable).toBe(1);
+  });
+
+  it('takes a retained word as the first one only: a teller that has gone grows old, however often the link comes back', () => {
+    const clock = { s: 0 };
+    const told = new ToldValues(['plc/pump-1'], () => clock.s);
+    told.hear('plc/pump-1', '1480', true);
+    expect(told.shaftHz('plc/pump-1')).toBeCloseTo(24.667, 3);
+    for (clock.s = 100; clock.s <= 400; clock.s += 100) told.hear('plc/pump-1', '1480', true);
+    expect(told.shaftHz('plc/pump-1')).toBeNull();
+    told.hear('plc/pump-1', '1470', false);
+    expect(told.shaftHz('plc/pump-1')).toBe(24.5);
+    // Some publish their first word retained, and what follows not.
+    told.hear('plc/pump-1', '1480', true);
+    expect(told.shaftHz('plc/pump-1')).toBe(24.5);
+  });
+
+  it('counts payloads that cannot be read, not how often they were looked at', () => {
+    const told = heard('n/a');
+    for (let k = 0; k < 5; k++) {
+      told.shaftHz('plc/pump-1');
+      told.running('plc/pump-1');
+    }
+    expect(told.unreadable).toBe(1);
+    told.hear('plc/pump-1', 'n/a', false);
+    told.shaftHz('plc/pump-1');
+    expect(told.unreadable).toBe(2);
   });
 });

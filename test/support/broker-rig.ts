@@ -55,6 +55,8 @@ export class Rig {
   readonly ids: MessageIds;
   readonly lines: LogLine[] = [];
   readonly commands: [string, string][] = [];
+  /** Those of them that the broker had kept. */
+  readonly retainedCommands: string[] = [];
   /** Ids of the alarms that were committed. */
   readonly alarms: string[] = [];
   clock: 'synchronised' | 'free' = 'synchronised';
@@ -68,7 +70,10 @@ export class Rig {
       runS: () => performance.now() / 1000,
       now: () => new Date().toISOString(),
       agent: () => ({ version: '0.1.0', config: '0123456789ab', clock: this.clock, storage: 'ok' as const }),
-      command: (topic, text) => this.commands.push([topic, text]),
+      command: (topic, text, retained) => {
+        this.commands.push([topic, text]);
+        if (retained) this.retainedCommands.push(text);
+      },
       log: (level, message, details) => this.lines.push({ level, message, details }),
     });
   }

@@ -198,6 +198,18 @@ for (const kind of kinds.filter(({ present }) => present)) {
       ]);
     });
 
+    it('tells a command that the broker had kept from one that comes now', async () => {
+      const port = await kind.port();
+      const room = await join(port);
+      await room.client.publishAsync('plc/pump-1/rpm', '1480', { qos: 1, retain: true });
+      const rig = await agentAt(port, kind.protocol, { commandTopics: ['plc/pump-1/rpm'] });
+      await rig.uplink.start();
+      await until(() => rig.commands.length === 1, 'what was kept');
+      await room.client.publishAsync('plc/pump-1/rpm', '1470', { qos: 1, retain: true });
+      await until(() => rig.commands.length === 2, 'what is new');
+      expect(rig.retainedCommands).toEqual(['1480']);
+    });
+
     it('empties the retained topics of what has left the configuration, and no other', async () => {
       const port = await kind.port();
       const rig = await agentAt(port, kind.protocol);
