@@ -42,5 +42,10 @@ export type ToWorker =
   | { kind: 'ring'; link: string; memory: SharedArrayBuffer | null }
   | { kind: 'measure'; job: MeasureJob };
 
-/** `missed`: why there is no reading; the record is counted as lost. */
-export type MeasureOutcome = { id: number; reading: Reading } | { id: number; missed: string };
+/**
+ * `missed`: why there is no reading; the record is counted as lost. `failed`: measuring itself broke, as it may again
+ * with each record of the point.
+ */
+export type MeasureOutcome =
+  | { id: number; reading: Reading }
+  | { id: number; missed: string; failed?: boolean };

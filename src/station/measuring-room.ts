@@ -135,15 +135,19 @@ export class MeasuringRoom {
       this.#lostSince = false;
       this.#host.workerBack();
     }
-    if ('missed' in outcome) this.#giveUp(current, outcome.missed);
-    else current.resolve(outcome);
+    if ('missed' in outcome) this.#count(outcome.missed);
+    current.resolve(outcome);
     this.#next();
   }
 
   #giveUp(waiting: Waiting | null | undefined, missed: string): void {
     if (!waiting) return;
-    this.missed[missed] = (this.missed[missed] ?? 0) + 1;
+    this.#count(missed);
     waiting.resolve({ id: 0, missed });
+  }
+
+  #count(missed: string): void {
+    this.missed[missed] = (this.missed[missed] ?? 0) + 1;
   }
 
   #post(message: ToWorker): void {

@@ -86,7 +86,7 @@ port.on('message', (message: ToWorker) => {
   try {
     outcome = measure(message.job);
   } catch (error) {
-    outcome = { id: message.job.id, missed: `failed: ${(error as Error).message}` };
+    outcome = { id: message.job.id, missed: `failed: ${(error as Error).message}`, failed: true };
   }
   port.postMessage(outcome);
 });

@@ -1,6 +1,7 @@
 /**
  * The links of the station with their sampling and measuring: samples in, readings out. Where a node cannot be
- * believed or heard, its points get readings without figures that say why, so that nothing old stands for the present.
+ * believed or heard, or its samples not be measured, its points get readings without figures that say why, so that
+ * nothing old stands for the present.
  */
 
 import type { LinkCondition as LinkAlarmCondition } from '../alarm/sensor.ts';
@@ -17,6 +18,9 @@ import { type DueRecord, LinkSampling, type Unfed, usedRate } from './sampling.t
 import { BEFORE_S } from './snapshot-keeper.ts';
 import type { LinkSource } from './snapshot-making.ts';
 import type { ToldValues } from './told.ts';
+
+type MachinePoint = Omit<Unfed, 'why'>;
+type Room = Pick<MeasuringRoom, 'addRing' | 'forgetRing' | 'replan' | 'measure'>;
 
 export interface StationLinksHost {
   wallMs(): number;
@@ -51,7 +55,7 @@ interface Joined {
 
 export class StationLinks {
   #station: Station;
-  readonly #room: MeasuringRoom;
+  readonly #room: Room;
   readonly #told: ToldValues;
   readonly #host: StationLinksHost;
   readonly #joined = new Map<string, Joined>();
@@ -60,7 +64,7 @@ export class StationLinks {
   #stopped = false;
   #outdated = 0;
 
-  constructor(station: Station, room: MeasuringRoom, told: ToldValues, host: StationLinksHost) {
+  constructor(station: Station, room: Room, told: ToldValues, host: StationLinksHost) {
     this.#station = station;
     this.#room = room;
     this.#told = told;
@@ -114,14 +118,22 @@ export class StationLinks {
       this.#room.forgetRing(id);
       closing.push(link.stop());
     }
-    const fresh = station.links
+    const joining = station.links
       .filter(({ id }) => !kept.has(id))
       .map((settings) => this.#join(settings, ringSeconds.get(settings.id) ?? SPARE_S));
     // Two links may have changed places: a device is free only once its old link has let go of it.
     await Promise.all(closing);
     if (this.#stopped) return;
-    for (const link of fresh) link.start();
-    for (const id of kept) this.#report(id, this.#joined.get(id)?.sampling.unfed ?? []);
+    for (const link of joining) link.start();
+    for (const id of kept) {
+      const { link, sampling } = this.#joined.get(id)!;
+      this.#report(id, sampling.unfed);
+      // What was told when the link fell silent was told of the points of then.
+      const fresh = this.#pointsOf(id).filter(
+        ({ point: { key } }) => before.get(key) !== this.#measuredBy.get(key),
+      );
+      if (fresh.length > 0) this.#tellUnheard(id, link.health().condition, fresh);
+    }
   }
 
   /** Where the samples of a link are; null: it has none. */
@@ -179,26 +191,40 @@ export class StationLinks {
     const { key } = record.point;
     const by = this.#measuredBy.get(key);
     const outcome = await this.#room.measure(record.job);
-    if (!('reading' in outcome)) return;
-    if (this.#measuredBy.get(key) === by)
-      this.#host.reading(record.point, outcome.reading, record.wallMs, record.elapsedS);
-    else this.#outdated++;
+    const outdated = this.#measuredBy.get(key) !== by;
+    if ('reading' in outcome) {
+      if (outdated) this.#outdated++;
+      else this.#host.reading(record.point, outcome.reading, record.wallMs, record.elapsedS);
+    } else if (outcome.failed === true && !outdated) {
+      const { point, machine, job } = record;
+      const { mainsHz } = this.#station.site;
+      const why = `measuring ${outcome.missed}`;
+      const blank = blankReading(point, machine, job.nominalRateHz, mainsHz, job.span.first, why);
+      if (blank) this.#host.reading(point, blank, record.wallMs, record.elapsedS);
+    }
   }
 
-  #conditionChanged(id: string, { kind, why }: LinkCondition): void {
+  #conditionChanged(id: string, condition: LinkCondition): void {
+    if (condition.kind === 'receiving') this.#host.condition(id, [], null);
+    // While it is only waiting, what was wrong is still wrong.
+    else this.#tellUnheard(id, condition, this.#pointsOf(id));
+  }
+
+  /** That a link is not to be believed or heard, if so it is. */
+  #tellUnheard(id: string, { kind, why }: LinkCondition, points: readonly MachinePoint[]): void {
     const condition = alarmOf[kind];
-    if (condition === undefined) {
-      // While it is only waiting, what was wrong is still wrong.
-      if (kind === 'receiving') this.#host.condition(id, [], null);
-      return;
-    }
+    if (condition === undefined) return;
     this.#host.condition(id, [condition], why);
-    const entries = this.#station.machines.flatMap((machine) =>
-      machine.points
-        .filter((point) => point.link === id)
-        .map((point) => ({ machine, point, why: `${kind}: ${why}` })),
+    this.#report(
+      id,
+      points.map((at) => ({ ...at, why: `${kind}: ${why}` })),
     );
-    this.#report(id, entries);
+  }
+
+  #pointsOf(id: string): MachinePoint[] {
+    return this.#station.machines.flatMap((machine) =>
+      machine.points.filter(({ link }) => link === id).map((point) => ({ machine, point })),
+    );
   }
 
   /** A reading without figures for each point that gets none at present. */
