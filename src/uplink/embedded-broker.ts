@@ -1,6 +1,7 @@
 /**
- * A broker inside the agent, for trying out: on loopback only, MQTT 3.1.1, everything in memory. Only the agent
- * publishes under its site; others on this machine read, ask, and write the topics that the station takes commands from.
+ * A broker inside the agent, for trying out: on loopback only, MQTT 3.1.1, everything in memory, and nothing for who is
+ * away but what is retained. Only the agent publishes under its site; others on this machine read, ask, and write the
+ * topics that the station takes commands from.
  */
 
 import { randomBytes } from 'node:crypto';
@@ -67,6 +68,11 @@ export class EmbeddedBroker {
       connectTimeout: 10_000,
       queueLimit: 100,
       maxClientsIdLength: 128,
+      preConnect: (_, packet, done) => {
+        // What aedes keeps for an absent subscriber has no bound.
+        packet.clean = true;
+        done(null, true);
+      },
       authenticate: (client, username, password, done) => {
         // A name is not a right: only the agent knows the word that was drawn at this start.
         const claims = username === agentUser;

@@ -109,6 +109,29 @@ describe('the embedded broker', () => {
     for (const socket of sockets) socket.destroy();
   });
 
+  it('keeps nothing for a subscriber that is away, whatever session it asks for', async () => {
+    const rig = await station();
+    const away = { clientId: 'scada', clean: false };
+    const first = await join(rig, away);
+    await first.leave();
+    for (let k = 0; k < 20; k++) await rig.alarm(k, 1);
+    await rig.empty();
+    const again = mqtt.connect(`mqtt://127.0.0.1:${rig.uplink.embeddedPort}`, {
+      ...away,
+      reconnectPeriod: 0,
+    });
+    cleanups.push(() => again.endAsync(true));
+    let heard = 0;
+    again.on('message', () => heard++);
+    const [connack] = await once(again as unknown as EventEmitter, 'connect');
+    expect(connack.sessionPresent).toBe(false);
+    // Nothing comes unasked, and what is retained does when asked for.
+    await again.subscribeAsync('forebay/north-weir/pump-1/alarm/#', { qos: 1 });
+    await until(() => heard > 0, 'the last alarm');
+    await new Promise((resolve) => setTimeout(resolve, 100));
+    expect(heard).toBe(1);
+  });
+
   it('names the fix when its port is taken, and listens on loopback only', async () => {
     const rig = await station();
     const port = rig.uplink.embeddedPort!;
