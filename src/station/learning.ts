@@ -52,6 +52,8 @@ export class Learning {
   readonly #host: LearningHost;
   readonly #runs = new Map<string, LearningRun>();
   readonly #points = new Map<string, PointLearning>();
+  /** Rows of learning that ended because its machine left: it must not go on by itself should that come back. */
+  readonly #gone = new Set<string>();
   #unsavedS = 0;
   /** One thing after the other: what is asked, what ends by itself, what is written. */
   #last: Promise<unknown> = Promise.resolve();
@@ -85,14 +87,13 @@ export class Learning {
 
   /** Time of the running agent passes. */
   tick(elapsedS: number): void {
-    if (this.#runs.size === 0) return;
-    for (const [machine, run] of this.#runs) {
-      if (!this.#host.plan().machines.has(machine)) this.#runs.delete(machine);
-      else this.#runs.set(machine, { ...run, leftS: Math.max(0, run.leftS - elapsedS) });
-    }
+    this.#endOfThoseThatLeft();
+    if (this.#runs.size === 0 && this.#gone.size === 0) return;
+    for (const [machine, run] of this.#runs)
+      this.#runs.set(machine, { ...run, leftS: Math.max(0, run.leftS - elapsedS) });
     this.#unsavedS += elapsedS;
     const over = [...this.#runs.values()].some(({ leftS }) => leftS === 0);
-    if (this.#busy || !(over || this.#unsavedS >= SAVE_S)) return;
+    if (this.#busy || !(over || this.#gone.size > 0 || this.#unsavedS >= SAVE_S)) return;
     this.#busy = true;
     void this.#inTurn(() => this.#advance())
       .catch((error) => this.#host.failed(error))
@@ -136,6 +137,7 @@ export class Learning {
       rows.push({ key: `learning:${machine}`, json: JSON.stringify({ v: VERSION, ...run }) });
       const text = `learning a baseline for ${run.hours} h`;
       await this.#host.commit({ baselines: rows }, { machine, by, text });
+      for (const { key } of rows) this.#gone.delete(key);
       this.#runs.set(machine, run);
       for (const key of points)
         this.#points.set(key, { ...this.#of(key), samples: NO_SAMPLES, proposed: null });
@@ -206,8 +208,22 @@ export class Learning {
   }
 
   async #advance(): Promise<void> {
+    this.#endOfThoseThatLeft();
     for (const [machine, { leftS }] of this.#runs) if (leftS === 0) await this.#propose(machine);
-    if (this.#unsavedS >= SAVE_S) await this.#save();
+    if (this.#gone.size > 0 || this.#unsavedS >= SAVE_S) await this.#save();
+  }
+
+  #endOfThoseThatLeft(): void {
+    for (const machine of this.#runs.keys()) {
+      if (this.#host.plan().machines.has(machine)) continue;
+      this.#runs.delete(machine);
+      this.#gone.add(`learning:${machine}`);
+      for (const [key, point] of this.#points) {
+        if (!key.startsWith(`${machine}/`)) continue;
+        this.#points.set(key, { ...point, samples: NO_SAMPLES });
+        this.#gone.add(`samples:${key}`);
+      }
+    }
   }
 
   async #propose(machine: string): Promise<void> {
@@ -228,7 +244,9 @@ export class Learning {
   }
 
   async #save(): Promise<void> {
-    if (this.#runs.size === 0) return;
+    this.#endOfThoseThatLeft();
+    const gone = [...this.#gone];
+    if (this.#runs.size === 0 && gone.length === 0) return;
     const rows = [...this.#runs].flatMap(([machine, run]): Row[] => [
       { key: `learning:${machine}`, json: JSON.stringify({ v: VERSION, ...run }) },
       ...this.#pointsOf(machine).map((key) => ({
@@ -236,8 +254,10 @@ export class Learning {
         json: JSON.stringify({ v: VERSION, ...this.#of(key).samples }),
       })),
     ]);
+    rows.push(...gone.map((key) => ({ key, json: null })));
     this.#unsavedS = 0;
     await this.#host.commit({ baselines: rows });
+    for (const key of gone) this.#gone.delete(key);
   }
 
   #restore(rowKey: string, row: { v: number } & Record<string, unknown>): void {
@@ -245,11 +265,10 @@ export class Learning {
     const [of, key] = [rowKey.slice(0, colon), rowKey.slice(colon + 1)];
     const { v, ...value } = row;
     if (v !== VERSION) return;
-    if (of === 'learning') {
-      if (this.#host.plan().machines.has(key)) this.#runs.set(key, value as unknown as LearningRun);
-    } else if (this.#host.plan().points.has(key)) {
-      this.#points.set(key, { ...this.#of(key), [of]: value });
-    }
+    const { machines, points } = this.#host.plan();
+    if (of === 'learning' && machines.has(key)) this.#runs.set(key, value as unknown as LearningRun);
+    else if (points.has(key)) this.#points.set(key, { ...this.#of(key), [of]: value });
+    else if (of === 'learning' || of === 'samples') this.#gone.add(rowKey);
   }
 
   #highPoint(machine: string, state: EngineState): { id: string; zone: string } | null {

@@ -1,8 +1,10 @@
 import { describe, expect, it } from 'vitest';
 import { baselineFor } from '../../src/alarm/baseline.ts';
 import { addSample, NO_SAMPLES } from '../../src/alarm/learn-samples.ts';
+import { planAlarms } from '../../src/alarm/plan.ts';
 import { Learning } from '../../src/station/learning.ts';
 import { Bench, makeMachine, makePoint, makeReading, makeStation, type Shown } from '../alarm/support.ts';
+import { until } from '../support/broker-rig.ts';
 
 /** One pump with a radial and an axial point; its rows survive it, as in a database. */
 class Rig {
@@ -14,6 +16,8 @@ class Rig {
       ]),
     ]),
   );
+  /** What the agent goes by. */
+  plan = this.bench.plan;
   readonly rows: Record<string, string> = {};
   readonly notes: (string | null)[] = [];
   failing = false;
@@ -22,7 +26,7 @@ class Rig {
 
   open(): Learning {
     return new Learning(structuredClone(this.rows), {
-      plan: () => this.bench.plan,
+      plan: () => this.plan,
       commit: async ({ baselines = [] }, note) => {
         if (this.failing) throw new Error('the disk is full');
         for (const { key, json } of baselines) {
@@ -128,6 +132,47 @@ describe('learning', () => {
     await rig.run(270, () => ({ mmS: 2 }));
     expect((await rig.point('h')).proposed?.ranges[0]?.figures['velocity.overall']).toMatchObject({
       median: 2,
+    });
+  });
+
+  describe('of a machine that leaves the configuration', () => {
+    const without = planAlarms(makeStation([makeMachine('pump-2', [makePoint('pump-2', 'h', 'node-1')])]));
+    const keysOf = (rig: Rig) => Object.keys(rig.rows).toSorted();
+    const learningFor10Min = async () => {
+      const rig = new Rig();
+      await rig.run(1, () => ({ mmS: 2 }));
+      await rig.start(1);
+      await rig.run(60, () => ({ mmS: 2 }));
+      expect(keysOf(rig)).toEqual(['learning:pump-1', 'samples:pump-1/a', 'samples:pump-1/h']);
+      return rig;
+    };
+    const isForgotten = async (rig: Rig) => {
+      await until(() => keysOf(rig).length === 0, 'the rows to go');
+      rig.plan = rig.bench.plan;
+      rig.learning = rig.open();
+      const { learning, points } = await rig.learning.show('pump-1');
+      expect(learning).toBeNull();
+      expect(points.h).toMatchObject({ readings: null, proposed: null });
+    };
+
+    it('is over, also when that comes back after a restart', async () => {
+      const rig = await learningFor10Min();
+      rig.plan = without;
+      rig.learning.tick(1);
+      await isForgotten(rig);
+    });
+
+    it('is over where it left while the agent was down, or in its last second', async () => {
+      const down = await learningFor10Min();
+      down.plan = without;
+      down.learning = down.open();
+      down.learning.tick(1);
+      await isForgotten(down);
+      const stopping = await learningFor10Min();
+      stopping.plan = without;
+      await stopping.learning.stop();
+      expect(stopping.failures).toBe(0);
+      await isForgotten(stopping);
     });
   });
 
