@@ -35,6 +35,8 @@ export class HealthSchedule {
    * @param errors all counters of what goes wrong, added up.
    */
   isDue(nowS: number, errors: number): boolean {
+    // A link that leaves with a configuration takes its counters along: what grows after that is news all the same.
+    this.#countAtSent = Math.min(this.#countAtSent, errors);
     const grew = errors > this.#countAtSent && nowS - this.#sentS >= GROWTH_APART_S;
     if (grew && Number.isFinite(this.#sentS)) this.changed(nowS);
     if (nowS < this.#dueS) return false;

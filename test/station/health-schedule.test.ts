@@ -32,6 +32,11 @@ describe('HealthSchedule', () => {
     expect(sentAt(5000, { errors: (second) => (second < 100 ? 0 : 3) })).toEqual([30, 635]);
   });
 
+  it('tells errors that grow after a link with many has left', () => {
+    const errors = (second: number) => (second < 100 ? 50 : second < 1000 ? 0 : 3);
+    expect(sentAt(2000, { errors })).toEqual([30, 1005]);
+  });
+
   it('is bounded, however much changes', () => {
     const changes = Array.from({ length: 21_000 }, (_, second) => second);
     const sent = sentAt(21_000, { changes });
