@@ -14,7 +14,7 @@ import { MessageIds } from '../uplink/message-ids.ts';
 import { emptyingMessage, outboxMessage } from '../uplink/payload.ts';
 import { emptyForgotten } from '../uplink/retained.ts';
 import { topicsOf } from '../uplink/topics.ts';
-import { Uplink } from '../uplink/uplink.ts';
+import { Uplink, type UplinkCounters, type UplinkHost } from '../uplink/uplink.ts';
 import { clockState, type StationClock, systemClock } from './clock.ts';
 import { HealthPost } from './health-post.ts';
 import { noteEntry } from './journal-entry.ts';
@@ -232,7 +232,7 @@ export class Agent {
     if (!parts) return;
     await parts.uplink.stop(STOP_MS.uplink);
     const begin = async (station: Station) => {
-      parts.uplink = this.#makeUplink(station, parts.ids);
+      parts.uplink = this.#makeUplink(station, parts.ids, parts.uplink.counters);
       answerAsks(parts.uplink, { ...parts, store: this.#store, now: () => this.#now() });
       parts.snapshots.answer(parts.uplink);
       await parts.uplink.start();
@@ -317,8 +317,8 @@ export class Agent {
     });
   }
 
-  #makeUplink(station: Station, ids: MessageIds): Uplink {
-    return new Uplink(uplinkSettings(station), {
+  #makeUplink(station: Station, ids: MessageIds, counters?: UplinkCounters): Uplink {
+    const host: UplinkHost = {
       store: this.#store,
       ids,
       runS: () => this.#watch.runS,
@@ -334,7 +334,8 @@ export class Agent {
         if (level === 'info') this.#log.info(message, details);
         else this.#log.warn(message, details);
       },
-    });
+    };
+    return new Uplink(uplinkSettings(station), host, counters);
   }
 
   #reading(point: Point, measured: Reading, wallMs: number, elapsedS: number | null): void {

@@ -56,6 +56,7 @@ export function healthBody(sources: HealthSources): Record<string, unknown> {
       protocol: uplink.protocol,
       connects: uplink.connects,
       asks: uplink.asks,
+      oversized: uplink.oversized,
       bytes_today: Object.fromEntries(
         uplink.bytesToday.map((line) => [line.class, { sent: line.sentBytes, received: line.receivedBytes }]),
       ),

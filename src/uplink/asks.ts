@@ -61,6 +61,8 @@ export interface AskCounters {
   ignored: number;
 }
 
+export const noAsks = (): AskCounters => ({ done: 0, refused: 0, ignored: 0 });
+
 export class AskDispatcher {
   readonly #enabled: ReadonlySet<string>;
   readonly #host: AskHost;
@@ -69,11 +71,13 @@ export class AskDispatcher {
   readonly #served: Bucket;
   readonly #refusals: Bucket;
   #underWay = 0;
-  readonly counters: AskCounters = { done: 0, refused: 0, ignored: 0 };
+  readonly counters: AskCounters;
 
-  constructor(enabled: readonly string[], host: AskHost) {
+  /** @param counters are counted on. */
+  constructor(enabled: readonly string[], host: AskHost, counters: AskCounters) {
     this.#enabled = new Set(enabled);
     this.#host = host;
+    this.counters = counters;
     const nowS = host.monotonicS();
     this.#served = new Bucket(10, 1, nowS);
     this.#refusals = new Bucket(60, 5, nowS);

@@ -7,7 +7,7 @@
 
 import type { Broker } from '../config/station.ts';
 import type { BudgetLine, Store } from '../store/types.ts';
-import { type AskCounters, AskDispatcher, type AskHandler } from './asks.ts';
+import { type AskCounters, AskDispatcher, type AskHandler, noAsks } from './asks.ts';
 import { type Access, accessEmbedded, accessRemote } from './broker-access.ts';
 import { ByteLedger } from './byte-ledger.ts';
 import { Connection, type End, PublishRefused } from './connection.ts';
@@ -61,14 +61,18 @@ export interface UplinkHost {
   log(level: 'info' | 'warn' | 'error', message: string, details: Record<string, unknown>): void;
 }
 
-export interface UplinkStatus {
-  connected: boolean;
-  protocol: '5' | '3.1.1' | null;
+/** Since the start of the agent: an uplink that takes the place of another one counts on. */
+export interface UplinkCounters {
   connects: number;
-  inFlight: number;
   asks: AskCounters;
   /** Packets from the broker that were larger than agreed. */
   oversized: number;
+}
+
+export interface UplinkStatus extends UplinkCounters {
+  connected: boolean;
+  protocol: '5' | '3.1.1' | null;
+  inFlight: number;
   bytesToday: readonly BudgetLine[];
   leftTodayBytes: number;
 }
@@ -93,6 +97,7 @@ const embeddedClients = 32;
 
 export class Uplink {
   readonly topics: Topics;
+  readonly counters: UplinkCounters;
   readonly #settings: UplinkSettings;
   readonly #host: UplinkHost;
   readonly #timing: UplinkTiming;
@@ -107,14 +112,17 @@ export class Uplink {
   /** The block of the last connection that came about. */
   #lastBlock: AgentBlock | null = null;
   #marker: ((payload: Buffer) => void) | null = null;
-  #connects = 0;
-  #oversized = 0;
   #stopping = false;
   readonly #warned = new Set<string>();
 
-  constructor(settings: UplinkSettings, host: UplinkHost) {
+  constructor(
+    settings: UplinkSettings,
+    host: UplinkHost,
+    counters: UplinkCounters = { connects: 0, asks: noAsks(), oversized: 0 },
+  ) {
     this.#settings = settings;
     this.#host = host;
+    this.counters = counters;
     this.#timing = { ...usualTiming, ...settings.timing };
     this.topics = topicsOf(settings.site);
     this.#ledger = new ByteLedger(settings.broker.bytesPerDay, settings.broker.snapshotBytesPerDay, () =>
@@ -152,11 +160,15 @@ export class Uplink {
       },
       { ackTimeoutMs: this.#timing.ackTimeoutMs, slowestBytesPerS },
     );
-    this.#asks = new AskDispatcher(settings.asks, {
-      answer: (askId, body) => this.answer(askId, body),
-      log: (...line) => host.log(...line),
-      monotonicS: () => host.runS(),
-    });
+    this.#asks = new AskDispatcher(
+      settings.asks,
+      {
+        answer: (askId, body) => this.answer(askId, body),
+        log: (...line) => host.log(...line),
+        monotonicS: () => host.runS(),
+      },
+      counters.asks,
+    );
     this.#loop = new ConnectionLoop(
       {
         protocol: settings.broker.kind === 'embedded' ? 4 : settings.broker.protocol,
@@ -236,10 +248,8 @@ export class Uplink {
     return {
       connected: connection !== null,
       protocol: protocol === null ? null : protocol === 5 ? '5' : '3.1.1',
-      connects: this.#connects,
+      ...structuredClone(this.counters),
       inFlight: this.#drainer.inFlight,
-      asks: { ...this.#asks.counters },
-      oversized: this.#oversized,
       bytesToday: this.#ledger.lines(),
       leftTodayBytes: this.#ledger.leftBytes(),
     };
@@ -296,7 +306,7 @@ export class Uplink {
       },
       message: (topic, payload, retained) => this.#message(topic, payload, retained),
       oversized: () => {
-        this.#oversized++;
+        this.counters.oversized++;
         this.#host.log('warn', 'the broker sent a packet larger than agreed; the surplus is dropped', {
           maxBytes: maxInboundBytes,
         });
@@ -320,7 +330,7 @@ export class Uplink {
     const block = this.#block!;
     const last = this.#lastBlock;
     this.#lastBlock = block;
-    this.#connects++;
+    this.counters.connects++;
     this.#host.log('info', 'connected', { protocol: connection.protocol });
     // The first connection of a run knows of no earlier one: there is nothing to compare with, nor to wait for.
     const marker = last === null ? null : this.#readMarker();

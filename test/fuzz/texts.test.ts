@@ -3,7 +3,7 @@ import { readFileSync } from 'node:fs';
 import fc from 'fast-check';
 import { describe, expect, it } from 'vitest';
 import { parseStation } from '../../src/config/load.ts';
-import { AskDispatcher } from '../../src/uplink/asks.ts';
+import { AskDispatcher, noAsks } from '../../src/uplink/asks.ts';
 import { askSchemas } from '../../src/uplink/payload-schemas.ts';
 import { stationText } from '../support/fault-station.ts';
 import { damaged, runs, seed, timeout } from './mutate.ts';
@@ -58,17 +58,21 @@ describe('an ask', () => {
     let nowS = 0;
     let answers = 0;
     let failed = 0;
-    const asks = new AskDispatcher(verbs, {
-      answer: async (id) => {
-        answers++;
-        // An id becomes a topic and may become a file name.
-        expect(id).toMatch(/^[A-Za-z0-9_-]{2,64}$/);
+    const asks = new AskDispatcher(
+      verbs,
+      {
+        answer: async (id) => {
+          answers++;
+          // An id becomes a topic and may become a file name.
+          expect(id).toMatch(/^[A-Za-z0-9_-]{2,64}$/);
+        },
+        log: () => {
+          failed++;
+        },
+        monotonicS: () => nowS,
       },
-      log: () => {
-        failed++;
-      },
-      monotonicS: () => nowS,
-    });
+      noAsks(),
+    );
     for (const verb of Object.keys(askSchemas)) asks.handle(verb as keyof typeof askSchemas, () => ({}));
     let taken = 0;
     await fc.assert(

@@ -6,7 +6,13 @@ import { MemoryStore } from '../../src/store/memory-store.ts';
 import type { Commit, MessageClass, Store } from '../../src/store/types.ts';
 import { MessageIds } from '../../src/uplink/message-ids.ts';
 import { outboxMessage } from '../../src/uplink/payload.ts';
-import { Uplink, type UplinkSettings, type UplinkTiming } from '../../src/uplink/uplink.ts';
+import {
+  Uplink,
+  type UplinkCounters,
+  type UplinkHost,
+  type UplinkSettings,
+  type UplinkTiming,
+} from '../../src/uplink/uplink.ts';
 import { sleep } from './proxy.ts';
 import { roomyLimits } from './store.ts';
 
@@ -61,10 +67,10 @@ export class Rig {
   readonly alarms: string[] = [];
   clock: 'synchronised' | 'free' = 'synchronised';
 
-  private constructor(store: Store, ids: MessageIds, settings: UplinkSettings) {
+  private constructor(store: Store, ids: MessageIds, settings: UplinkSettings, counters?: UplinkCounters) {
     this.store = store;
     this.ids = ids;
-    this.uplink = new Uplink(settings, {
+    const host: UplinkHost = {
       store,
       ids,
       runS: () => performance.now() / 1000,
@@ -75,21 +81,29 @@ export class Rig {
         if (retained) this.retainedCommands.push(text);
       },
       log: (level, message, details) => this.lines.push({ level, message, details }),
-    });
+    };
+    this.uplink = new Uplink(settings, host, counters);
   }
 
-  static async make(broker: Broker, changes: Partial<UplinkSettings> & { store?: Store } = {}): Promise<Rig> {
-    const { store = localStore(new MemoryStore(roomyLimits, () => performance.now() / 1000)), ...rest } =
-      changes;
+  static async make(
+    broker: Broker,
+    changes: Partial<UplinkSettings> & { store?: Store; counters?: UplinkCounters } = {},
+  ): Promise<Rig> {
+    const {
+      store = localStore(new MemoryStore(roomyLimits, () => performance.now() / 1000)),
+      counters,
+      ...rest
+    } = changes;
     const { storeId, nextN } = await store.open();
-    return new Rig(store, new MessageIds(storeId, nextN), {
+    const settings: UplinkSettings = {
       site: 'north-weir',
       broker,
       asks: ['readings', 'acknowledge'],
       commandTopics: [],
       timing: fastTiming,
       ...rest,
-    });
+    };
+    return new Rig(store, new MessageIds(storeId, nextN), settings, counters);
   }
 
   async send(name: MessageClass, topic: string, body: Record<string, unknown> = {}): Promise<string> {

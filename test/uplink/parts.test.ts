@@ -5,7 +5,7 @@ import { describe, expect, it } from 'vitest';
 import { localStore } from '../../src/store/local-store.ts';
 import { MemoryStore } from '../../src/store/memory-store.ts';
 import { messageClasses, type Store } from '../../src/store/types.ts';
-import { type AskCounters, AskDispatcher } from '../../src/uplink/asks.ts';
+import { type AskCounters, AskDispatcher, noAsks } from '../../src/uplink/asks.ts';
 import { ByteLedger, type Meter } from '../../src/uplink/byte-ledger.ts';
 import { type Connection, PublishRefused } from '../../src/uplink/connection.ts';
 import { OutboxDrainer } from '../../src/uplink/outbox-drainer.ts';
@@ -145,11 +145,15 @@ describe('asks', () => {
   let nowS = 0;
   const make = (enabled = ['readings', 'note']) => {
     const answers: [string, Record<string, unknown>][] = [];
-    const asks = new AskDispatcher(enabled, {
-      answer: async (id, body) => void answers.push([id, body]),
-      log: () => undefined,
-      monotonicS: () => nowS,
-    });
+    const asks = new AskDispatcher(
+      enabled,
+      {
+        answer: async (id, body) => void answers.push([id, body]),
+        log: () => undefined,
+        monotonicS: () => nowS,
+      },
+      noAsks(),
+    );
     asks.handle('readings', () => ({ points: 3 }));
     const take = (verb: string, body: unknown, retained = false) =>
       asks.take(

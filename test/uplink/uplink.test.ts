@@ -198,6 +198,22 @@ for (const kind of kinds.filter(({ present }) => present)) {
       ]);
     });
 
+    it('counts on where another uplink left off', async () => {
+      const port = await kind.port();
+      const room = await join(port);
+      const first = await agentAt(port, kind.protocol);
+      await first.uplink.start();
+      await until(() => room.last(agentTopic)?.state === 'online', 'the agent to be online');
+      await room.client.publishAsync('forebay/north-weir/ask/shelve', '{"id":"ask-1"}', { qos: 1 });
+      await until(() => first.uplink.status().asks.refused === 1, 'the refusal');
+      await first.uplink.stop(500);
+      const second = await agentAt(port, kind.protocol, { counters: first.uplink.counters });
+      await second.uplink.start();
+      await second.online();
+      await until(() => second.uplink.status().connects === 2, 'the second connection');
+      expect(second.uplink.status().asks).toEqual({ done: 0, refused: 1, ignored: 0 });
+    });
+
     it('tells a command that the broker had kept from one that comes now', async () => {
       const port = await kind.port();
       const room = await join(port);
