@@ -151,4 +151,15 @@ describe('alarms under another plan', () => {
     expect(without.effects).toContainEqual({ kind: 'withdraw', topic: 'agent/alarm/node-2.foreign-node' });
     expect(without.effects).toContainEqual({ kind: 'row', key: `alarm:${key}`, row: null, urgent: true });
   });
+
+  it('make a machine unknown that comes on a link whose alarm stands, once the link is told again', () => {
+    const text = stationText(1883).replace(/ {2}- id: m4[\s\S]*?(?=alarms:)/, '');
+    const { state } = stepAlarms(planAlarms(stationOf(text)), EMPTY_STATE, linkLost, nextId);
+    const more = planAlarms(usual);
+    const { effects } = stepAlarms(more, replanAlarms(more, state).state, linkLost, nextId);
+    const published = effects.flatMap((effect) =>
+      effect.kind === 'publish' && effect.class === 'state' ? [[effect.topic, effect.payload.severity]] : [],
+    );
+    expect(published).toEqual([['m4/state', 3]]);
+  });
 });
