@@ -41,6 +41,8 @@ export interface SamplingHost {
 export interface LinkStanding {
   epoch: number;
   head: number;
+  /** Wall time when the newest sample came: a label. */
+  headMs: number;
   description: NodeDescription;
 }
 
@@ -105,7 +107,7 @@ export class LinkSampling {
 
   begin({ epoch, firstIndex, description }: EpochStart): void {
     this.#skippedBefore = this.skipped;
-    this.#standing = { epoch, head: firstIndex, description };
+    this.#standing = { epoch, head: firstIndex, headMs: this.#host.wallMs(), description };
     this.#feedAll(description, () => firstIndex);
   }
 
@@ -113,6 +115,7 @@ export class LinkSampling {
     const standing = this.#standing;
     if (!standing) return;
     standing.head = head;
+    standing.headMs = this.#host.wallMs();
     const oldest = head - Math.floor(this.#ringSeconds * standing.description.nominalRateHz);
     for (const fed of this.#points) {
       for (const { first, samples } of fed.schedule.due(head, oldest)) {

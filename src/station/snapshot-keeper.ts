@@ -20,7 +20,7 @@ import { type LinkSource, Making } from './snapshot-making.ts';
 
 export interface KeeperHost {
   station(): Station;
-  /** null: the link has no samples. */
+  /** null: the link has had no samples. */
   source(link: string): LinkSource | null;
   wallMs(): number;
   monotonicS(): number;
@@ -142,12 +142,16 @@ export class SnapshotKeeper {
    */
   async take(link: string, seconds: number, cause: string): Promise<Shelved> {
     const source = this.#host.source(link);
-    if (source === null) throw new RangeError(`link ${link} has no samples at present`);
+    if (source === null) throw new RangeError(`link ${link} has had no samples yet`);
+    if (source.trouble !== null) throw new RangeError(`link ${link} is not receiving: ${source.trouble}`);
     const machine = this.#machineOn(link);
     const first = source.head - Math.round(seconds * source.rate.hz);
     const making = this.#make(source, machine, first, source.head, 'asked', cause);
-    if (making === null || making.capture.samples === 0)
-      throw new RangeError('there is no room for it at present');
+    if (making === null) throw new RangeError('there is no room for it at present');
+    if (making.capture.samples === 0) {
+      this.#forget(making);
+      throw new RangeError(`link ${link} has had no samples yet`);
+    }
     const shelved = await this.#write(making);
     if (shelved === null) throw new RangeError('it could not be written; the log of the agent says why');
     return shelved;
@@ -220,9 +224,8 @@ export class SnapshotKeeper {
       this.#host.log('no memory for another snapshot', { cause });
       return null;
     }
-    const wallMs = this.#host.wallMs();
-    const id = nameOf(wallMs, machine?.id ?? source.link);
-    const making = new Making(this.#host.station(), source, first, until, { id, kind, cause, wallMs });
+    const id = nameOf(this.#host.wallMs(), machine?.id ?? source.link);
+    const making = new Making(this.#host.station(), source, first, until, { id, kind, cause });
     this.#making.set(id, making);
     this.#expect(making, source);
     return making;
@@ -324,7 +327,8 @@ export class SnapshotKeeper {
   #keepRun(machine: Machine, kind: 'start' | 'coast-down'): void {
     for (const link of new Set(machine.points.map((point) => point.link))) {
       const source = this.#host.source(link);
-      if (!source) continue;
+      // What a node sent before it fell silent shows no start.
+      if (!source || source.trouble !== null) continue;
       const rate = source.rate.hz;
       const first = source.head - Math.round(RUN_BEFORE_S * rate);
       this.#make(

@@ -11,6 +11,10 @@ export interface LinkSource extends CaptureSource {
   link: string;
   /** Index after the newest sample. */
   head: number;
+  /** Wall time when the newest sample came. */
+  headMs: number;
+  /** Why no samples come at present, so that the newest are old; null: they come. */
+  trouble: string | null;
   description: NodeDescription;
   rate: RateUsed;
 }
@@ -22,8 +26,6 @@ export interface MakingFacts {
   id: string;
   kind: SnapshotKind;
   cause: string;
-  /** Wall time of the sample at the head of the ring. */
-  wallMs: number;
 }
 
 export class Making {
@@ -47,7 +49,7 @@ export class Making {
     this.#channels = channelsOf(station, source);
     const indices = this.#channels.map(({ index }) => index);
     this.capture = new Capture(source, indices, first, until);
-    this.#startMs = facts.wallMs - ((source.head - this.capture.first) / source.rate.hz) * 1000;
+    this.#startMs = source.headMs - ((source.head - this.capture.first) / source.rate.hz) * 1000;
   }
 
   /** To be kept whether or not an alarm comes of it. */

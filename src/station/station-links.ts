@@ -136,14 +136,17 @@ export class StationLinks {
     }
   }
 
-  /** Where the samples of a link are; null: it has none. */
+  /** Where the samples of a link are; null: it has had none. */
   source(id: string): LinkSource | null {
     const joined = this.#joined.get(id);
     const standing = joined?.sampling.standing;
     if (!joined?.start || !standing) return null;
     const { memory, epoch, firstIndex: epochFirst, description } = joined.start;
-    const rate = usedRate(joined.link.rate, description.nominalRateHz);
-    return { link: id, memory, epoch, epochFirst, head: standing.head, description, rate };
+    const { head, headMs } = standing;
+    const { rate: estimate, condition } = joined.link;
+    const rate = usedRate(estimate, description.nominalRateHz);
+    const trouble = condition.kind === 'receiving' ? null : condition.why || condition.kind;
+    return { link: id, memory, epoch, epochFirst, head, headMs, trouble, description, rate };
   }
 
   health(): Record<string, LinkHealth> {

@@ -77,6 +77,22 @@ function sampling(station: Station): { link: LinkSampling; due: DueRecord[] } {
   return { link, due };
 }
 
+it('a link says when its newest sample came', () => {
+  let wallMs = 1000;
+  const link = new LinkSampling('node-1', usual, 20, new ToldValues([], () => 0), {
+    rate: () => null,
+    wallMs: () => wallMs,
+    due: () => undefined,
+    standing: () => null,
+  });
+  link.begin({ epoch: 1, firstIndex: 0, description, memory: new SharedArrayBuffer(0), because: 'first' });
+  wallMs = 5000;
+  link.advance(100);
+  wallMs = 60_000;
+  link.replan(usual);
+  expect(link.standing).toMatchObject({ head: 100, headMs: 5000 });
+});
+
 describe('a link that is kept', () => {
   const firsts = (due: readonly DueRecord[], key: string) =>
     due.filter(({ point }) => point.key === key).map(({ job }) => job.span.first);

@@ -64,7 +64,7 @@ beforeAll(async () => {
       flac: new FlacRoom(new URL('../../dist/snapshot/flac-worker.js', import.meta.url)),
       isMaking: (name) => name === 'growing',
       take: async (link) => {
-        if (link === 'node-2') throw new RangeError('link node-2 has no samples at present');
+        if (link === 'node-2') throw new RangeError('link node-2 has had no samples yet');
         return shelf.get(id)!;
       },
     },
@@ -169,7 +169,7 @@ describe('ask/snapshot and ask/snapshots', () => {
     expect(await ask('snapshot', { point: 'pump-1/motor-h', seconds: 2 })).toMatchObject({ snapshot: id });
     expect((await ask('snapshot', { machine: 'pump-1' })).snapshots).toHaveLength(1);
     await expect(ask('snapshot', { machine: 'pump-2' })).rejects.toThrow(
-      'link node-2 has no samples at present',
+      'link node-2 has had no samples yet',
     );
     await expect(ask('snapshot', { machine: 'pump-9' })).rejects.toThrow('there is no machine pump-9');
     await expect(ask('snapshot', { point: 'pump-1/x' })).rejects.toThrow('there is no point pump-1/x');

@@ -35,7 +35,15 @@ function rig(folder = mkdtempSync(join(tmpdir(), 'forebay-keeper-'))) {
   const station = stationOf(text.replace('FOLDER', folder));
   const ring = new RingWriter(4, 25 * rateHz);
   ring.beginEpoch(1, 0);
-  const state = { epoch: 1, seconds: 0, running: null as boolean | null, unacknowledged: new Set<string>() };
+  const state = {
+    epoch: 1,
+    seconds: 0,
+    headS: 0,
+    trouble: null as string | null,
+    running: null as boolean | null,
+    unacknowledged: new Set<string>(),
+  };
+  const wallMs = (seconds: number) => Date.parse('2026-03-02T10:15:30Z') + seconds * 1000;
   const channels = ['h', 'v', 'a', 'tach'].map((name) => ({
     name,
     unit: name === 'tach' ? ('logic' as const) : ('g' as const),
@@ -57,11 +65,13 @@ function rig(folder = mkdtempSync(join(tmpdir(), 'forebay-keeper-'))) {
               epoch: state.epoch,
               epochFirst: 0,
               head: ring.head,
+              headMs: wallMs(state.headS),
+              trouble: state.trouble,
               description,
               rate: { hz: rateHz, source: 'nominal', ppm: null },
             }
           : null,
-      wallMs: () => Date.parse('2026-03-02T10:15:30Z') + state.seconds * 1000,
+      wallMs: () => wallMs(state.seconds),
       monotonicS: () => state.seconds,
       runS: () => state.seconds,
       clock: () => 'synchronised',
@@ -80,6 +90,7 @@ function rig(folder = mkdtempSync(join(tmpdir(), 'forebay-keeper-'))) {
         ring.append(planar, rateHz, rateHz);
       }
       state.seconds++;
+      if (samples) state.headS = state.seconds;
       keeper.tick();
     }
   };
@@ -226,6 +237,49 @@ describe('the keeper of snapshots', () => {
       ['start', 'start of pump-1'],
       ['coast-down', 'coast-down of pump-1'],
     ]);
+  });
+
+  it('takes the newest samples on demand, but none of a node that is not heard', async () => {
+    const { keeper, state, pass, files } = rig();
+    await expect(keeper.take('node-1', 5, 'asked')).rejects.toThrow('link node-1 has had no samples yet');
+    await expect(keeper.take('node-2', 5, 'asked')).rejects.toThrow('link node-2 has had no samples yet');
+    pass(20);
+    const { tags, frames } = await keeper.take('node-1', 5, 'asked');
+    expect(frames).toBe(5 * rateHz);
+    expect(tags).toMatchObject({ kind: 'asked', firstIndex: 15 * rateHz, start: '2026-03-02T10:15:45.000Z' });
+    pass(41, false);
+    state.trouble = 'no bytes for 3 s';
+    await expect(keeper.take('node-1', 5, 'asked')).rejects.toThrow(
+      'link node-1 is not receiving: no bytes for 3 s',
+    );
+    pass(2, false);
+    expect(files()).toHaveLength(1);
+    expect(keeper.counters()).toMatchObject({ kept: 1, making: 0, lost: 0 });
+  });
+
+  it('dates samples by when they came, however late they are frozen', async () => {
+    const { keeper, worker, pass, tell } = rig();
+    pass(40);
+    pass(8, false);
+    tell('begin', 'pump-1/h.zone');
+    const id = keeper.snapshotOf('pump-1/h.zone', 'unacknowledged')!;
+    await keeper.stop();
+    await worker.idle();
+    expect(keeper.shelf.get(id)!.tags).toMatchObject({
+      firstIndex: 30 * rateHz,
+      start: '2026-03-02T10:16:00.000Z',
+    });
+  });
+
+  it('keeps no start of a node that is not heard', async () => {
+    const { keeper, state, worker, pass } = rig();
+    state.running = false;
+    pass(30);
+    state.trouble = 'no bytes for 3 s';
+    state.running = true;
+    pass(30, false);
+    await worker.idle();
+    expect(keeper.counters()).toMatchObject({ kept: 0, making: 0, lost: 0 });
   });
 
   it('remembers across a restart which waveform an alarm named', async () => {

@@ -308,6 +308,9 @@ describe('the waveform of an alarm', () => {
   }, 60_000);
 
   it('is taken on demand, listed, and refused with a plain reason', async () => {
+    await expect(pullCommand(options(join(agent.folder, 'old.flac'), { point: 'pump-1/a' }))).rejects.toThrow(
+      'refused by the station: link node-1 is not receiving: no bytes for 3 s',
+    );
     await sensor.begin();
     await sleep(2500);
     const file = join(agent.folder, 'now.flac');
