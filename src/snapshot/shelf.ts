@@ -3,7 +3,7 @@
  * snapshots of alarms that nobody has acknowledged go last. Age is run time of the gateway, since its clock may jump.
  */
 
-import { closeSync, mkdirSync, openSync, readdirSync, readSync, rmSync, statSync } from 'node:fs';
+import { closeSync, existsSync, mkdirSync, openSync, readdirSync, readSync, rmSync, statSync } from 'node:fs';
 import { join } from 'node:path';
 import { readFlacHead } from './flac-head.ts';
 import { WRITING } from './flac-write.ts';
@@ -30,6 +30,7 @@ export interface ShelfHost {
   needed(id: string): boolean;
 }
 
+const EXTENSION = '.flac';
 const HEAD_BYTES = 65_536;
 const WEEK_S = 7 * 86_400;
 /** Of the starts of a machine, and of its coast-downs, so many of the newest are kept, and the last of each week. */
@@ -55,7 +56,7 @@ export class Shelf {
   }
 
   pathOf(id: string): string {
-    return join(this.#folder, `${id}.flac`);
+    return pathIn(this.#folder, id);
   }
 
   /** Oldest first. */
@@ -71,26 +72,43 @@ export class Shelf {
     return this.#kept.get(id) ?? null;
   }
 
-  /** A snapshot has been written; others may have to go for it. */
+  /**
+   * A snapshot has been written; others may have to go for it.
+   * @throws where it cannot be read back, or is more than all may take together: then none goes but it.
+   */
   add(id: string): Shelved {
-    const shelved = this.#read(id);
-    this.#kept.set(id, shelved);
-    this.tidy();
-    return shelved;
+    try {
+      const shelved = readShelved(this.#folder, id);
+      const { bytes } = this.#limits;
+      if (shelved.bytes > bytes)
+        throw new RangeError(
+          `it takes ${megabytes(shelved.bytes)}, all together may take ${megabytes(bytes)}`,
+        );
+      this.#kept.set(id, shelved);
+      this.tidy(id);
+      return shelved;
+    } catch (error) {
+      rmSync(this.pathOf(id), { force: true });
+      throw error;
+    }
   }
 
-  /** Removes what is over the bounds. */
-  tidy(): void {
+  /** Removes what is over the bounds. @param added the one that the others make room for. */
+  tidy(added: string | null = null): void {
     const nowS = this.#host.runS();
     for (const old of this.all) if (nowS - old.tags.takenRunS > this.#limits.ageS) this.#drop(old);
-    for (const run of supernumeraryRuns(this.all)) this.#drop(run);
-    const going = this.#inOrderOfGoing();
-    while (
-      this.#kept.size > this.#limits.number ||
-      (this.bytes > this.#limits.bytes && this.#kept.size > 0)
-    ) {
-      this.#drop(going.shift()!);
+    for (const run of supernumeraryRuns(this.#plainRuns())) if (run.id !== added) this.#drop(run);
+    for (const next of this.#inOrderOfGoing()) {
+      if (this.#kept.size <= this.#limits.number && this.bytes <= this.#limits.bytes) return;
+      if (next.id !== added) this.#drop(next);
     }
+  }
+
+  /** Starts and coast-downs that nobody waits for. */
+  #plainRuns(): Shelved[] {
+    return this.all.filter(
+      ({ id, tags: { kind } }) => (kind === 'start' || kind === 'coast-down') && !this.#host.needed(id),
+    );
   }
 
   #inOrderOfGoing(): Shelved[] {
@@ -110,43 +128,73 @@ export class Shelf {
       this.cleaned++;
       return;
     }
-    if (!name.endsWith('.flac')) return;
-    const id = name.slice(0, -'.flac'.length);
+    const id = idOf(name);
+    if (id === null) return;
     try {
-      this.#kept.set(id, this.#read(id));
+      this.#kept.set(id, readShelved(this.#folder, id));
     } catch {
       rmSync(join(this.#folder, name), { force: true });
       this.cleaned++;
     }
   }
+}
 
-  /** From the head of the file alone. */
-  #read(id: string): Shelved {
-    const path = this.pathOf(id);
-    const fd = openSync(path, 'r');
+/**
+ * Run time of the newest snapshot in a folder, in seconds; 0: there is none. Changes nothing, so that it may be asked
+ * before the folder is this agent's.
+ */
+export function newestRunS(folder: string): number {
+  const names = existsSync(folder) ? readdirSync(folder) : [];
+  const times = names.map((name) => {
+    const id = name.startsWith(WRITING) ? null : idOf(name);
     try {
-      const head = Buffer.alloc(HEAD_BYTES);
-      const length = readSync(fd, head, 0, HEAD_BYTES, 0);
-      const { format, comments } = readFlacHead(head.subarray(0, length), (what) => {
-        throw new RangeError(`${path} ${what}`);
-      });
-      const tags = tagsOf(comments, format.channels);
-      if (tags === null || tags.id !== id) throw new RangeError(`${path} is not the snapshot of its name`);
-      return { id, path, bytes: statSync(path).size, frames: format.frames, tags };
-    } finally {
-      closeSync(fd);
+      return id === null ? 0 : readShelved(folder, id).tags.takenRunS;
+    } catch {
+      return 0;
     }
+  });
+  return Math.max(0, ...times);
+}
+
+function pathIn(folder: string, id: string): string {
+  return join(folder, `${id}${EXTENSION}`);
+}
+
+/** null: no file of a snapshot is called so. */
+function idOf(name: string): string | null {
+  return name.endsWith(EXTENSION) ? name.slice(0, -EXTENSION.length) : null;
+}
+
+/** From the head of the file alone. */
+function readShelved(folder: string, id: string): Shelved {
+  const path = pathIn(folder, id);
+  const fd = openSync(path, 'r');
+  try {
+    const head = Buffer.alloc(HEAD_BYTES);
+    const length = readSync(fd, head, 0, HEAD_BYTES, 0);
+    const { format, comments } = readFlacHead(head.subarray(0, length), (what) => {
+      throw new RangeError(`${path} ${what}`);
+    });
+    const tags = tagsOf(comments, format.channels);
+    if (tags === null || tags.id !== id) throw new RangeError(`${path} is not the snapshot of its name`);
+    return { id, path, bytes: statSync(path).size, frames: format.frames, tags };
+  } finally {
+    closeSync(fd);
   }
 }
 
-/** Starts and coast-downs beyond the newest three of a machine and the last of each week. */
+function megabytes(bytes: number): string {
+  return `${(bytes / 1e6).toPrecision(3)} MB`;
+}
+
+/** Those beyond the newest three of a machine, on each of its nodes, and the last of each week. */
 function supernumeraryRuns(all: readonly Shelved[]): Shelved[] {
   const groups = new Map<string, Shelved[]>();
-  for (const shelved of all) {
-    const { kind, machines } = shelved.tags;
-    if (kind !== 'start' && kind !== 'coast-down') continue;
-    const key = `${kind} ${machines.join(' ')}`;
-    groups.set(key, [...(groups.get(key) ?? []), shelved]);
+  for (const run of all) {
+    const { kind, machines, link, cause } = run.tags;
+    // A node may serve several machines: the cause names the one that started.
+    const key = [kind, ...machines, link, cause].join(' ');
+    groups.set(key, [...(groups.get(key) ?? []), run]);
   }
   return [...groups.values()].flatMap((runs) => {
     const week = ({ tags }: Shelved) => Math.floor(tags.takenRunS / WEEK_S);

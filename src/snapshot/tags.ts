@@ -153,7 +153,7 @@ export function tagsOf(comments: Comments, channels: number): SnapshotTags | nul
     cause: comments.get('CAUSE') ?? '',
     kind: oneOf('KIND', KINDS),
     alarms: words('ALARMS'),
-    takenRunS: number('TAKEN_RUN_S', (value) => value >= 0),
+    takenRunS: number('TAKEN_RUN_S', (value) => Number.isFinite(value) && value >= 0),
     version: text('AGENT_VERSION'),
     config: text('CONFIG'),
     gaps: words('GAPS').map(gapOf),

@@ -7,6 +7,7 @@ import { planAlarms } from '../alarm/plan.ts';
 import { ForebayError } from '../config/errors.ts';
 import type { Point, Station } from '../config/station.ts';
 import type { Reading } from '../measure/reading.ts';
+import { newestRunS } from '../snapshot/shelf.ts';
 import { storeLimits } from '../store/limits.ts';
 import type { OpenReport } from '../store/types.ts';
 import { WorkerStore } from '../store/worker-store.ts';
@@ -29,7 +30,7 @@ import { needsRestart, sameUplink, uplinkSettings } from './reload.ts';
 import { riseInputs } from './rises.ts';
 import type { ServiceManager } from './service-manager.ts';
 import { SnapshotAsks } from './snapshot-asks.ts';
-import { SnapshotKeeper } from './snapshot-keeper.ts';
+import { SnapshotKeeper, snapshotFolder } from './snapshot-keeper.ts';
 import { answerAsks } from './station-asks.ts';
 import { ringSecondsOf, StationLinks, setupOf } from './station-links.ts';
 import { StoreWatch } from './store-watch.ts';
@@ -142,8 +143,9 @@ export class Agent {
 
   /** @throws ForebayError where the storage is locked or unwritable or the embedded broker's port is busy. */
   async start(): Promise<void> {
-    mkdirSync(this.#station.storage.directory, { recursive: true });
-    const report = await this.#watch.open();
+    const { directory } = this.#station.storage;
+    mkdirSync(directory, { recursive: true });
+    const report = await this.#watch.open(newestRunS(snapshotFolder(directory)));
     this.#clockSays = await clockState();
     const parts = await this.#assemble(report);
     this.#parts = parts;

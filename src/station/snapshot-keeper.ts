@@ -50,6 +50,11 @@ const MAX_AGE_S = 365 * 86_400;
 /** Of the space that the agent may have. */
 const SHARE_OF_STORAGE = 0.25;
 
+/** Where the snapshots lie. @param directory of the agent's storage. */
+export function snapshotFolder(directory: string): string {
+  return join(directory, 'snapshots');
+}
+
 export class SnapshotKeeper {
   readonly shelf: Shelf;
   readonly flac: FlacRoom;
@@ -74,7 +79,7 @@ export class SnapshotKeeper {
     this.#host = host;
     this.flac = flac;
     const { directory, maxMb } = host.station().storage;
-    const folder = join(directory, 'snapshots');
+    const folder = snapshotFolder(directory);
     const limits = { number: MAX_NUMBER, bytes: maxMb * 1e6 * SHARE_OF_STORAGE, ageS: MAX_AGE_S };
     this.shelf = new Shelf(folder, limits, {
       runS: () => host.runS(),

@@ -47,8 +47,9 @@ export class StoreWatch {
     return this.#says;
   }
 
-  async open(): Promise<OpenReport> {
-    const report = await this.#host.store.open();
+  /** @param leastRunS run time that what lies beside the database has seen. */
+  async open(leastRunS: number): Promise<OpenReport> {
+    const report = await this.#host.store.open(leastRunS);
     this.#runSAtOpen = report.runS;
     this.#openedS = this.#host.monotonicS();
     return report;
@@ -76,7 +77,7 @@ export class StoreWatch {
     this.#host.log.error('the store worker ended', error);
     while (!this.#givenUp) {
       try {
-        const { setAside } = await this.open();
+        const { setAside } = await this.open(this.runS);
         // A fresh database knows nothing of the alarms that stand, so neither may the agent.
         if (setAside) this.#giveUp(new ForebayError('store.broken', setAside.reason));
         return;

@@ -52,7 +52,7 @@ export class Database implements StoreEngine {
     this.#monotonicS = options.monotonicS ?? (() => Number(process.hrtime.bigint()) / 1e9);
   }
 
-  open(): OpenReport {
+  open(leastRunS = 0): OpenReport {
     if (this.#opened !== null) throw new Error('the store is open already');
     const { directory, maxMb, limits } = this.#options;
     const lock = lockDirectory(directory);
@@ -62,7 +62,7 @@ export class Database implements StoreEngine {
       db = file.db;
       migrate(db, drawStoreId);
       const meta = (key: string) => db!.prepare('SELECT value FROM meta WHERE key = ?').pluck().get(key);
-      this.#runAtOpenS = Number(meta('run_s'));
+      this.#runAtOpenS = Math.max(Number(meta('run_s')), leastRunS);
       this.#originS = this.#monotonicS();
       this.#opened = { db, lock, outbox: new Outbox(db, limits), records: new Records(db, limits) };
       const report: OpenReport = {

@@ -3,7 +3,7 @@ import type { Commit, OpenReport, Store, StoreEngine } from './types.ts';
 /** A store in this thread, for a replay, a command that reads, and tests. */
 export function localStore(engine: StoreEngine): Store {
   return {
-    open: async (): Promise<OpenReport> => engine.open(),
+    open: async (leastRunS): Promise<OpenReport> => engine.open(leastRunS),
     commit: async (commit: Commit) => engine.commit(commit),
     batch: async (query) => engine.batch(query),
     accept: async (ns) => engine.accept(ns),

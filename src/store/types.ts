@@ -173,7 +173,7 @@ export interface StoreLimits {
 
 /** The same operations, synchronous: SQLite in the worker, and plain memory for a replay. */
 export interface StoreEngine {
-  open(): OpenReport;
+  open(leastRunS?: number): OpenReport;
   commit(commit: Commit): void;
   batch(query: BatchQuery): OutboxRow[];
   accept(ns: readonly number[]): void;
@@ -193,7 +193,8 @@ export interface StoreEngine {
 }
 
 export interface Store {
-  open(): Promise<OpenReport>;
+  /** @param leastRunS run time goes on from there where the database has seen less, as a fresh one has. */
+  open(leastRunS?: number): Promise<OpenReport>;
   /** Durable when it resolves. Alarm states, journal entries and alarm messages go to disk at once, the rest within 0.5 s. */
   commit(commit: Commit): Promise<void>;
   /** What to send next: by class, then by number; at most one row a topic, the oldest of it. */

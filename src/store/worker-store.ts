@@ -45,7 +45,7 @@ export class WorkerStore implements Store {
     this.#maxPending = options.maxPending ?? 512;
   }
 
-  async open(): Promise<OpenReport> {
+  async open(leastRunS = 0): Promise<OpenReport> {
     if (this.#worker !== null) throw new Error('the store is open already');
     const { directory, maxMb, limits } = this.#options;
     const worker = new Worker(this.#options.workerUrl ?? new URL('./store-worker.js', import.meta.url), {
@@ -60,7 +60,7 @@ export class WorkerStore implements Store {
     });
     worker.on('exit', () => this.#ended(worker, cause));
     try {
-      return (await this.#ask('open', [])) as OpenReport;
+      return (await this.#ask('open', [leastRunS])) as OpenReport;
     } catch (error) {
       this.#closing = true;
       await worker.terminate();

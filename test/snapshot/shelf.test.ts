@@ -4,7 +4,7 @@ import { join } from 'node:path';
 import { afterEach, describe, expect, it } from 'vitest';
 import { writeCut, writeSnapshot } from '../../src/snapshot/flac-write.ts';
 import { openRecording } from '../../src/snapshot/recording.ts';
-import { Shelf, type ShelfLimits } from '../../src/snapshot/shelf.ts';
+import { newestRunS, Shelf, type ShelfLimits } from '../../src/snapshot/shelf.ts';
 import type { SnapshotTags } from '../../src/snapshot/tags.ts';
 import { someTags } from '../support/tagged.ts';
 
@@ -96,6 +96,67 @@ describe('the shelf of snapshots', () => {
     }
     // Weeks of run time end with days 6 and 13.
     expect(ids(shelf)).toEqual(['stop', 'other', 's6', 's13', 's17', 's18', 's19']);
+  });
+
+  it('counts the starts of each machine on each node, and keeps those of unacknowledged alarms beside', async () => {
+    const { needed, now, open, put } = rig();
+    const shelf = open();
+    needed.add('a0');
+    for (let k = 0; k < 5; k++) {
+      for (const [id, link, cause] of [
+        ['a', 'node-1', 'start of pump-1'],
+        ['b', 'node-2', 'start of pump-1'],
+        ['c', 'node-2', 'start of pump-2'],
+      ] as const) {
+        now.runS += 10;
+        await put(shelf, `${id}${k}`, { kind: 'start', machines: ['pump-1', 'pump-2'], link, cause });
+      }
+    }
+    expect(ids(shelf)).toEqual(['a0', 'a2', 'b2', 'c2', 'a3', 'b3', 'c3', 'a4', 'b4', 'c4']);
+  });
+
+  it('never gives up the one that was just added, whatever the others are', async () => {
+    const { needed, now, open, put } = rig({ number: 3 });
+    // Taken under a database that has gone, whose run time was far ahead.
+    now.runS = 1e6;
+    const before = open();
+    for (const id of ['a', 'b', 'c']) {
+      needed.add(id);
+      now.runS += 10;
+      await put(before, id);
+    }
+    now.runS = 10;
+    const shelf = open();
+    const asked = await put(shelf, 'd', { kind: 'asked' });
+    expect(existsSync(asked.path)).toBe(true);
+    expect(ids(shelf)).toEqual(['d', 'b', 'c']);
+  });
+
+  it('refuses one that is more than all may take, and gives up none for it', async () => {
+    const probe = rig();
+    const { bytes } = await probe.put(probe.open(), 'a');
+    const { folder, open, put } = rig({ bytes: 1.5 * bytes });
+    const shelf = open();
+    await put(shelf, 'a');
+    const alarms = Array.from({ length: 500 }, (_, n) => `pump-1/h.rule-${n}`);
+    await expect(put(shelf, 'big', { alarms })).rejects.toThrow(/it takes .* MB, all together may take/);
+    expect(ids(shelf)).toEqual(['a']);
+    expect(readdirSync(folder)).toEqual(['a.flac']);
+  });
+
+  it('knows the newest run time that it has seen, without changing anything', async () => {
+    const { folder, now, open, put } = rig();
+    expect(newestRunS(join(folder, 'not-there'))).toBe(0);
+    expect(newestRunS(folder)).toBe(0);
+    const shelf = open();
+    for (const runS of [5000, 9000, 7000]) {
+      now.runS = runS;
+      await put(shelf, `s${runS}`);
+    }
+    writeFileSync(join(folder, '.writing-b.flac'), 'half of it');
+    writeFileSync(join(folder, 'c.flac'), 'fLaC');
+    expect(newestRunS(folder)).toBe(9000);
+    expect(readdirSync(folder)).toHaveLength(5);
   });
 });
 

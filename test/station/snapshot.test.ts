@@ -4,11 +4,12 @@
  * FOREBAY_LONG=1 fetches the whole snapshot of 15 s over the thin link instead of three seconds of it.
  */
 import { spawnSync } from 'node:child_process';
-import { existsSync, readdirSync, readFileSync, writeFileSync } from 'node:fs';
+import { existsSync, readdirSync, readFileSync, rmSync, writeFileSync } from 'node:fs';
 import { join } from 'node:path';
 import mqtt, { type MqttClient } from 'mqtt';
 import { afterAll, beforeAll, describe, expect, it } from 'vitest';
 import { type PullOptions, pullCommand } from '../../src/cli/pull.ts';
+import { writeSnapshot } from '../../src/snapshot/flac-write.ts';
 import { openRecording } from '../../src/snapshot/recording.ts';
 import { payloadSchemas } from '../../src/uplink/payload-schemas.ts';
 import { AgentProcess, command } from '../support/agent.ts';
@@ -16,6 +17,7 @@ import { startAedes, type TestBroker } from '../support/broker.ts';
 import { haveMosquitto, Mosquitto } from '../support/mosquitto.ts';
 import { FaultyLink, sleep } from '../support/proxy.ts';
 import type { SentNode } from '../support/sender.ts';
+import { someTags } from '../support/tagged.ts';
 import { TcpNode } from '../support/tcp-node.ts';
 
 const rateHz = 40_960;
@@ -364,5 +366,25 @@ describe('the waveform of an alarm', () => {
     await expect(pullCommand(options(join(agent.folder, 'off.flac'), { snapshot }))).rejects.toMatchObject({
       code: 'pull.offline',
     });
+  }, 60_000);
+
+  it('ages on where the database broke: what is taken then is the newest', async () => {
+    const folder = join(agent.folder, 'state/snapshots');
+    const id = '20260302T101530Z-pump-1-0001';
+    const tags = { ...someTags, id, takenRunS: 3e6 };
+    const counts = someTags.channels.map(() => new Int32Array(500));
+    await writeSnapshot({ path: join(folder, `${id}.flac`), counts, tags });
+    for (const name of ['forebay.db-wal', 'forebay.db-shm'])
+      rmSync(join(agent.folder, 'state', name), { force: true });
+    writeFileSync(join(agent.folder, 'state/forebay.db'), 'no database');
+    await agent.start();
+    await until('the agent to answer', () => newest('agent')?.state === 'online', 20);
+    await sleep(2500);
+    const file = join(agent.folder, 'aged.flac');
+    expect(await pullCommand(options(file, { point: 'pump-1/a', seconds: 1 }))).toBe(0);
+    const { tags: taken } = openRecording(file);
+    expect(taken!.takenRunS).toBeGreaterThanOrEqual(3e6);
+    const list = (await ask('snapshots', {})).snapshots as Record<string, unknown>[];
+    expect(list.slice(0, 2).map((line) => line.snapshot)).toEqual([taken!.id, id]);
   }, 60_000);
 });

@@ -36,6 +36,31 @@ describe('a database that takes nothing', () => {
     expect(told).toEqual(['no room', 'failing', 'ok', null]);
   });
 
+  it('is opened anew without running back in time', async () => {
+    vi.useRealTimers();
+    const opened: number[] = [];
+    let nowS = 10;
+    const watch = new StoreWatch({
+      store: {
+        open: async (leastRunS = 0) => {
+          opened.push(leastRunS);
+          // The last commit was long ago.
+          return { storeId: 'abcdef', nextN: 1, runS: Math.max(400, leastRunS) };
+        },
+      },
+      log: new Log(() => 0, { write: () => undefined }),
+      monotonicS: () => nowS,
+      disk: () => undefined,
+      storage: () => undefined,
+      fatal: () => undefined,
+    });
+    await watch.open(500);
+    nowS = 70;
+    await watch.reopen(new Error('killed'));
+    expect(opened).toEqual([500, 560]);
+    expect(watch.runS).toBe(560);
+  });
+
   it('is no news to SCADA when it was a hiccup', () => {
     const { told, watch } = made();
     watch.failed(new Error('busy'));

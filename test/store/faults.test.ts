@@ -45,6 +45,18 @@ const codeOf = (work: () => unknown): string => {
 };
 
 describe('the database file', () => {
+  it('goes on with the run time that is known beside it, where it has seen less', () => {
+    const directory = makeFolder();
+    const opened = (leastRunS: number) => {
+      const database = new Database({ directory, maxMb: 16, limits: roomyLimits, monotonicS: () => 0 });
+      const { runS } = database.open(leastRunS);
+      database.commit({ nextN: 1 });
+      database.close();
+      return runS;
+    };
+    expect([opened(0), opened(5000), opened(0), opened(100)]).toEqual([0, 5000, 5000, 5000]);
+  });
+
   it('is opened with WAL, full synchronous and incremental vacuum, at the first and at every later time', () => {
     const directory = makeFolder();
     for (let time = 0; time < 2; time++) {
