@@ -22,13 +22,13 @@ export class Capture {
   /** Index of the first sample; later than asked where the ring held no more. */
   readonly first: number;
   readonly epoch: number;
-  readonly #reader: RingReader;
+  /** null: nothing more will come. It is let go of then, for its link may be gone and the ring is large. */
+  #reader: RingReader | null;
   readonly #channels: readonly number[];
   readonly #gaps: Gap[] = [];
   #counts: Int32Array[];
   #samples = 0;
   #until: number;
-  #cut = false;
 
   /**
    * @param channels of the ring, in the order in which they are wanted.
@@ -36,9 +36,10 @@ export class Capture {
    * @param until index after the last.
    */
   constructor(source: CaptureSource, channels: readonly number[], first: number, until: number) {
-    this.#reader = new RingReader(source.memory);
+    const reader = new RingReader(source.memory);
+    this.#reader = reader;
     this.epoch = source.epoch;
-    const { head, samples } = this.#reader;
+    const { head, samples } = reader;
     const oldest = Math.max(source.epochFirst, head - samples + MARGIN_SAMPLES);
     this.first = Math.max(first, Math.min(oldest, head), 0);
     this.#channels = channels;
@@ -47,13 +48,18 @@ export class Capture {
     this.advance();
   }
 
+  /** Index after the last sample that it holds, or waits for. */
   get until(): number {
-    return this.#until;
+    return this.done ? this.first + this.#samples : this.#until;
   }
 
   /** Samples per channel so far. */
   get samples(): number {
     return this.#samples;
+  }
+
+  get channels(): number {
+    return this.#channels.length;
   }
 
   get bytes(): number {
@@ -62,7 +68,7 @@ export class Capture {
 
   /** Nothing more will come. */
   get done(): boolean {
-    return this.#cut || this.first + this.#samples >= this.#until;
+    return this.#reader === null;
   }
 
   /** Wants more at the end; without effect once it is done. */
@@ -78,24 +84,25 @@ export class Capture {
 
   /** Copies what has come. */
   advance(): void {
-    if (this.done) return;
     const reader = this.#reader;
+    if (reader === null) return;
     const from = this.first + this.#samples;
     const n = Math.min(reader.head, this.#until) - from;
     // A head before the stretch belongs to another epoch.
-    if (n === 0 && reader.epoch === this.epoch) return;
-    const ok = n > 0 && this.#counts.every((counts, i) => this.#readOk(this.#channels[i]!, from, n, counts));
-    if (!ok) {
-      this.#cut = true;
-      return;
+    if (n === 0 && from < this.#until && reader.epoch === this.epoch) return;
+    const read = (counts: Int32Array, i: number) =>
+      reader.read(this.epoch, this.#channels[i]!, from, n, counts.subarray(this.#samples)) === 'ok';
+    const ok = n > 0 && this.#counts.every(read);
+    if (ok) {
+      this.#noteGaps(reader, from, n);
+      this.#samples += n;
     }
-    this.#noteGaps(from, n);
-    this.#samples += n;
+    if (!ok || from + n >= this.#until) this.cut();
   }
 
   /** Takes what there is: no more is waited for. */
   cut(): void {
-    this.#cut = true;
+    this.#reader = null;
   }
 
   /** The counts of each channel, handed over. */
@@ -104,23 +111,18 @@ export class Capture {
       channel.length === this.#samples ? channel : channel.slice(0, this.#samples),
     );
     this.#counts = [];
-    this.#cut = true;
+    this.cut();
     return { counts, gaps: this.#gaps };
   }
 
-  #readOk(channel: number, from: number, n: number, counts: Int32Array): boolean {
-    const into = counts.subarray(this.#samples, this.#samples + n);
-    return this.#reader.read(this.epoch, channel, from, n, into) === 'ok';
-  }
-
   /** The ring tells how many are missing within a stretch; halving finds which. */
-  #noteGaps(from: number, n: number): void {
-    const missing = this.#reader.missingWithin(from, n);
+  #noteGaps(reader: RingReader, from: number, n: number): void {
+    const missing = reader.missingWithin(from, n);
     if (missing === 0) return;
     if (missing < n) {
       const half = n >> 1;
-      this.#noteGaps(from, half);
-      this.#noteGaps(from + half, n - half);
+      this.#noteGaps(reader, from, half);
+      this.#noteGaps(reader, from + half, n - half);
       return;
     }
     const at = from - this.first;

@@ -12,11 +12,12 @@ import type { AlarmEffect } from '../alarm/effects.ts';
 import type { Machine, Point, Station } from '../config/station.ts';
 import { planPoint } from '../measure/plan.ts';
 import type { Reading } from '../measure/reading.ts';
+import type { Capture } from '../snapshot/capture.ts';
 import { FlacRoom } from '../snapshot/flac-room.ts';
 import { Shelf, type Shelved } from '../snapshot/shelf.ts';
 import type { ShaftTag, SnapshotKind, SnapshotTags } from '../snapshot/tags.ts';
 import { SnapshotIndex } from './snapshot-index.ts';
-import { type LinkSource, Making } from './snapshot-making.ts';
+import { holds, type LinkSource, Making, type Stretch } from './snapshot-making.ts';
 
 export interface KeeperHost {
   station(): Station;
@@ -43,7 +44,7 @@ const LONGEST_S = 30;
 const LATE_S = 10;
 /** Stretches frozen for alarms that may yet come of them. */
 const MAX_FROZEN_BYTES = 48 * 1024 * 1024;
-/** Stretches written, for alarms that follow to refer to. */
+/** Stretches written, remembered for alarms that follow to refer to. */
 const MAX_RECENT = 16;
 const MAX_NUMBER = 200;
 const MAX_AGE_S = 365 * 86_400;
@@ -67,7 +68,7 @@ export class SnapshotKeeper {
   readonly #making = new Map<string, Making>();
   readonly #dueS = new Map<string, number>();
   readonly #writing = new Map<string, Promise<Shelved | null>>();
-  readonly #recent: Making[] = [];
+  #recent: Stretch[] = [];
   /** Alarms over their limit, and the stretch that holds their first reading. */
   readonly #pending = new Map<string, string>();
   readonly #shafts = new Map<string, ShaftTag>();
@@ -126,7 +127,7 @@ export class SnapshotKeeper {
     if (state === 'unacknowledged')
       this.#refer(alarm, this.#pending.get(alarm) ?? this.#pendingOfGroup(alarm));
     const id = this.#index.get(alarm);
-    return id !== null && (this.isMaking(id) || this.shelf.get(id) !== null) ? id : null;
+    return id !== null && this.#isThere(id) ? id : null;
   }
 
   /** Once a second. */
@@ -182,28 +183,47 @@ export class SnapshotKeeper {
     const { first, end } = this.#recordOf(found.machine, found.point, source, reading);
     const rate = source.rate.hz;
     const until = end + Math.round(AFTER_S * rate);
-    const making = [...this.#making.values()].find(
-      (one) => one.holds(source, first, end) || one.reaches(source, first),
-    );
+    const making = this.#growing(source, first, end, until);
     if (making) {
-      making.capture.extend(Math.min(until, making.capture.first + Math.round(LONGEST_S * rate)));
       this.#expect(making, source);
-      this.#hold(alarm, making.id, making);
+      this.#hold(alarm, making);
       return;
     }
-    const recent = this.#recent.find((one) => one.holds(source, first, end));
+    const recent = this.#recent.find((one) => holds(one, source, first, end) && this.#isThere(one.id));
     if (recent) {
-      this.#hold(alarm, recent.id, recent);
+      this.#pending.set(alarm, recent.id);
       return;
     }
     const from = Math.min(first, end - Math.round(BEFORE_S * rate));
     const made = this.#make(source, found.machine, from, until, 'alarm', `alarm ${alarm}`);
-    if (made) this.#hold(alarm, made.id, made);
+    if (made) this.#hold(alarm, made);
   }
 
-  #hold(alarm: string, id: string, making: Making): void {
-    this.#pending.set(alarm, id);
+  /** One that holds the record [first, end), or does now that it is longer; up to `until` where it may. */
+  #growing(source: LinkSource, first: number, end: number, until: number): Making | undefined {
+    const longest = Math.max(Math.round(LONGEST_S * source.rate.hz), 2 * (end - first));
+    const grow = ({ capture }: Making) => this.#extend(capture, Math.min(until, capture.first + longest));
+    const makings = [...this.#making.values()];
+    const holding = makings.find(({ stretch }) => holds(stretch, source, first, end));
+    if (holding) grow(holding);
+    return holding ?? makings.find((one) => one.reaches(source, first) && grow(one) >= end);
+  }
+
+  /** As far as there is memory for it. @returns index after the last sample that it then holds. */
+  #extend(capture: Capture, until: number): number {
+    const longerBytes = (until - capture.until) * capture.channels * 4;
+    if (this.#frozenBytes() + longerBytes <= MAX_FROZEN_BYTES) capture.extend(until);
+    return capture.until;
+  }
+
+  #hold(alarm: string, making: Making): void {
+    this.#pending.set(alarm, making.id);
     making.holders.add(alarm);
+  }
+
+  /** On the shelf, or on its way there. */
+  #isThere(id: string): boolean {
+    return this.isMaking(id) || this.shelf.get(id) !== null;
   }
 
   #recordOf(machine: Machine, point: Point, source: LinkSource, reading: Reading | null) {
@@ -270,7 +290,7 @@ export class SnapshotKeeper {
     if (id === undefined) return;
     this.#making.get(id)?.alarms.add(alarm);
     try {
-      this.#index.set(alarm, id, (other) => this.isMaking(other) || this.shelf.get(other) !== null);
+      this.#index.set(alarm, id, (other) => this.#isThere(other));
     } catch (error) {
       this.#host.log('the index of the snapshots cannot be written', { err: error });
     }
@@ -291,8 +311,7 @@ export class SnapshotKeeper {
     const { counts, gaps } = making.capture.take();
     this.#making.delete(id);
     this.#dueS.delete(id);
-    this.#recent.push(making);
-    if (this.#recent.length > MAX_RECENT) this.#recent.shift();
+    this.#recent = [...this.#recent, making.stretch].slice(-MAX_RECENT);
     const writing = this.#put(making, counts, gaps).finally(() => this.#writing.delete(id));
     this.#writing.set(id, writing);
     return writing;
@@ -313,7 +332,7 @@ export class SnapshotKeeper {
       return this.shelf.add(id);
     } catch (error) {
       this.lost++;
-      this.#recent.splice(0, this.#recent.length, ...this.#recent.filter((other) => other !== making));
+      this.#recent = this.#recent.filter((other) => other.id !== id);
       this.#host.log('a snapshot could not be written', { id, err: error });
       return null;
     }

@@ -28,24 +28,47 @@ export interface MakingFacts {
   cause: string;
 }
 
+/**
+ * Which samples a snapshot holds, or will. A ring is known by its memory, since each link counts its epochs from 1; it
+ * is not held by that, for its link may have gone.
+ */
+export interface Stretch {
+  id: string;
+  ring: WeakRef<SharedArrayBuffer>;
+  epoch: number;
+  first: number;
+  /** Index after the last. */
+  until: number;
+}
+
+/** Whether these samples of a link are within the stretch. */
+export function holds(stretch: Stretch, source: LinkSource, first: number, end: number): boolean {
+  return isOf(stretch, source) && stretch.first <= first && end <= stretch.until;
+}
+
+function isOf({ ring, epoch }: Stretch, source: LinkSource): boolean {
+  return ring.deref() === source.memory && epoch === source.epoch;
+}
+
 export class Making {
   readonly id: string;
-  readonly link: string;
   readonly capture: Capture;
   /** Alarms whose reading it holds. */
   readonly holders = new Set<string>();
   /** Alarms that came of it. */
   readonly alarms = new Set<string>();
   readonly #facts: MakingFacts;
-  readonly #source: LinkSource;
+  readonly #ring: WeakRef<SharedArrayBuffer>;
+  readonly #of: Pick<LinkSource, 'link' | 'description' | 'rate'>;
   readonly #channels: readonly { index: number; channel: SnapshotChannel }[];
   readonly #startMs: number;
 
   constructor(station: Station, source: LinkSource, first: number, until: number, facts: MakingFacts) {
     this.id = facts.id;
-    this.link = source.link;
     this.#facts = facts;
-    this.#source = source;
+    this.#ring = new WeakRef(source.memory);
+    const { link, description, rate } = source;
+    this.#of = { link, description, rate };
     this.#channels = channelsOf(station, source);
     const indices = this.#channels.map(({ index }) => index);
     this.capture = new Capture(source, indices, first, until);
@@ -57,16 +80,14 @@ export class Making {
     return this.#facts.kind !== 'alarm' || this.alarms.size > 0;
   }
 
-  /** Whether it holds these samples, or will. */
-  holds(source: LinkSource, first: number, end: number): boolean {
-    const { capture } = this;
-    return this.#sameEpoch(source) && capture.first <= first && end <= capture.until;
+  get stretch(): Stretch {
+    const { epoch, first, until } = this.capture;
+    return { id: this.id, ring: this.#ring, epoch, first, until };
   }
 
-  /** Whether it is still growing over these samples. */
+  /** Whether it is still growing and would hold these samples if it grew on. */
   reaches(source: LinkSource, first: number): boolean {
-    const { capture } = this;
-    return this.#sameEpoch(source) && !capture.done && capture.first <= first && first <= capture.until;
+    return !this.capture.done && holds(this.stretch, source, first, first);
   }
 
   tags(
@@ -74,7 +95,7 @@ export class Making {
     context: Pick<SnapshotTags, 'clock' | 'shafts' | 'version' | 'takenRunS'>,
     gaps: SnapshotTags['gaps'],
   ): SnapshotTags {
-    const { description, rate } = this.#source;
+    const { link, description, rate } = this.#of;
     const channels = this.#channels.map(({ channel }) => channel);
     const machines = [...new Set(channels.flatMap(({ points }) => points.map((key) => key.split('/')[0]!)))];
     return {
@@ -83,7 +104,7 @@ export class Making {
       id: this.id,
       site: station.site.id,
       machines,
-      link: this.link,
+      link,
       nominalRateHz: description.nominalRateHz,
       rate,
       start: new Date(this.#startMs).toISOString(),
@@ -96,10 +117,6 @@ export class Making {
       gaps,
       channels,
     };
-  }
-
-  #sameEpoch(source: LinkSource): boolean {
-    return this.link === source.link && this.capture.epoch === source.epoch;
   }
 }
 

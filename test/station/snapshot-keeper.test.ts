@@ -1,7 +1,11 @@
 /** What becomes a snapshot, and what does not: the keeper over a real ring and the built FLAC worker. */
+
 import { existsSync, mkdtempSync, readdirSync, rmSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
+import { setTimeout as sleep } from 'node:timers/promises';
+import v8 from 'node:v8';
+import vm from 'node:vm';
 import { afterEach, describe, expect, it } from 'vitest';
 import { RingWriter } from '../../src/link/ring.ts';
 import { FlacRoom } from '../../src/snapshot/flac-room.ts';
@@ -33,8 +37,16 @@ afterEach(() => {
 function rig(folder = mkdtempSync(join(tmpdir(), 'forebay-keeper-'))) {
   folders.push(folder);
   const station = stationOf(text.replace('FOLDER', folder));
-  const ring = new RingWriter(4, 25 * rateHz);
+  let ring = new RingWriter(4, 25 * rateHz);
   ring.beginEpoch(1, 0);
+  /** The link is closed and another one opened in its place, as by a new configuration. */
+  const reopenLink = () => {
+    ring = new RingWriter(4, 25 * rateHz);
+    ring.beginEpoch(1, 0);
+    return new WeakRef(ring.memory);
+  };
+  /** The node begins anew. */
+  const restartNode = () => ring.beginEpoch(++state.epoch, 0);
   const state = {
     epoch: 1,
     seconds: 0,
@@ -103,7 +115,7 @@ function rig(folder = mkdtempSync(join(tmpdir(), 'forebay-keeper-'))) {
   const tell = (what: 'begin' | 'keep' | 'drop', alarm: string) =>
     keeper.evidence({ kind: 'evidence', alarm, pointKey: alarm.split('.')[0]!, what }, reading());
   const files = () => readdirSync(join(folder, 'snapshots')).filter((name) => name.endsWith('.flac'));
-  return { folder, keeper, ring, state, worker, logged, pass, tell, files };
+  return { folder, keeper, reopenLink, restartNode, state, worker, logged, pass, tell, files };
 }
 
 describe('the keeper of snapshots', () => {
@@ -190,6 +202,83 @@ describe('the keeper of snapshots', () => {
     expect(second!.tags.firstIndex).toBeGreaterThan(first!.tags.firstIndex);
   });
 
+  it('begins another where the link was opened anew, though its numbers are the same', async () => {
+    const { keeper, reopenLink, pass, tell } = rig();
+    const named = ['h', 'v', 'a'].map((point) => {
+      pass(30);
+      tell('begin', `pump-1/${point}.zone`);
+      const id = keeper.snapshotOf(`pump-1/${point}.zone`, 'unacknowledged');
+      // Of the first the alarm has its samples, the second is growing still.
+      pass(point === 'h' ? 10 : 2);
+      reopenLink();
+      return id;
+    });
+    expect(new Set(named).size).toBe(3);
+    await keeper.stop();
+    expect(keeper.shelf.all.map(({ frames }) => frames / rateHz)).toEqual([15, 12, 12]);
+  });
+
+  it('names only what holds the reading: not one that a silence ended before', async () => {
+    const { keeper, pass, tell } = rig();
+    pass(40);
+    tell('begin', 'pump-1/h.zone');
+    const silent = keeper.snapshotOf('pump-1/h.zone', 'unacknowledged')!;
+    pass(2);
+    pass(20, false);
+    pass(1);
+    tell('begin', 'pump-1/v.zone');
+    const heard = keeper.snapshotOf('pump-1/v.zone', 'unacknowledged')!;
+    await keeper.stop();
+    expect(keeper.shelf.get(silent)!.frames).toBe(12 * rateHz);
+    const { tags, frames } = keeper.shelf.get(heard)!;
+    expect(tags.firstIndex + frames).toBe(43 * rateHz);
+  });
+
+  it('holds no ring of a link that is gone, be it written or still waiting for its alarm', async () => {
+    v8.setFlagsFromString('--expose-gc');
+    const collect = vm.runInNewContext('gc') as () => void;
+    const { keeper, reopenLink, worker, pass, tell } = rig();
+    const rings: WeakRef<SharedArrayBuffer>[] = [];
+    for (let round = 0; round < 6; round++) {
+      rings.push(reopenLink());
+      pass(30);
+      tell('begin', `pump-1/h.r${round}`);
+      if (round % 2 === 0) keeper.snapshotOf(`pump-1/h.r${round}`, 'unacknowledged');
+      pass(20);
+      await worker.idle();
+    }
+    reopenLink();
+    expect(keeper.counters()).toMatchObject({ kept: 3, making: 3 });
+    for (let tries = 0; tries < 20 && rings.some((ring) => ring.deref()); tries++) {
+      await sleep(20);
+      collect();
+    }
+    expect(rings.filter((ring) => ring.deref())).toEqual([]);
+  });
+
+  it('makes none longer than there is memory for', async () => {
+    const { keeper, restartNode, pass, tell } = rig();
+    // 15 s of 4 channels at 1 kHz are 240 kB: 209 of them fit into 48 MiB.
+    for (let k = 0; k < 208; k++) {
+      pass(10);
+      tell('begin', `pump-1/h.r${k}`);
+      restartNode();
+    }
+    pass(10);
+    tell('begin', 'pump-1/h.zone');
+    const id = keeper.snapshotOf('pump-1/h.zone', 'unacknowledged')!;
+    for (let k = 0; k < 3; k++) {
+      pass(4);
+      tell('begin', `pump-1/v.r${k}`);
+      expect(keeper.snapshotOf(`pump-1/v.r${k}`, 'unacknowledged')).toBe(id);
+    }
+    expect(keeper.counters()).toMatchObject({ making: 209, lost: 0 });
+    pass(5);
+    await keeper.stop();
+    // Twice 4 s more fit, not three times.
+    expect(keeper.shelf.get(id)!.frames).toBe((15 + 2 * 4) * rateHz);
+  });
+
   it('gives the alarm of the machine as a whole the waveform of its points', async () => {
     const { keeper, pass, tell } = rig();
     pass(30);
@@ -203,7 +292,7 @@ describe('the keeper of snapshots', () => {
   });
 
   it('takes what there is where the node falls silent or restarts, and where the agent stops', async () => {
-    const { keeper, ring, state, worker, pass, tell } = rig();
+    const { keeper, restartNode, worker, pass, tell } = rig();
     pass(30);
     tell('begin', 'pump-1/h.zone');
     const silent = keeper.snapshotOf('pump-1/h.zone', 'unacknowledged')!;
@@ -214,8 +303,7 @@ describe('the keeper of snapshots', () => {
     pass(5);
     tell('begin', 'pump-1/v.zone');
     const restarted = keeper.snapshotOf('pump-1/v.zone', 'unacknowledged')!;
-    ring.beginEpoch(2, 0);
-    state.epoch = 2;
+    restartNode();
     pass(2);
     await keeper.stop();
     expect(keeper.shelf.get(restarted)).not.toBeNull();
