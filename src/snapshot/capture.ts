@@ -1,6 +1,7 @@
 /**
  * A stretch of one node's samples, copied out of its ring as they come: what lies before the event at once, so that a
- * node which restarts or falls silent cannot take it away, and the rest when it is there. All channels, aligned.
+ * node which restarts or falls silent cannot take it away, and the rest when it is there. All channels, aligned. Runs on
+ * the thread that writes the ring, so all that the ring holds can be read.
  */
 
 import { RingReader } from '../link/ring.ts';
@@ -8,8 +9,6 @@ import type { Gap } from './tags.ts';
 
 /** Gaps that are told apart; from there on everything counts as missing. */
 const MAX_GAPS = 64;
-/** Space between what is read and what is about to be overwritten. */
-const MARGIN_SAMPLES = 4096;
 
 export interface CaptureSource {
   memory: SharedArrayBuffer;
@@ -40,7 +39,7 @@ export class Capture {
     this.#reader = reader;
     this.epoch = source.epoch;
     const { head, samples } = reader;
-    const oldest = Math.max(source.epochFirst, head - samples + MARGIN_SAMPLES);
+    const oldest = Math.max(source.epochFirst, head - samples);
     this.first = Math.max(first, Math.min(oldest, head), 0);
     this.#channels = channels;
     this.#until = Math.max(until, this.first);

@@ -53,7 +53,8 @@ describe('a capture', () => {
     const { ring, source } = ringFrom(0, 20_000);
     for (let k = 0; k < 10; k++) append(ring, 8000);
     const late = new Capture(source(), [0, 1, 2], 0, 80_000);
-    expect(late.first).toBeGreaterThan(80_000 - 20_000);
+    // All of the ring: of a slow node's even a few thousand samples are seconds.
+    expect(late.first).toBe(80_000 - 20_000);
     expect(late.done).toBe(true);
     expectAligned(late);
     const fresh = ringFrom(7777, 20_000);
