@@ -88,6 +88,7 @@ export class Shelf {
       this.tidy(id);
       return shelved;
     } catch (error) {
+      this.#kept.delete(id);
       rmSync(this.pathOf(id), { force: true });
       throw error;
     }
@@ -132,7 +133,9 @@ export class Shelf {
     if (id === null) return;
     try {
       this.#kept.set(id, readShelved(this.#folder, id));
-    } catch {
+    } catch (error) {
+      // What the disk would not give may be whole all the same.
+      if ('syscall' in (error as object)) return;
       rmSync(join(this.#folder, name), { force: true });
       this.cleaned++;
     }

@@ -1,4 +1,4 @@
-import { existsSync, mkdtempSync, readdirSync, rmSync, statSync, writeFileSync } from 'node:fs';
+import { existsSync, mkdirSync, mkdtempSync, readdirSync, rmSync, statSync, writeFileSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
 import { afterEach, describe, expect, it } from 'vitest';
@@ -47,6 +47,17 @@ describe('the shelf of snapshots', () => {
     expect(again.get('a')).toEqual(shelf.get('a'));
     expect(again.cleaned).toBe(2);
     expect(readdirSync(folder).sort()).toEqual(['a.flac', 'notes.txt']);
+  });
+
+  it('removes nothing that it cannot read', async () => {
+    const { folder, open, put } = rig();
+    await put(open(), 'a');
+    // Opens, and gives an error of the system when it is read.
+    mkdirSync(join(folder, 'b.flac'));
+    const shelf = open();
+    expect(ids(shelf)).toEqual(['a']);
+    expect(shelf.cleaned).toBe(0);
+    expect(readdirSync(folder).sort()).toEqual(['a.flac', 'b.flac']);
   });
 
   it('is bounded in number: the oldest goes first, those of unacknowledged alarms last', async () => {
