@@ -30,6 +30,15 @@ export class SnapshotIndex {
     this.#byAlarm = new Map(
       [...this.#byAlarm].filter(([, snapshot]) => snapshot === id || isThere(snapshot)),
     );
+    this.#write();
+  }
+
+  /** @throws where the file cannot be written; in memory it holds all the same. */
+  forget(alarm: string): void {
+    if (this.#byAlarm.delete(alarm)) this.#write();
+  }
+
+  #write(): void {
     writeFileSync(`${this.#path}.new`, JSON.stringify(Object.fromEntries(this.#byAlarm)));
     renameSync(`${this.#path}.new`, this.#path);
   }

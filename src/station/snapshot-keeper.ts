@@ -46,6 +46,8 @@ const LATE_S = 10;
 const MAX_FROZEN_BYTES = 48 * 1024 * 1024;
 /** Stretches written, remembered for alarms that follow to refer to. */
 const MAX_RECENT = 16;
+/** Written at a time: the rest waits here, where memory is counted, and leaves room for cuts. */
+const MAX_WRITING = 2;
 const MAX_NUMBER = 200;
 const MAX_AGE_S = 365 * 86_400;
 /** Of the space that the agent may have. */
@@ -123,7 +125,11 @@ export class SnapshotKeeper {
 
   /** The snapshot that an alarm, or the alarm of its machine as a whole, is to name; null: none. */
   snapshotOf(alarm: string, state: string): string | null {
-    if (state === 'normal') return null;
+    if (state === 'normal') {
+      // It is over: should it come again and nothing be frozen for it, this one must not stand for that one.
+      this.#indexed(() => this.#index.forget(alarm));
+      return null;
+    }
     if (state === 'unacknowledged')
       this.#refer(alarm, this.#pending.get(alarm) ?? this.#pendingOfGroup(alarm));
     const id = this.#index.get(alarm);
@@ -137,7 +143,7 @@ export class SnapshotKeeper {
     for (const making of this.#making.values()) {
       making.capture.advance();
       if (nowS > (this.#dueS.get(making.id) ?? nowS) + LATE_S) making.capture.cut();
-      if (making.capture.done && making.wanted) void this.#write(making);
+      if (making.capture.done && making.wanted && this.#writing.size < MAX_WRITING) void this.#write(making);
     }
   }
 
@@ -165,12 +171,13 @@ export class SnapshotKeeper {
 
   /** Writes what there is of what is wanted. */
   async stop(): Promise<void> {
-    for (const making of this.#making.values()) {
-      making.capture.advance();
-      making.capture.cut();
-      if (making.wanted) void this.#write(making);
+    const wanted = [...this.#making.values()].filter((making) => making.wanted);
+    for (const { capture } of wanted) {
+      capture.advance();
+      capture.cut();
     }
     await Promise.all(this.#writing.values());
+    for (const making of wanted) await this.#write(making);
   }
 
   #begin(alarm: string, pointKey: string, reading: Reading | null): void {
@@ -289,8 +296,12 @@ export class SnapshotKeeper {
   #refer(alarm: string, id: string | undefined): void {
     if (id === undefined) return;
     this.#making.get(id)?.alarms.add(alarm);
+    this.#indexed(() => this.#index.set(alarm, id, (other) => this.#isThere(other)));
+  }
+
+  #indexed(change: () => void): void {
     try {
-      this.#index.set(alarm, id, (other) => this.#isThere(other));
+      change();
     } catch (error) {
       this.#host.log('the index of the snapshots cannot be written', { err: error });
     }

@@ -279,6 +279,35 @@ describe('the keeper of snapshots', () => {
     expect(keeper.shelf.get(id)!.frames).toBe((15 + 2 * 4) * rateHz);
   });
 
+  it('writes a flood of them one after the other, and loses none', async () => {
+    const { keeper, restartNode, worker, pass, tell } = rig();
+    const named: (string | null)[] = [];
+    for (let k = 0; k < 12; k++) {
+      pass(10);
+      tell('begin', `pump-1/h.r${k}`);
+      named.push(keeper.snapshotOf(`pump-1/h.r${k}`, 'unacknowledged'));
+      restartNode();
+    }
+    for (let k = 0; k < 10; k++) {
+      pass(1);
+      await worker.idle();
+    }
+    expect(keeper.counters()).toMatchObject({ kept: 12, making: 0, lost: 0 });
+    expect(keeper.shelf.all.map(({ id }) => id).sort()).toEqual(named.toSorted());
+  });
+
+  it('names no waveform of an earlier time where there is none of this one', async () => {
+    const { folder, keeper, pass, tell } = rig();
+    pass(30);
+    tell('begin', 'pump-1/h.zone');
+    expect(keeper.snapshotOf('pump-1/h.zone', 'unacknowledged')).not.toBeNull();
+    pass(10);
+    await keeper.stop();
+    expect(keeper.snapshotOf('pump-1/h.zone', 'normal')).toBeNull();
+    // It was restarted between the first reading over the limit and the alarm.
+    expect(rig(folder).keeper.snapshotOf('pump-1/h.zone', 'unacknowledged')).toBeNull();
+  });
+
   it('gives the alarm of the machine as a whole the waveform of its points', async () => {
     const { keeper, pass, tell } = rig();
     pass(30);
