@@ -2,7 +2,7 @@
 
 import { createHash } from 'node:crypto';
 import { createReadStream, mkdirSync, rmSync, statSync } from 'node:fs';
-import { open } from 'node:fs/promises';
+import { type FileHandle, open } from 'node:fs/promises';
 import { dirname, join } from 'node:path';
 import type { Station } from '../config/station.ts';
 import type { Shelved } from '../snapshot/shelf.ts';
@@ -66,14 +66,17 @@ export class SnapshotAsks {
     if (seconds > MOST_SECONDS) throw new AskRefused(`a snapshot taken now may be ${MOST_SECONDS} s long`);
     const links = this.#linksOf(point, machine);
     const taken: Shelved[] = [];
-    try {
-      for (const link of links)
+    const missing: string[] = [];
+    for (const link of links) {
+      try {
         taken.push(await this.#sources.keeper.take(link, seconds, `asked for ${point ?? machine}`));
-    } catch (error) {
-      if (error instanceof RangeError) throw new AskRefused(error.message);
-      throw error;
+      } catch (error) {
+        if (!(error instanceof RangeError)) throw error;
+        missing.push(error.message);
+      }
     }
-    return { snapshot: taken[0]?.id, snapshots: taken.map(lineOf) };
+    if (taken.length === 0) throw new AskRefused(missing.join('; '));
+    return { snapshot: taken[0]?.id, snapshots: taken.map(lineOf), missing };
   }
 
   #linksOf(pointKey: string | undefined, machineId: string | undefined): string[] {
@@ -124,19 +127,23 @@ export class SnapshotAsks {
     const renewed = new Date(this.#sources.wallMs() + renewsInS * 1000).toISOString();
     const spent = `the daily budget for waveforms is spent until ${renewed}`;
     if (leftBytes <= 0) throw new AskRefused(spent);
+    // Held open, so that a transfer of hours outlives its file, whatever makes room meanwhile.
+    const file = await open(path, 'r').catch(removed);
     const begun = uplink.sendParts({
       askId: ask.id,
       parts: sending,
-      read: (part) => readPart(path, part),
+      read: (part) => readPart(file, part),
       ended: (trouble) => {
+        void file.close();
         if (trouble === null || trouble.kind === 'cancelled' || trouble.kind === 'nobody-listens') return;
         const error =
           trouble.kind === 'budget' ? spent : `the waveform could not be sent on: ${trouble.reason}`;
         void uplink.answer(ask.id, { ask: ask.id, ok: false, error }).catch(() => undefined);
       },
     });
-    if (!begun) throw new AskRefused('too many waveforms are being sent: try again in a minute');
-    return about;
+    if (begun) return about;
+    await file.close();
+    throw new AskRefused('too many waveforms are being sent: try again in a minute');
   }
 
   #shelved(id: string): Shelved {
@@ -191,9 +198,13 @@ export class SnapshotAsks {
       return await known;
     } catch {
       this.#hashes.delete(path);
-      throw new AskRefused('the snapshot has been removed from the disk');
+      return removed();
     }
   }
+}
+
+function removed(): never {
+  throw new AskRefused('the snapshot has been removed from the disk');
 }
 
 function lineOf({ id, bytes, frames, tags }: Shelved): Record<string, unknown> {
@@ -217,13 +228,8 @@ async function hashed(path: string): Promise<Source> {
   return { path, bytes: statSync(path).size, sha256: hash.digest('hex') };
 }
 
-async function readPart(path: string, part: number): Promise<Buffer> {
-  const file = await open(path, 'r');
-  try {
-    const buffer = Buffer.alloc(PART_BYTES);
-    const { bytesRead } = await file.read(buffer, 0, PART_BYTES, part * PART_BYTES);
-    return buffer.subarray(0, bytesRead);
-  } finally {
-    await file.close();
-  }
+async function readPart(file: FileHandle, part: number): Promise<Buffer> {
+  const buffer = Buffer.alloc(PART_BYTES);
+  const { bytesRead } = await file.read(buffer, 0, PART_BYTES, part * PART_BYTES);
+  return buffer.subarray(0, bytesRead);
 }

@@ -115,6 +115,12 @@ export class PartSender {
     this.#retry = null;
   }
 
+  /** Nothing more is sent. */
+  stop(): void {
+    this.detach();
+    for (const running of [...this.#running]) this.#end(running, { kind: 'cancelled', reason: 'stopped' });
+  }
+
   kick(): void {
     const connection = this.#connection;
     if (connection === null || this.#retry !== null) return;

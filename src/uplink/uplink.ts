@@ -270,6 +270,7 @@ export class Uplink {
       await this.#sayAgent(connection, n, 'offline', withinMs / 4).catch(() => undefined);
       await connection.goodbye(withinMs / 4);
     } else connection?.kill('the agent stops');
+    this.#parts.stop();
     await this.#book();
     await this.#embedded?.close();
   }

@@ -1,6 +1,6 @@
 /** What the station answers about waveforms, without a broker: what it refuses, and how much it sends. */
 import { createHash } from 'node:crypto';
-import { mkdtempSync, readdirSync, readFileSync, rmSync } from 'node:fs';
+import { mkdtempSync, readdirSync, readFileSync, rmSync, writeFileSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
 import { afterAll, beforeAll, beforeEach, describe, expect, it } from 'vitest';
@@ -10,12 +10,16 @@ import { openRecording } from '../../src/snapshot/recording.ts';
 import { Shelf } from '../../src/snapshot/shelf.ts';
 import { SnapshotAsks, type SnapshotUplink } from '../../src/station/snapshot-asks.ts';
 import type { PartTransfer } from '../../src/uplink/part-sender.ts';
-import { goodText, stationOf } from '../config/station-text.ts';
+import { edited, stationOf } from '../config/station-text.ts';
 import { uniform } from '../support/pump-signal.ts';
 import { someTags } from '../support/tagged.ts';
 
 type Handler = (ask: Record<string, unknown>) => Promise<Record<string, unknown>> | Record<string, unknown>;
 
+const pumpOnTwoNodes = `
+  - id: pump-3
+    shaft: {rpm: 1480}
+    points: [{id: h, link: node-1, channel: h}, {id: x, link: node-2, channel: x}]`;
 const folder = mkdtempSync(join(tmpdir(), 'forebay-asks-'));
 const id = someTags.id;
 const frames = 120_000;
@@ -68,13 +72,14 @@ beforeAll(async () => {
         return shelf.get(id)!;
       },
     },
-    station: () => stationOf(goodText),
+    station: () => stationOf(edited('\nalarms:', `${pumpOnTwoNodes}\nalarms:`)),
     wallMs: () => Date.parse('2026-03-02T10:00:00Z'),
   });
   asks.answer(uplink);
 });
 afterAll(() => rmSync(folder, { recursive: true, force: true }));
 beforeEach(() => {
+  for (const transfer of sent) transfer.ended(null);
   Object.assign(state, { protocol: '5', left: 1e9, full: false });
   [sent, cancelled, answered] = [[], [], []];
 });
@@ -131,6 +136,23 @@ describe('ask/fetch', () => {
     expect(readdirSync(join(folder, 'cuts')).length).toBeLessThanOrEqual(8);
   });
 
+  it('goes on to the end though the file has made room for others meanwhile', async () => {
+    const whole = readFileSync(join(folder, `${id}.flac`));
+    await ask('fetch', { snapshot: id });
+    const cut = { snapshot: id, channels: ['h'], from_s: 0.125 };
+    await ask('fetch', { ...cut, seconds: 0.5 });
+    const [, transfer] = sent;
+    const bytes = Number((await ask('fetch', { ...cut, seconds: 0.5, parts: [] })).bytes);
+    for (let k = 1; k <= 9; k++) await ask('fetch', { ...cut, seconds: k / 1000, parts: [] });
+    expect((await assembled(transfer!)).length).toBe(bytes);
+    rmSync(join(folder, `${id}.flac`));
+    expect((await assembled(sent[0]!)).equals(whole)).toBe(true);
+    await expect(ask('fetch', { snapshot: id })).rejects.toThrow(
+      'the snapshot has been removed from the disk',
+    );
+    writeFileSync(join(folder, `${id}.flac`), whole);
+  });
+
   it('is refused with a plain reason', async () => {
     await expect(ask('fetch', { snapshot: 'growing' })).rejects.toThrow(/not complete yet: try again/);
     await expect(ask('fetch', { snapshot: '../../etc/passwd' })).rejects.toThrow(/there is no snapshot/);
@@ -168,6 +190,12 @@ describe('ask/snapshot and ask/snapshots', () => {
   it('takes one of each node of a machine, or of the node of a point', async () => {
     expect(await ask('snapshot', { point: 'pump-1/motor-h', seconds: 2 })).toMatchObject({ snapshot: id });
     expect((await ask('snapshot', { machine: 'pump-1' })).snapshots).toHaveLength(1);
+    // One node of two is not heard: the other's is taken all the same.
+    expect(await ask('snapshot', { machine: 'pump-3' })).toMatchObject({
+      snapshot: id,
+      snapshots: [{ snapshot: id }],
+      missing: ['link node-2 has had no samples yet'],
+    });
     await expect(ask('snapshot', { machine: 'pump-2' })).rejects.toThrow(
       'link node-2 has had no samples yet',
     );

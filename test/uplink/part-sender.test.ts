@@ -70,6 +70,20 @@ function rig() {
 }
 
 describe('the sender of parts', () => {
+  it('ends all that is under way when it is stopped', async () => {
+    const { sender, connect, add, ended } = rig();
+    const { flights } = connect();
+    await add('a', 4);
+    await add('b', 4);
+    sender.stop();
+    expect([...ended].map(([id, trouble]) => [id, trouble?.kind])).toEqual([
+      ['a', 'cancelled'],
+      ['b', 'cancelled'],
+    ]);
+    for (const flight of [...flights]) await flight.acknowledge();
+    expect([sender.busy, sender.inFlight, ended.size]).toEqual([false, 0, 2]);
+  });
+
   it('keeps two in flight and ends when all are acknowledged', async () => {
     const { sender, connect, add, ended, log } = rig();
     const { flights } = connect();
