@@ -181,12 +181,16 @@ export class SnapshotKeeper {
   }
 
   #begin(alarm: string, pointKey: string, reading: Reading | null): void {
+    this.#letGo(alarm);
     const found = this.#find(pointKey);
     const present = found && this.#host.source(found.point.link);
     if (!found || !present) return;
+    if (reading !== null && !isOfEpoch(present, reading)) {
+      this.#gone(alarm);
+      return;
+    }
     // The rate of the reading that is over the limit, so that a replay of the snapshot gives that very reading.
     const source = { ...present, rate: reading?.rate ?? present.rate };
-    this.#letGo(alarm);
     const { first, end } = this.#recordOf(found.machine, found.point, source, reading);
     const rate = source.rate.hz;
     const until = end + Math.round(AFTER_S * rate);
@@ -203,7 +207,19 @@ export class SnapshotKeeper {
     }
     const from = Math.min(first, end - Math.round(BEFORE_S * rate));
     const made = this.#make(source, found.machine, from, until, 'alarm', `alarm ${alarm}`);
-    if (made) this.#hold(alarm, made);
+    if (!made) return;
+    if (made.capture.first < end) {
+      this.#hold(alarm, made);
+      return;
+    }
+    this.#forget(made);
+    this.#gone(alarm);
+  }
+
+  /** The samples of the reading are in the ring no more: it was judged late, or its node began anew. */
+  #gone(alarm: string): void {
+    this.lost++;
+    this.#host.log('the samples of a reading over its limit are gone', { alarm });
   }
 
   /** One that holds the record [first, end), or does now that it is longer; up to `until` where it may. */
@@ -257,7 +273,8 @@ export class SnapshotKeeper {
       return null;
     }
     const id = nameOf(this.#host.wallMs(), machine?.id ?? source.link);
-    const making = new Making(this.#host.station(), source, first, until, { id, kind, cause });
+    const facts = { id, kind, cause, clock: this.#host.clock(), shafts: [...this.#shafts.values()] };
+    const making = new Making(this.#host.station(), source, first, until, facts);
     this.#making.set(id, making);
     this.#expect(making, source);
     return making;
@@ -332,13 +349,8 @@ export class SnapshotKeeper {
     const { id } = making;
     try {
       if ((counts[0]?.length ?? 0) === 0) throw new RangeError('its samples are gone');
-      const context = {
-        clock: this.#host.clock(),
-        shafts: [...this.#shafts.values()],
-        version: this.#version,
-        takenRunS: Math.round(this.#host.runS()),
-      };
-      const tags = making.tags(this.#host.station(), context, gaps);
+      const takenRunS = Math.round(this.#host.runS());
+      const tags = making.tags({ version: this.#version, takenRunS, gaps });
       await this.flac.run({ kind: 'write', path: this.shelf.pathOf(id), counts, tags });
       return this.shelf.add(id);
     } catch (error) {
@@ -390,6 +402,10 @@ export class SnapshotKeeper {
       this.#host.station().machines.find(({ points }) => points.some((point) => point.link === link)) ?? null
     );
   }
+}
+
+function isOfEpoch({ epochFirst, head }: LinkSource, { first_index: first }: Reading): boolean {
+  return epochFirst <= first && first <= head;
 }
 
 /** `20260302T101530Z-pump-1-3f2a`: time, whose, and four digits by chance against a clock that was set back. */

@@ -4,7 +4,7 @@ import type { Station } from '../config/station.ts';
 import type { NodeDescription } from '../link/description.ts';
 import type { RateUsed } from '../measure/reading.ts';
 import { Capture, type CaptureSource } from '../snapshot/capture.ts';
-import type { SnapshotChannel, SnapshotKind, SnapshotTags } from '../snapshot/tags.ts';
+import type { ShaftTag, SnapshotChannel, SnapshotTags } from '../snapshot/tags.ts';
 
 /** Where the samples of a link are, at this moment. */
 export interface LinkSource extends CaptureSource {
@@ -22,10 +22,10 @@ export interface LinkSource extends CaptureSource {
 /** FLAC knows no more. */
 const MAX_CHANNELS = 8;
 
-export interface MakingFacts {
-  id: string;
-  kind: SnapshotKind;
-  cause: string;
+/** What its tags will say: as things are when it is frozen, for it may wait an hour for its alarm. */
+export interface MakingFacts extends Pick<SnapshotTags, 'id' | 'kind' | 'cause' | 'clock'> {
+  /** Of all machines of the station. */
+  shafts: readonly ShaftTag[];
 }
 
 /**
@@ -57,7 +57,7 @@ export class Making {
   readonly holders = new Set<string>();
   /** Alarms that came of it. */
   readonly alarms = new Set<string>();
-  readonly #facts: MakingFacts;
+  readonly #facts: MakingFacts & Pick<SnapshotTags, 'site' | 'config'>;
   readonly #ring: WeakRef<SharedArrayBuffer>;
   readonly #of: Pick<LinkSource, 'link' | 'description' | 'rate'>;
   readonly #channels: readonly { index: number; channel: SnapshotChannel }[];
@@ -65,7 +65,7 @@ export class Making {
 
   constructor(station: Station, source: LinkSource, first: number, until: number, facts: MakingFacts) {
     this.id = facts.id;
-    this.#facts = facts;
+    this.#facts = { ...facts, site: station.site.id, config: station.configHash };
     this.#ring = new WeakRef(source.memory);
     const { link, description, rate } = source;
     this.#of = { link, description, rate };
@@ -90,19 +90,14 @@ export class Making {
     return !this.capture.done && holds(this.stretch, source, first, first);
   }
 
-  tags(
-    station: Station,
-    context: Pick<SnapshotTags, 'clock' | 'shafts' | 'version' | 'takenRunS'>,
-    gaps: SnapshotTags['gaps'],
-  ): SnapshotTags {
+  tags(context: Pick<SnapshotTags, 'version' | 'takenRunS' | 'gaps'>): SnapshotTags {
     const { link, description, rate } = this.#of;
     const channels = this.#channels.map(({ channel }) => channel);
     const machines = [...new Set(channels.flatMap(({ points }) => points.map((key) => key.split('/')[0]!)))];
     return {
       ...context,
-      shafts: context.shafts.filter(({ machine }) => machines.includes(machine)),
-      id: this.id,
-      site: station.site.id,
+      ...this.#facts,
+      shafts: this.#facts.shafts.filter(({ machine }) => machines.includes(machine)),
       machines,
       link,
       nominalRateHz: description.nominalRateHz,
@@ -110,11 +105,7 @@ export class Making {
       start: new Date(this.#startMs).toISOString(),
       firstIndex: this.capture.first,
       nodeSerial: description.serialNumber,
-      cause: this.#facts.cause,
-      kind: this.#facts.kind,
       alarms: [...this.alarms],
-      config: station.configHash,
-      gaps,
       channels,
     };
   }

@@ -52,6 +52,7 @@ function rig(folder = mkdtempSync(join(tmpdir(), 'forebay-keeper-'))) {
     seconds: 0,
     headS: 0,
     trouble: null as string | null,
+    clock: 'synchronised' as 'synchronised' | 'free',
     running: null as boolean | null,
     unacknowledged: new Set<string>(),
   };
@@ -86,7 +87,7 @@ function rig(folder = mkdtempSync(join(tmpdir(), 'forebay-keeper-'))) {
       wallMs: () => wallMs(state.seconds),
       monotonicS: () => state.seconds,
       runS: () => state.seconds,
-      clock: () => 'synchronised',
+      clock: () => state.clock,
       unacknowledged: (alarm) => state.unacknowledged.has(alarm),
       running: () => state.running,
       log: (message, details) => logged.push(`${message} ${String(details.err)}`),
@@ -112,10 +113,10 @@ function rig(folder = mkdtempSync(join(tmpdir(), 'forebay-keeper-'))) {
     first_index: ring.head - recordS * rateHz,
     rate: { hz: rateHz, source: 'nominal' as const, ppm: null },
   });
-  const tell = (what: 'begin' | 'keep' | 'drop', alarm: string) =>
-    keeper.evidence({ kind: 'evidence', alarm, pointKey: alarm.split('.')[0]!, what }, reading());
+  const tell = (what: 'begin' | 'keep' | 'drop', alarm: string, of = reading()) =>
+    keeper.evidence({ kind: 'evidence', alarm, pointKey: alarm.split('.')[0]!, what }, of);
   const files = () => readdirSync(join(folder, 'snapshots')).filter((name) => name.endsWith('.flac'));
-  return { folder, keeper, reopenLink, restartNode, state, worker, logged, pass, tell, files };
+  return { folder, keeper, reopenLink, restartNode, state, worker, logged, pass, reading, tell, files };
 }
 
 describe('the keeper of snapshots', () => {
@@ -232,6 +233,45 @@ describe('the keeper of snapshots', () => {
     expect(keeper.shelf.get(silent)!.frames).toBe(12 * rateHz);
     const { tags, frames } = keeper.shelf.get(heard)!;
     expect(tags.firstIndex + frames).toBe(43 * rateHz);
+  });
+
+  it('names nothing where the samples of the reading are gone, and counts that', async () => {
+    const { keeper, restartNode, logged, pass, reading, tell, files } = rig();
+    pass(20);
+    const old = reading();
+    pass(40);
+    // It waited for the database: the ring holds 25 s.
+    tell('begin', 'pump-1/h.zone', old);
+    expect(keeper.snapshotOf('pump-1/h.zone', 'unacknowledged')).toBeNull();
+    tell('begin', 'pump-1/v.zone');
+    expect(keeper.snapshotOf('pump-1/v.zone', 'unacknowledged')).not.toBeNull();
+    const before = reading();
+    restartNode();
+    pass(1);
+    tell('begin', 'pump-1/a.zone', before);
+    expect(keeper.snapshotOf('pump-1/a.zone', 'unacknowledged')).toBeNull();
+    await keeper.stop();
+    expect(files()).toHaveLength(1);
+    expect(keeper.counters()).toMatchObject({ kept: 1, making: 0, lost: 2 });
+    expect(logged.join()).toContain('the samples of a reading over its limit are gone');
+  });
+
+  it('says of clock and speed what held when it was frozen, not when its alarm came', async () => {
+    const { keeper, state, pass, reading, tell } = rig();
+    pass(30);
+    state.clock = 'free';
+    const shaft = (hz: number | null) => ({ ...reading(), shaft: { hz, source: 'spectrum' as const } });
+    keeper.noteReading('pump-1', shaft(24.7));
+    tell('begin', 'pump-1/h.zone');
+    pass(600);
+    state.clock = 'synchronised';
+    keeper.noteReading('pump-1', shaft(null));
+    const id = keeper.snapshotOf('pump-1/h.zone', 'unacknowledged')!;
+    await keeper.stop();
+    expect(keeper.shelf.get(id)!.tags).toMatchObject({
+      clock: 'free',
+      shafts: [{ machine: 'pump-1', hz: 24.7, source: 'spectrum' }],
+    });
   });
 
   it('holds no ring of a link that is gone, be it written or still waiting for its alarm', async () => {
