@@ -9,6 +9,7 @@ import { onFindings } from './findings-hold.ts';
 import { onGateway, onLink, tickAgents } from './on-agent.ts';
 import { onAsk, tickAsks } from './on-ask.ts';
 import { onReading, onTrend } from './on-reading.ts';
+import { settle } from './on-restore.ts';
 import type { AlarmPlan } from './plan.ts';
 import { tell, tickQuiet, tickStates } from './quiet.ts';
 import { type AlarmRow, type EngineState, NEW_QUIET, ROW_VERSION, signature } from './state.ts';
@@ -66,9 +67,15 @@ export const EMPTY_STATE: EngineState = {
 
 /**
  * The state from rows that were kept. Rows of what has left the configuration are dropped and their topics emptied; a
- * row of another version is dropped as well, since a guess about an alarm is worse than a fresh start.
+ * row of another version is dropped as well, since a guess about an alarm is worse than a fresh start. What changes by
+ * it is told with the next step.
  */
-export function restoreAlarms(plan: AlarmPlan, rows: Readonly<Record<string, StoredRow>>): EngineStep {
+export function restoreAlarms(
+  plan: AlarmPlan,
+  rows: Readonly<Record<string, StoredRow>>,
+  t: string,
+  allocateId: AllocateId,
+): EngineStep {
   const effects: AlarmEffect[] = [];
   const alarms: Record<string, AlarmRow> = {};
   const points: Record<string, EngineState['points'][string]> = {};
@@ -100,19 +107,28 @@ export function restoreAlarms(plan: AlarmPlan, rows: Readonly<Record<string, Sto
     else quiet = row as EngineState['quiet'];
   }
   const waiting = Object.keys(alarms).filter((key) => signature(alarms[key]!) !== alarms[key]!.told);
-  return { state: { alarms, points, machines, quiet, waiting }, effects };
+  const work = new StepWork(plan, { alarms, points, machines, quiet, waiting }, t, allocateId);
+  settle(work);
+  const settled = work.finish();
+  return { state: settled.state, effects: [...effects, ...settled.effects] };
 }
 
 /** The same for a state at work, when the configuration changes under it. */
-export function replanAlarms(plan: AlarmPlan, state: EngineState): EngineStep {
+export function replanAlarms(
+  plan: AlarmPlan,
+  state: EngineState,
+  t: string,
+  allocateId: AllocateId,
+): EngineStep {
   const rows = (of: 'alarm' | 'point' | 'machine', from: Readonly<Record<string, object>>) =>
     Object.entries(from).map(([key, row]) => [`${of}:${key}`, { v: ROW_VERSION, of, ...row } as StoredRow]);
-  return restoreAlarms(plan, {
+  const all: Record<string, StoredRow> = {
     ...Object.fromEntries([
       ...rows('alarm', state.alarms),
       ...rows('point', state.points),
       ...rows('machine', state.machines),
     ]),
     'quiet:': { v: ROW_VERSION, of: 'quiet', ...state.quiet },
-  });
+  };
+  return restoreAlarms(plan, all, t, allocateId);
 }

@@ -2,21 +2,25 @@
  * One cause, one alarm. While up to two points of a machine stand in the same rule, each speaks for itself; from the
  * third on the machine's own alarm speaks for them, and the points that join are suppressed by design, with their
  * condition still told in that state. The first two keep their announcements: whoever saw them can acknowledge them.
+ *
+ * No point stays suppressed under an alarm that does not speak for it: one that is over, out of service, or has left the
+ * configuration. On the shelf it still keeps quiet what it stood for, as whoever shelved it asked; what comes new
+ * meanwhile speaks for itself.
  */
 
 import type { Level } from '../config/station.ts';
 import { changeAlarm, type Words } from './change.ts';
 import { conditionLevel } from './condition.ts';
 import { type LifeInput, type LifeState, stepLife, worse } from './life-cycle.ts';
-import type { GroupAlarm, PointAlarm } from './plan.ts';
+import type { AlarmDefinition, GroupAlarm, PointAlarm } from './plan.ts';
 import type { AlarmRow } from './state.ts';
-import { conditionCheck, groupedReason, groupReason } from './texts.ts';
+import { conditionCheck, groupedReason, groupReason, releasedReason } from './texts.ts';
 import type { StepWork } from './work.ts';
 
 /** Points that must stand together for the machine's alarm. Common practice, no source. */
 const GROUP_FROM = 3;
 
-export function groupOf(work: StepWork, { machine, rule }: PointAlarm): GroupAlarm | null {
+function groupOf(work: StepWork, { machine, rule }: PointAlarm): GroupAlarm | null {
   const group = work.plan.alarms.get(`${machine.id}/machine.${rule.id}`);
   return group?.kind === 'group' ? group : null;
 }
@@ -47,15 +51,51 @@ export function underGroup(work: StepWork, alarm: PointAlarm, level: Level | nul
   if (group === null || level === null || !stepLife(row.life, input, alarm.latched).announced) {
     return alone;
   }
+  const { life } = work.alarm(group.key);
   const others = standing(work, group).filter((member) => member.key !== alarm.key);
-  if (others.length + 1 < GROUP_FROM && !hasCondition(work.alarm(group.key).life)) return alone;
+  if ('withheld' in life || (others.length + 1 < GROUP_FROM && !hasCondition(life))) return alone;
   const suppress: LifeInput = { kind: 'withhold', why: 'suppressed-by-design' };
   const words = { reason: groupedReason(group.key) };
   return { inputs: [suppress, input], words, patch: { suppressedBy: 'group' } };
 }
 
-/** Brings the machine's alarm in line with its points. */
-export function updateGroup(work: StepWork, group: GroupAlarm): void {
+/** After something changed of these alarms: brings machines' alarms and their points in line with each other. */
+export function regroup(work: StepWork, alarms: Iterable<AlarmDefinition>): void {
+  const groups = new Set<GroupAlarm>();
+  for (const alarm of alarms) {
+    if (alarm.kind === 'group') groups.add(alarm);
+    if (alarm.kind !== 'point') continue;
+    const group = groupOf(work, alarm);
+    if (group === null) release(work, alarm);
+    else groups.add(group);
+  }
+  for (const group of groups) {
+    updateGroup(work, group);
+    if (speaks(work.alarm(group.key).life)) continue;
+    for (const member of membersOf(work, group)) release(work, member);
+  }
+}
+
+function speaks(life: LifeState): boolean {
+  return hasCondition(life) && life.state !== 'out-of-service';
+}
+
+/** A point that nothing speaks for any more does so itself; under a shelf or out of service, once that is over. */
+function release(work: StepWork, member: PointAlarm): void {
+  const { suppressedBy, shelf, service, life } = work.alarm(member.key);
+  if (suppressedBy !== 'group' || shelf !== null || service !== null) return;
+  const level = 'condition' in life ? life.condition : null;
+  if (level === null) return;
+  changeAlarm(
+    work,
+    member,
+    [{ kind: 'restore', why: 'suppressed-by-design' }],
+    { reason: releasedReason(member.rule, level) },
+    { patch: { suppressedBy: null } },
+  );
+}
+
+function updateGroup(work: StepWork, group: GroupAlarm): void {
   const row = work.alarm(group.key);
   const members = standing(work, group);
   if (members.length < GROUP_FROM && !hasCondition(row.life)) return;

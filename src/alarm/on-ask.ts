@@ -2,7 +2,7 @@
 
 import { changeAlarm, recordChange } from './change.ts';
 import type { AskInput } from './effects.ts';
-import { membersOf } from './group.ts';
+import { membersOf, regroup } from './group.ts';
 import type { LifeInput } from './life-cycle.ts';
 import type { AlarmDefinition } from './plan.ts';
 import type { AlarmRow } from './state.ts';
@@ -41,6 +41,7 @@ function alarmAsk(work: StepWork, ask: AlarmAsk): string | null {
     case 'unshelve':
       if (work.alarm(alarm.key).shelf === null) return refusal.notShelved;
       unshelve(work, alarm, operatorReason.unshelve(ask.by));
+      regroup(work, [alarm]);
       return null;
     case 'reset':
       return reset(work, alarm, ask.by);
@@ -115,6 +116,7 @@ function serviceAsk(work: StepWork, { kind, target, by, why }: ServiceAsk): stri
   for (const alarm of alarms) {
     changeAlarm(work, alarm, [input], { reason: operatorReason[kind](by, why) }, { patch: { service } });
   }
+  regroup(work, alarms);
   for (const key of pointsOf(work, target)) work.setPoint(key, { ...work.point(key), service });
   const [machine] = target.split('/');
   if (machine !== undefined && work.plan.machines.has(machine)) work.touched.add(machine);
@@ -155,13 +157,16 @@ function endTest(work: StepWork, alarm: AlarmDefinition): void {
 
 /** Shelves and tests run by the station's clock. */
 export function tickAsks(work: StepWork, elapsedS: number): void {
+  const unshelved: AlarmDefinition[] = [];
   for (const [key, { shelf, test }] of Object.entries(work.before.alarms)) {
     const alarm = work.plan.alarms.get(key);
     if (alarm === undefined) continue;
     if (shelf !== null) {
       const leftS = shelf.leftS - elapsedS;
-      if (leftS <= 0) unshelve(work, alarm, operatorReason.expired);
-      else work.setAlarm(key, { ...work.alarm(key), shelf: { ...shelf, leftS } }, false);
+      if (leftS <= 0) {
+        unshelve(work, alarm, operatorReason.expired);
+        unshelved.push(alarm);
+      } else work.setAlarm(key, { ...work.alarm(key), shelf: { ...shelf, leftS } }, false);
     }
     if (test !== null) {
       const leftS = test.leftS - elapsedS;
@@ -169,4 +174,6 @@ export function tickAsks(work: StepWork, elapsedS: number): void {
       else work.setAlarm(key, { ...work.alarm(key), test: { ...test, leftS } }, false);
     }
   }
+  // Points that come off the shelf together are one cause.
+  regroup(work, unshelved);
 }

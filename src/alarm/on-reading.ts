@@ -7,7 +7,7 @@ import { changeAlarm, type Words } from './change.ts';
 import { type ConditionState, conditionLevel, stepCondition } from './condition.ts';
 import type { AlarmInput } from './effects.ts';
 import { asPublished } from './figure.ts';
-import { groupOf, underGroup, updateGroup } from './group.ts';
+import { regroup, underGroup } from './group.ts';
 import { type LifeInput, type LifeState, stepLife } from './life-cycle.ts';
 import { judge, type Verdict } from './limits.ts';
 import type { PointAlarm, PointPlan } from './plan.ts';
@@ -169,8 +169,7 @@ function applyCondition(
     );
   }
   tellEvidence(work, alarm, was, next, announced);
-  const group = groupOf(work, alarm);
-  if (group !== null) updateGroup(work, group);
+  regroup(work, [alarm]);
 }
 
 function announces(from: LifeState, inputs: readonly LifeInput[], latched: boolean): boolean {

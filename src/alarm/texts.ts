@@ -137,6 +137,8 @@ export function groupReason(rule: Rule, name: string, points: readonly string[],
   return `${points.length} points of ${name} stand in ${levels} by rule ${rule.id} together: ${shown}`;
 }
 
+export const releasedReason = ({ watch, id }: Rule, level: Level): string =>
+  `${figureWords(watch)} stands in ${level} by rule ${id}: the alarm of its machine no longer speaks for it`;
 export const groupedReason = (group: string): string => `one cause, one alarm: announced as ${group}`;
 export const stoppedReason =
   'the machine has not been running, or not steadily, for an hour: nothing is judged';

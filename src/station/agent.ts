@@ -219,7 +219,7 @@ export class Agent {
     if (!sameUplink(this.#station, next)) await this.#exchangeUplink(next);
     this.#station = next;
     this.#told.listenTo(toldTopics(next.machines));
-    const judged = parts.judge.replan(plan);
+    const judged = parts.judge.replan(plan, this.#now());
     parts.post.replan(next.publish, trendWatches(next), (key) => plan.points.has(key));
     await this.#links.replan(next, ringSeconds);
     await judged;
@@ -257,8 +257,9 @@ export class Agent {
       key,
       JSON.parse(json) as StoredRow,
     ]);
-    const restored = restoreAlarms(plan, Object.fromEntries(rows));
-    const judging = new Judging(plan, restored.state, () => ids.idOf(ids.take()));
+    const nextId = () => ids.idOf(ids.take());
+    const restored = restoreAlarms(plan, Object.fromEntries(rows), this.#now(), nextId);
+    const judging = new Judging(plan, restored.state, nextId);
     const uplink = this.#makeUplink(station, ids);
     const kick = () => (this.#parts?.uplink ?? uplink).kick();
     const keeper = this.#makeKeeper(judging);

@@ -82,8 +82,8 @@ export class Judging {
   }
 
   /** Goes on with another plan: alarms that stay keep their state, those that left are withdrawn. */
-  replan(plan: AlarmPlan): JudgedStep {
-    const { state, effects } = replanAlarms(plan, this.#state);
+  replan(plan: AlarmPlan, t: string): JudgedStep {
+    const { state, effects } = replanAlarms(plan, this.#state, t, this.#allocateId);
     return {
       effects,
       keep: () => {

@@ -33,7 +33,7 @@ export interface JudgeHost {
 type Waiting = { resolve(effects: readonly AlarmEffect[]): void } & (
   | { input: AlarmInput }
   /** What came before is judged by the old plan, what comes after by this one. */
-  | { plan: AlarmPlan }
+  | { plan: AlarmPlan; t: string }
 );
 
 /** Inputs that may wait while the database cannot be written: an hour of ten points at ten seconds. */
@@ -81,9 +81,9 @@ export class LiveJudge {
   }
 
   /** Judges by another plan whatever is taken from now on. Resolves once that is durable. */
-  replan(plan: AlarmPlan): Promise<void> {
+  replan(plan: AlarmPlan, t: string): Promise<void> {
     return new Promise((resolve) => {
-      this.#queue.push({ plan, resolve: () => resolve() });
+      this.#queue.push({ plan, t, resolve: () => resolve() });
       this.#start();
     });
   }
@@ -123,7 +123,7 @@ export class LiveJudge {
 
   async #judge(next: Waiting): Promise<void> {
     const { effects, keep } =
-      'plan' in next ? this.#judging.replan(next.plan) : this.#judging.step(next.input);
+      'plan' in next ? this.#judging.replan(next.plan, next.t) : this.#judging.step(next.input);
     const reading = 'input' in next && next.input.kind === 'reading' ? next.input.reading : null;
     const evidence = effects.filter((effect) => effect.kind === 'evidence');
     for (const effect of evidence) if (effect.what === 'begin') this.#host.evidence(effect, reading);

@@ -1,5 +1,11 @@
 import type { AlarmEffect, AlarmInput, StoredRow } from '../../src/alarm/effects.ts';
-import { EMPTY_STATE, restoreAlarms, stepAlarms } from '../../src/alarm/engine.ts';
+import {
+  EMPTY_STATE,
+  type EngineStep,
+  replanAlarms,
+  restoreAlarms,
+  stepAlarms,
+} from '../../src/alarm/engine.ts';
 import type { AlarmPayload, MachineStatePayload } from '../../src/alarm/payload.ts';
 import { type AlarmPlan, planAlarms } from '../../src/alarm/plan.ts';
 import type { EngineState } from '../../src/alarm/state.ts';
@@ -156,7 +162,7 @@ export function makeReading(shown: Shown): Reading {
 
 /** Drives the engine as the station does, with a clock that only labels. */
 export class Bench {
-  readonly plan: AlarmPlan;
+  plan: AlarmPlan;
   state: EngineState = EMPTY_STATE;
   readonly effects: AlarmEffect[] = [];
   /** The rows as a store would hold them, through JSON. */
@@ -173,22 +179,18 @@ export class Bench {
   }
 
   put(input: AlarmInput): readonly AlarmEffect[] {
-    const step = stepAlarms(this.plan, this.state, input, () => `k3f9-${++this.#n}`);
-    this.state = step.state;
-    this.effects.push(...step.effects);
-    for (const effect of step.effects) {
-      if (effect.kind !== 'row') continue;
-      if (effect.row === null) delete this.rows[effect.key];
-      else this.rows[effect.key] = JSON.parse(JSON.stringify(effect.row)) as StoredRow;
-    }
-    return step.effects;
+    return this.#keep(stepAlarms(this.plan, this.state, input, this.#nextId));
   }
 
   /** Power off and on again: all that is left is what was kept. */
   restart(): readonly AlarmEffect[] {
-    const { state, effects } = restoreAlarms(this.plan, structuredClone(this.rows));
-    this.state = state;
-    return effects;
+    return this.#keep(restoreAlarms(this.plan, structuredClone(this.rows), this.t, this.#nextId));
+  }
+
+  /** Another configuration while it runs. */
+  reload(station: Station): readonly AlarmEffect[] {
+    this.plan = planAlarms(station);
+    return this.#keep(replanAlarms(this.plan, this.state, this.t, this.#nextId));
   }
 
   tick(elapsedS: number): readonly AlarmEffect[] {
@@ -212,6 +214,19 @@ export class Bench {
 
   lifeOf(key: string): string {
     return this.state.alarms[key]?.life.state ?? 'normal';
+  }
+
+  readonly #nextId = () => `k3f9-${++this.#n}`;
+
+  #keep({ state, effects }: EngineStep): readonly AlarmEffect[] {
+    this.state = state;
+    this.effects.push(...effects);
+    for (const effect of effects) {
+      if (effect.kind !== 'row') continue;
+      if (effect.row === null) delete this.rows[effect.key];
+      else this.rows[effect.key] = JSON.parse(JSON.stringify(effect.row)) as StoredRow;
+    }
+    return effects;
   }
 }
 

@@ -144,25 +144,26 @@ describe('a link that is kept', () => {
 describe('alarms under another plan', () => {
   let n = 0;
   const nextId = () => `store0-${++n}`;
+  const t = '2026-03-02T10:15:30.000Z';
   const linkLost: AlarmInput = {
     kind: 'link',
     link: 'node-2',
     conditions: ['foreign-node'],
     detail: 'another one',
-    t: '2026-03-02T10:15:30.000Z',
+    t,
   };
 
   it('keep their state where they stay, and are withdrawn where they leave', () => {
     const { state } = stepAlarms(planAlarms(usual), EMPTY_STATE, linkLost, nextId);
     const key = 'agent/node-2.foreign-node';
     expect(state.alarms[key]?.life.state).toBe('unacknowledged');
-    const same = replanAlarms(planAlarms(stationOf(stationText(1883, { alertMmS: 2 }))), state);
+    const same = replanAlarms(planAlarms(stationOf(stationText(1883, { alertMmS: 2 }))), state, t, nextId);
     expect(same.effects).toEqual([]);
     expect(same.state).toEqual(state);
     const text = stationText(1883)
       .replace(/ {2}- id: node-2[\s\S]*?(?=machines:)/, '')
       .replace(/ {2}- id: m3[\s\S]*?(?=alarms:)/, '');
-    const without = replanAlarms(planAlarms(stationOf(text)), state);
+    const without = replanAlarms(planAlarms(stationOf(text)), state, t, nextId);
     expect(without.state.alarms[key]).toBeUndefined();
     expect(without.effects).toContainEqual({ kind: 'withdraw', topic: 'agent/alarm/node-2.foreign-node' });
     expect(without.effects).toContainEqual({ kind: 'row', key: `alarm:${key}`, row: null, urgent: true });
