@@ -168,7 +168,8 @@ export function tickAsks(work: StepWork, elapsedS: number): void {
         unshelved.push(alarm);
       } else work.setAlarm(key, { ...work.alarm(key), shelf: { ...shelf, leftS } }, false);
     }
-    if (test !== null) {
+    // Coming off the shelf may have ended it.
+    if (test !== null && work.alarm(key).test === test) {
       const leftS = test.leftS - elapsedS;
       if (leftS <= 0) endTest(work, alarm);
       else work.setAlarm(key, { ...work.alarm(key), test: { ...test, leftS } }, false);

@@ -198,6 +198,19 @@ describe('test alarm', () => {
   });
 });
 
+test('a test alarm under way as the shelf runs out does not hide the alarm that comes back', () => {
+  const bench = raisedBench(8);
+  ask(bench, { kind: 'shelve', alarm: KEY, minutes: 5, by: 'ann' });
+  for (let i = 0; i < 27; i++) bench.read({ mmS: 8 });
+  ask(bench, { kind: 'test', alarm: KEY, level: 'alert' });
+  const told = Array.from({ length: 4 }, () =>
+    alarmsIn(bench.read({ mmS: 8 }), 'pump-1/alarm/de-h.zone'),
+  ).flat();
+  expect(brief(told)).toEqual(['unacknowledged danger']);
+  expect(told[0]).not.toHaveProperty('test');
+  expect(bench.state.alarms[KEY]!.test).toBeNull();
+});
+
 describe('restart in each state', () => {
   const reach: Record<string, (bench: Bench) => void> = {
     normal: () => undefined,
