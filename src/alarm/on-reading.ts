@@ -13,6 +13,7 @@ import { judge, type Verdict } from './limits.ts';
 import type { PointAlarm, PointPlan } from './plan.ts';
 import { riseOver } from './rise.ts';
 import { GAPS, hasGap, LINK_CONDITIONS, sensorFault } from './sensor.ts';
+import type { AlarmRow } from './state.ts';
 import {
   agentClearedReason,
   agentWords,
@@ -168,7 +169,7 @@ function applyCondition(
       true,
     );
   }
-  tellEvidence(work, alarm, was, next, announced);
+  tellEvidence(work, alarm, row, next, announced);
   regroup(work, [alarm]);
 }
 
@@ -199,17 +200,18 @@ function ageChatter(from: Chatter, elapsedS: number | null, on: boolean): Chatte
 function tellEvidence(
   work: StepWork,
   alarm: PointAlarm,
-  was: ConditionState,
+  { condition: was, life }: AlarmRow,
   now: ConditionState,
   announced: boolean,
 ) {
   const idle = (state: ConditionState) => state.alert.since === null && state.danger.since === null;
-  const standing = conditionLevel(was) !== null;
+  // On a shelf, suppressed or out of service it may come and go without a word.
+  const stood = conditionLevel(was) !== null && !('withheld' in life);
   const tell = (what: 'begin' | 'keep' | 'drop') =>
     work.effects.push({ kind: 'evidence', alarm: alarm.key, pointKey: alarm.point.key, what });
   if (idle(was) && !idle(now)) tell('begin');
   if (announced) tell('keep');
-  if (!standing && !idle(was) && idle(now)) tell('drop');
+  if (!stood && !idle(was) && idle(now)) tell('drop');
 }
 
 function judgeSensor(work: StepWork, { sensor }: PointPlan, reading: Reading, elapsedS: number | null): void {

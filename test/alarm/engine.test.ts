@@ -437,6 +437,18 @@ test('evidence is asked for at the first reading over the limit, and kept or dro
   ]);
 });
 
+test('evidence of what comes and goes on the shelf is dropped', () => {
+  const bench = new Bench(onePoint([zoneRule]));
+  bench.read({ mmS: 1 });
+  bench.put({ kind: 'shelve', alarm: 'pump-1/de-h.zone', minutes: 60, by: 'ann', t: bench.t });
+  const what = (mmS: number, times: number) =>
+    Array.from({ length: times }, () => bench.read({ mmS }))
+      .flat()
+      .flatMap((e) => (e.kind === 'evidence' ? [e.what] : []));
+  expect(what(8, 10)).toEqual(['begin']);
+  expect(what(1, 10)).toEqual(['drop']);
+});
+
 test('a point that the station does not have is refused', () => {
   const bench = new Bench(onePoint());
   expect(() => bench.read({ 'pump-9/x': { mmS: 1 } })).toThrow(/no point pump-9\/x/);
