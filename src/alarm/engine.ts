@@ -9,10 +9,10 @@ import { onFindings } from './findings-hold.ts';
 import { onGateway, onLink, tickAgents } from './on-agent.ts';
 import { onAsk, tickAsks } from './on-ask.ts';
 import { onReading, onTrend } from './on-reading.ts';
-import { settle } from './on-restore.ts';
+import { journalLeft, settle } from './on-restore.ts';
 import type { AlarmPlan } from './plan.ts';
 import { tell, tickQuiet, tickStates } from './quiet.ts';
-import { type AlarmRow, type EngineState, NEW_QUIET, ROW_VERSION, signature } from './state.ts';
+import { type AlarmRow, type EngineState, NEW_MACHINE, NEW_QUIET, ROW_VERSION, signature } from './state.ts';
 import { StepWork } from './work.ts';
 
 export interface EngineStep {
@@ -93,6 +93,8 @@ export function restoreAlarms(
       effects.push({ kind: 'row', key: rowKey, row: null, urgent: true });
       if (stored.of === 'alarm' && (stored.facts !== null || stored.test !== null))
         effects.push({ kind: 'withdraw', topic: key.replace('/', '/alarm/') });
+      if (stored.of === 'alarm' && v === ROW_VERSION)
+        effects.push(...journalLeft(key, stored, t, allocateId));
       if (of === 'machine' && !known) {
         effects.push(
           { kind: 'withdraw', topic: `${key}/state` },
@@ -103,7 +105,7 @@ export function restoreAlarms(
     }
     if (of === 'alarm') alarms[key] = row as AlarmRow;
     else if (of === 'point') points[key] = row as EngineState['points'][string];
-    else if (of === 'machine') machines[key] = row as EngineState['machines'][string];
+    else if (of === 'machine') machines[key] = { ...NEW_MACHINE, ...row } as EngineState['machines'][string];
     else quiet = row as EngineState['quiet'];
   }
   const waiting = Object.keys(alarms).filter((key) => signature(alarms[key]!) !== alarms[key]!.told);

@@ -79,7 +79,11 @@ function apply(
 function distrustPoints(work: StepWork, link: string): void {
   for (const { point, machine } of work.plan.points.values()) {
     if (point.link !== link) continue;
-    work.setPoint(point.key, { ...work.point(point.key), running: null, zone: null, invalid: UNKNOWN_AFTER });
+    work.setPoint(
+      point.key,
+      { ...work.point(point.key), running: null, zone: null, invalid: UNKNOWN_AFTER },
+      false,
+    );
     const row = work.machine(machine.id);
     const votes = machine.points.map(({ key }) => work.point(key).running);
     const running = votes.includes(true) ? true : votes.includes(false) ? false : null;

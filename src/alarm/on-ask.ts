@@ -117,7 +117,8 @@ function serviceAsk(work: StepWork, { kind, target, by, why }: ServiceAsk): stri
     changeAlarm(work, alarm, [input], { reason: operatorReason[kind](by, why) }, { patch: { service } });
   }
   regroup(work, alarms);
-  for (const key of pointsOf(work, target)) work.setPoint(key, { ...work.point(key), service });
+  for (const key of pointsOf(work, target)) work.setPoint(key, { ...work.point(key), service }, true);
+  if (work.plan.machines.has(target)) work.setMachine(target, { ...work.machine(target), service }, true);
   const [machine] = target.split('/');
   if (machine !== undefined && work.plan.machines.has(machine)) work.touched.add(machine);
   return null;

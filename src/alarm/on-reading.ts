@@ -44,7 +44,7 @@ export function onReading(work: StepWork, input: ReadingInput): void {
   const { machine, point } = plan;
   const before = work.point(point.key);
   const { row, counts } = trackPoint(before, machine, point, reading, elapsedS);
-  work.setPoint(point.key, row);
+  work.setPoint(point.key, row, false);
   const votes = machine.points.map(({ key }) => work.point(key).running);
   const followed = trackMachine(work.machine(machine.id), votes, point.key, reading.running, elapsedS, t);
   work.setMachine(machine.id, followed, false);

@@ -48,7 +48,7 @@ export interface PointRow {
   readonly zone: Zone | null;
   /** Readings in a row without a valid figure while the machine may run; counted up to where it matters. */
   readonly invalid: number;
-  readonly service: { readonly by: string; readonly why: string } | null;
+  readonly service: AlarmRow['service'];
 }
 
 export interface MachineRow {
@@ -63,6 +63,8 @@ export interface MachineRow {
   /** The point whose sample time counts the hours, and how many readings of others came since its last. */
   readonly clock: { readonly point: string; readonly missed: number } | null;
   readonly findings: FindingsRow;
+  /** The machine as a whole is out of service, and so is what a later configuration gives it. */
+  readonly service: AlarmRow['service'];
   readonly told: string;
   readonly sinceToldS: number;
 }
@@ -123,6 +125,7 @@ export const NEW_MACHINE: MachineRow = {
   starts: 0,
   clock: null,
   findings: { recent: [], standing: [] },
+  service: null,
   told: '',
   sinceToldS: 0,
 };

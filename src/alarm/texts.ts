@@ -142,6 +142,7 @@ export const releasedReason = ({ watch, id }: Rule, level: Level): string =>
 export const groupedReason = (group: string): string => `one cause, one alarm: announced as ${group}`;
 export const stoppedReason =
   'the machine has not been running, or not steadily, for an hour: nothing is judged';
+export const leftReason = 'it has left the configuration: nothing is judged by it any more';
 export const resumedReason = 'readings of the running machine count again';
 export const testOverReason = 'test of the alarm chain ended';
 

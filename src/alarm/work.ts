@@ -58,8 +58,9 @@ export class StepWork {
     if (urgent) this.#urgent.add(`alarm:${key}`);
   }
 
-  setPoint(key: string, row: PointRow): void {
+  setPoint(key: string, row: PointRow, urgent: boolean): void {
     this.#points.set(key, row);
+    if (urgent) this.#urgent.add(`point:${key}`);
   }
 
   setMachine(id: string, row: MachineRow, urgent: boolean): void {

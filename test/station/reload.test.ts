@@ -173,7 +173,7 @@ describe('alarms under another plan', () => {
     const text = stationText(1883).replace(/ {2}- id: m4[\s\S]*?(?=alarms:)/, '');
     const { state } = stepAlarms(planAlarms(stationOf(text)), EMPTY_STATE, linkLost, nextId);
     const more = planAlarms(usual);
-    const { effects } = stepAlarms(more, replanAlarms(more, state).state, linkLost, nextId);
+    const { effects } = stepAlarms(more, replanAlarms(more, state, t, nextId).state, linkLost, nextId);
     const published = effects.flatMap((effect) =>
       effect.kind === 'publish' && effect.class === 'state' ? [[effect.topic, effect.payload.severity]] : [],
     );
