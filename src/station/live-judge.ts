@@ -9,6 +9,7 @@ import type { AlarmPlan } from '../alarm/plan.ts';
 import type { Reading } from '../measure/reading.ts';
 import type { Commit, JournalEntry, MessageClass, OutboxMessage } from '../store/types.ts';
 import { journalEntryOf, numberOf } from './journal-entry.ts';
+import { asOneTick, giveUpOne, type Waiting } from './judge-queue.ts';
 import type { Judging } from './judging.ts';
 
 export interface JudgeHost {
@@ -30,12 +31,6 @@ export interface JudgeHost {
   monotonicS(): number;
 }
 
-type Waiting = { resolve(effects: readonly AlarmEffect[]): void } & (
-  | { input: AlarmInput }
-  /** What came before is judged by the old plan, what comes after by this one. */
-  | { plan: AlarmPlan; t: string }
-);
-
 /** Inputs that may wait while the database cannot be written: an hour of ten points at ten seconds. */
 const MAX_WAITING = 3600;
 const RETRY_MS = 1000;
@@ -43,7 +38,7 @@ const RETRY_MS = 1000;
 const IDLE_ROWS_S = 60;
 
 export class LiveJudge {
-  /** Inputs given up because too many waited; an ask is refused, a reading is lost to the alarms. */
+  /** Inputs given up because too many waited; a reading is lost to the alarms, an ask is refused. */
   dropped = 0;
   readonly #judging: Judging;
   readonly #host: JudgeHost;
@@ -65,16 +60,17 @@ export class LiveJudge {
   /** Resolves with the effects once they are durable; with none where the input was given up. */
   take(input: AlarmInput): Promise<readonly AlarmEffect[]> {
     const last = this.#queue.at(-1);
-    if (input.kind === 'tick' && last && 'input' in last && last.input.kind === 'tick') {
-      last.input = { ...input, elapsedS: input.elapsedS + last.input.elapsedS };
+    const tick = asOneTick(last, input);
+    if (tick !== null) {
+      this.#queue.splice(-1, 1, { ...last!, input: tick });
       return Promise.resolve([]);
     }
     return new Promise((resolve) => {
       this.#queue.push({ input, resolve });
       if (this.#queue.length > MAX_WAITING) {
-        this.dropped++;
-        const oldest = this.#queue.findIndex((waiting) => 'input' in waiting);
-        this.#queue.splice(oldest, 1)[0]?.resolve([]);
+        const given = giveUpOne(this.#queue);
+        if (given) this.dropped++;
+        given?.resolve([]);
       }
       this.#start();
     });

@@ -95,4 +95,70 @@ describe('LiveJudge', () => {
     for (let second = 0; second <= 40; second += 10) await judge.take(read(7.5, second));
     expect(alarmsOf(commits)).toHaveLength(1);
   });
+
+  describe('where more waits than may', () => {
+    const t = '2026-03-02T10:15:30.000Z';
+    const KEY = 'pump-1/de-h.zone';
+    const silent = (...conditions: 'silent'[]) => ({
+      kind: 'link' as const,
+      link: 'node-1',
+      conditions,
+      detail: null,
+      t,
+    });
+
+    /** Fills the queue while the database refuses its first commit, and waits until all is judged. */
+    async function stalled(fill: (made: ReturnType<typeof bench>) => void) {
+      vi.useFakeTimers();
+      try {
+        const made = bench(1);
+        void made.judge.take({ kind: 'shelve', alarm: KEY, minutes: 80, by: 'ann', t });
+        fill(made);
+        const last = made.judge.take({ kind: 'tick', elapsedS: 0, t });
+        await vi.advanceTimersByTimeAsync(1000);
+        await last;
+        while (made.judge.waiting > 0) await vi.advanceTimersByTimeAsync(1);
+        return made;
+      } finally {
+        vi.useRealTimers();
+      }
+    }
+
+    it('readings go, a link that has fallen silent is told all the same', async () => {
+      const { judge, judging } = await stalled(({ judge, read }) => {
+        void judge.take(silent('silent'));
+        for (let i = 0; i < 4000; i++) void judge.take(read(1, 10 * i));
+        for (let i = 0; i < 12; i++) {
+          void judge.take({ kind: 'tick', elapsedS: 10, t });
+          void judge.take(read(1, 40_000 + i));
+        }
+      });
+      expect(judging.state.alarms['agent/node-1.silent']?.life.state).toBe('unacknowledged');
+      // One link, 4000 readings, 24 more and the last tick, of which 3600 may wait.
+      expect(judge.dropped).toBe(1 + 4000 + 24 + 1 - 3600);
+    });
+
+    it('of a link its newest word stays, and asks wait longer than words that are superseded', async () => {
+      const { judge, judging } = await stalled(({ judge }) => {
+        void judge.take({ kind: 'test', alarm: 'pump-1/de-h.bearing', level: 'alert', t });
+        for (let i = 0; i < 4000; i++) void judge.take(i % 2 === 0 ? silent() : silent('silent'));
+        void judge.take({ kind: 'gateway', condition: 'disk', holds: true, detail: null, t });
+        void judge.take(silent('silent'));
+      });
+      expect(judging.state.alarms['pump-1/de-h.bearing']?.test).not.toBeNull();
+      expect(judging.state.alarms['agent/gateway.disk']?.life.state).toBe('unacknowledged');
+      expect(judging.state.alarms['agent/node-1.silent']?.condition.alert.since).not.toBeNull();
+      expect(judge.dropped).toBe(1 + 4000 + 2 + 1 - 3600);
+    });
+
+    it('no time is lost, and ticks between readings that go become one: the newest readings find room', async () => {
+      const { judging } = await stalled(({ judge, read }) => {
+        for (let i = 0; i < 5000; i++) {
+          void judge.take(read(i < 4900 ? 1 : 8, i));
+          void judge.take({ kind: 'tick', elapsedS: 1, t });
+        }
+      });
+      expect(judging.state.alarms[KEY]).toMatchObject({ shelf: null, life: { state: 'unacknowledged' } });
+    });
+  });
 });
