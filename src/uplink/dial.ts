@@ -5,7 +5,7 @@
 
 import { isIP, connect as netConnect, type Socket } from 'node:net';
 import type { Duplex } from 'node:stream';
-import { connect as tlsConnect } from 'node:tls';
+import { createSecureContext, connect as tlsConnect } from 'node:tls';
 import { ForebayError } from '../config/errors.ts';
 
 export interface BrokerAddress {
@@ -48,18 +48,25 @@ export interface Line {
   readonly stream: Duplex;
 }
 
+/** @throws what OpenSSL says of files that it cannot use. */
 export function dial(address: BrokerAddress, files: TlsFiles): Line {
+  // First, for it throws where a file is no certificate or key: no socket may be left on its way then.
+  const secureContext = address.secure
+    ? createSecureContext({
+        ...(files.ca === null ? {} : { ca: files.ca }),
+        ...(files.cert === null ? {} : { cert: files.cert }),
+        ...(files.key === null ? {} : { key: files.key }),
+        minVersion: 'TLSv1.2',
+      })
+    : null;
   const raw = netConnect({ host: address.host, port: address.port });
   raw.setKeepAlive(true, 60_000);
-  if (!address.secure) return { raw, stream: raw };
+  if (secureContext === null) return { raw, stream: raw };
   const stream = tlsConnect({
     socket: raw,
     host: address.host,
     ...(isIP(address.host) === 0 ? { servername: address.host } : {}),
-    ...(files.ca === null ? {} : { ca: files.ca }),
-    ...(files.cert === null ? {} : { cert: files.cert }),
-    ...(files.key === null ? {} : { key: files.key }),
-    minVersion: 'TLSv1.2',
+    secureContext,
     rejectUnauthorized: true,
   });
   raw.on('error', (error) => stream.destroy(error));
