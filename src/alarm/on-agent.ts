@@ -6,7 +6,7 @@ import type { AlarmInput } from './effects.ts';
 import type { AgentAlarm } from './plan.ts';
 import { GATEWAY_CONDITIONS, LINK_CONDITIONS, type LinkCondition } from './sensor.ts';
 import { agentClearedReason, agentWords } from './texts.ts';
-import { UNKNOWN_AFTER } from './tracking.ts';
+import { sinceOf, UNKNOWN_AFTER } from './tracking.ts';
 import type { StepWork } from './work.ts';
 
 export function onLink(work: StepWork, input: Extract<AlarmInput, { kind: 'link' }>): void {
@@ -87,7 +87,8 @@ function distrustPoints(work: StepWork, link: string): void {
     const row = work.machine(machine.id);
     const votes = machine.points.map(({ key }) => work.point(key).running);
     const running = votes.includes(true) ? true : votes.includes(false) ? false : null;
-    if (running !== row.running) work.setMachine(machine.id, { ...row, running, since: work.t }, false);
+    if (running !== row.running)
+      work.setMachine(machine.id, { ...row, running, since: sinceOf(row, running, work.t) }, false);
     work.touched.add(machine.id);
   }
 }

@@ -79,12 +79,18 @@ export function trackMachine(
     ...from,
     running: merged,
     wasRunning: merged ?? from.wasRunning,
-    since: merged === from.running ? from.since : t,
+    since: sinceOf(from, merged, t),
     runS: from.runS + (running === true && clock.point === pointKey ? (elapsedS ?? 0) : 0),
     day,
     starts: (day === from.day ? from.starts : 0) + (started ? 1 : 0),
     clock,
   };
+}
+
+/** When the machine began to run or to stand; a while of which nothing is known does not begin it anew. */
+export function sinceOf(from: MachineRow, running: boolean | null, t: string): string {
+  const same = running === from.running || running === null || running === from.wasRunning;
+  return same ? (from.since ?? t) : t;
 }
 
 /** Another point takes over the counting when the one that did has missed three rounds. */

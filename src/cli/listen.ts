@@ -3,14 +3,13 @@
  * over-range, RMS, peak and a verdict. It takes the place of the agent, so it refuses while the agent runs.
  */
 
-import { mkdirSync } from 'node:fs';
 import { loadStation } from '../config/load.ts';
 import type { Station } from '../config/station.ts';
 import type { ChannelDescription } from '../link/description.ts';
 import { type EpochStart, Link } from '../link/link.ts';
 import { RingReader } from '../link/ring.ts';
 import { systemClock } from '../link/system-clock.ts';
-import { lockDirectory } from '../store/open-file.ts';
+import { lockDirectory, makeDirectory } from '../store/open-file.ts';
 import { channelVerdict } from './channel-verdict.ts';
 
 const RING_SECONDS = 4;
@@ -27,7 +26,7 @@ export async function listenCommand(options: {
   out: Output;
 }): Promise<number> {
   const station = loadStation(options.config);
-  mkdirSync(station.storage.directory, { recursive: true });
+  makeDirectory(station.storage.directory);
   const lock = lockDirectory(station.storage.directory);
   const ears = station.links.map((settings) => new Ear(station, settings.id));
   for (const ear of ears) ear.link.start();
@@ -45,7 +44,7 @@ export async function listenCommand(options: {
   clearInterval(timer);
   await Promise.all(ears.map((ear) => ear.link.stop()));
   lock.close();
-  return 0;
+  return ears.some((ear) => ear.heard) ? 0 : 1;
 }
 
 class Ear {
@@ -71,6 +70,11 @@ class Ear {
         onCondition: () => undefined,
       },
     );
+  }
+
+  /** A node has described itself. */
+  get heard(): boolean {
+    return this.#start !== null;
   }
 
   lines(): string[] {

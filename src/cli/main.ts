@@ -30,7 +30,7 @@ function wholeNumber(text: string): number {
 }
 
 /** The command line is wrong, or names a file that cannot be read. */
-const usageCodes: readonly string[] = ['command.usage', 'file.unreadable'];
+const usageCodes: readonly string[] = ['command.usage', 'file.unreadable', 'uplink.url'];
 
 /** Says what went wrong on standard error and gives the exit status. */
 function failure(error: unknown): number {

@@ -1,6 +1,7 @@
 /** YAML text to plain data and places: bounded in size, depth and aliases before anything recursive runs on it. */
 
 import {
+  type Document,
   isAlias,
   isMap,
   isScalar,
@@ -9,6 +10,7 @@ import {
   LineCounter,
   type Node,
   type Pair,
+  parseAllDocuments,
   parseDocument,
 } from 'yaml';
 import type { ConfigIssue } from './issues.ts';
@@ -46,11 +48,16 @@ export function parseYaml(text: string): ParsedText {
     return failed('config.too-large', `nested deeper than ${maxDepth} levels, a station needs 8`, deep);
 
   const lines = new LineCounter();
-  const document = parseDocument(text, { lineCounter: lines, prettyErrors: false, logLevel: 'silent' });
+  const documents = parseAllDocuments(text, { lineCounter: lines, prettyErrors: false, logLevel: 'silent' });
   const at = (offset: number): Place => {
     const { line, col } = lines.linePos(offset);
     return { line: Math.max(1, line), column: Math.max(1, col) };
   };
+  const [document = parseDocument(''), second]: Document.Parsed[] = documents;
+  if (second) {
+    const message = 'a second document begins here, one file describes one station; take the line --- out';
+    return failed('config.syntax', message, at(second.range[0]));
+  }
   const issues: ConfigIssue[] = document.errors.map((error) => ({
     code: error.code === 'DUPLICATE_KEY' ? 'config.duplicate-key' : 'config.syntax',
     path: [],
@@ -97,7 +104,7 @@ function placeTooDeep(text: string): Place | null {
   return null;
 }
 
-function offsetOf(document: ReturnType<typeof parseDocument>, path: KeyPath, key: boolean): number {
+function offsetOf(document: Document.Parsed, path: KeyPath, key: boolean): number {
   let node: Node | null = document.contents;
   let offset = startOf(node) ?? 0;
   for (const [index, step] of path.entries()) {

@@ -20,11 +20,11 @@ function lines(all: readonly AlarmLine[], none: string): Markup {
   if (all.length === 0) return html`<p>${none}</p>`;
   const shown = all.slice(-MOST_LINES);
   return html`${all.length > shown.length && html`<p class="note">The last ${shown.length} of ${all.length}.</p>`}
-<div class="scroll"><table><thead><tr><th>Time</th><th>Alarm</th><th>State</th><th>Level</th><th>Value</th><th>Reason</th></tr></thead><tbody>${shown.map(
+<div class="scroll"><table class="stacks"><thead><tr><th>Time</th><th>Alarm</th><th>State</th><th>Level</th><th>Value</th><th>Reason</th></tr></thead><tbody>${shown.map(
     (
       line,
-    ) => html`<tr><td>${time(word(line.t))}</td><td>${word(line.machine)}${line.alarm === undefined ? '' : `/${word(line.alarm)}`}</td>
-<td>${word(line.state ?? line.kind)}</td><td>${word(line.level) || '–'}</td><td>${value(line)}</td><td>${word(line.reason ?? line.text)}</td></tr>`,
+    ) => html`<tr><td data-label="Time">${time(word(line.t))}</td><td data-label="Alarm">${word(line.machine)}${line.alarm === undefined ? '' : `/${word(line.alarm)}`}</td>
+<td data-label="State">${word(line.state ?? line.kind)}</td><td data-label="Level">${word(line.level) || '–'}</td><td data-label="Value">${value(line)}</td><td data-label="Reason">${word(line.reason ?? line.text)}</td></tr>`,
   )}</tbody></table></div>`;
 }
 
@@ -40,9 +40,9 @@ function value({ value, unit }: AlarmLine): string {
 export function settings({ points, input }: ReportModel): Markup {
   const { station, version } = input;
   return html`<p class="note">Configuration ${station.configHash}, mains ${station.site.mainsHz} Hz, measured by Forebay ${version}.</p>
-<div class="scroll"><table><thead><tr><th>Point</th><th>Velocity</th><th>Envelope</th><th>Shaft</th><th>Bearings</th><th>Sensor</th></tr></thead><tbody>${points.map(
+<div class="scroll"><table class="stacks"><thead><tr><th>Point</th><th>Velocity</th><th>Envelope</th><th>Shaft</th><th>Bearings</th><th>Sensor</th></tr></thead><tbody>${points.map(
     (report) =>
-      html`<tr><th scope="row">${report.point.key}</th><td>${velocityText(report)}</td><td>${envelopeText(report)}</td><td>${shaftText(report)}</td><td>${bearingText(report)}</td><td>${sensorText(report)}</td></tr>`,
+      html`<tr><th scope="row">${report.point.key}</th><td data-label="Velocity">${velocityText(report)}</td><td data-label="Envelope">${envelopeText(report)}</td><td data-label="Shaft">${shaftText(report)}</td><td data-label="Bearings">${bearingText(report)}</td><td data-label="Sensor">${sensorText(report)}</td></tr>`,
   )}</tbody></table></div>
 ${points.flatMap(({ point, plan }) => plan.warnings.map((warning) => html`<p class="note">${point.key}: ${warning}</p>`))}`;
 }

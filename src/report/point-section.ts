@@ -67,7 +67,10 @@ function figures({ point, shown }: PointReport, index: number): Markup {
     ...rest,
     velocity: { overall: velocity.overall },
     envelope: envelope && { mean: envelope.mean, floor: envelope.floor },
-    rate: { hz: Number(rate.hz.toPrecision(9)), ppm: rate.ppm },
+    rate: {
+      hz: Number(rate.hz.toPrecision(9)),
+      ppm: rate.ppm === null ? null : Number(rate.ppm.toPrecision(2)),
+    },
   });
   return html`<h3 id="figures-${index}">Figures of the reading of ${time(shown.t)}, from sample ${first_index}</h3>
 <dl class="figures">${rows.map(

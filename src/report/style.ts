@@ -83,7 +83,10 @@ figcaption{font-size:.9rem;margin-bottom:.3rem}
 .u-select{background:#14505c26}
 footer{padding:2rem 1.25rem 3rem;color:var(--soft);font-size:.86rem}
 @media (max-width:640px){body{font-size:14.5px}main,header,nav div,footer{padding-left:.8rem;padding-right:.8rem}h1{font-size:1.35rem}
-.facts{grid-template-columns:1fr}.facts dd{margin-bottom:.4rem}.tools .apart{margin-left:0}}
+.facts{grid-template-columns:1fr}.facts dd{margin-bottom:.4rem}.tools .apart{margin-left:0}
+.stacks thead{display:none}.stacks tr{display:block;border-bottom:1px solid var(--ink);padding:.4rem 0}
+.stacks td,.stacks th{display:grid;grid-template-columns:5.5rem 1fr;border:0;padding:.1rem 0;overflow-wrap:anywhere}
+.stacks th{display:block}.stacks td::before{content:attr(data-label);color:var(--soft)}}
 @media print{nav,.tools,.readout:empty{display:none}body{background:#fff;font-size:10.5pt}main,header,footer{max-width:none;padding:0}
 .plot{border-color:#888}details>*{display:block}.card,.levels,.finding{break-inside:avoid}h2,h3{break-after:avoid}
 *{-webkit-print-color-adjust:exact;print-color-adjust:exact}}

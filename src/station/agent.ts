@@ -1,6 +1,5 @@
 /** The agent: store, uplink, links, measuring and judging of one station, started, watched and stopped together. */
 
-import { mkdirSync } from 'node:fs';
 import type { AlarmInput, StoredRow } from '../alarm/effects.ts';
 import { restoreAlarms } from '../alarm/engine.ts';
 import { planAlarms } from '../alarm/plan.ts';
@@ -9,6 +8,7 @@ import type { Point, Station } from '../config/station.ts';
 import type { Reading } from '../measure/reading.ts';
 import { newestRunS } from '../snapshot/shelf.ts';
 import { storeLimits } from '../store/limits.ts';
+import { makeDirectory } from '../store/open-file.ts';
 import type { OpenReport } from '../store/types.ts';
 import { WorkerStore } from '../store/worker-store.ts';
 import { MessageIds } from '../uplink/message-ids.ts';
@@ -144,7 +144,7 @@ export class Agent {
   /** @throws ForebayError where the storage is locked or unwritable or the embedded broker's port is busy. */
   async start(): Promise<void> {
     const { directory } = this.#station.storage;
-    mkdirSync(directory, { recursive: true });
+    makeDirectory(directory);
     const report = await this.#watch.open(newestRunS(snapshotFolder(directory)));
     this.#clockSays = await clockState();
     const parts = await this.#assemble(report);
@@ -361,6 +361,7 @@ export class Agent {
     const nowS = this.#clock.monotonicS();
     const elapsedS = nowS - this.#tickS;
     void this.#parts?.judge.take({ kind: 'tick', elapsedS, t: this.#now() });
+    this.#links.tick(elapsedS);
     this.#parts?.learning.tick(elapsedS);
     this.#parts?.post.tick();
     this.#parts?.keeper.tick();

@@ -10,7 +10,7 @@ import { type EpochStart, Link } from '../link/link.ts';
 import type { LinkCondition, LinkHealth } from '../link/link-health.ts';
 import { systemClock } from '../link/system-clock.ts';
 import { measureRecord } from '../measure/measure.ts';
-import { planPoint } from '../measure/plan.ts';
+import { type PointPlan, planPoint } from '../measure/plan.ts';
 import type { Reading } from '../measure/reading.ts';
 import type { MeasuringSetup } from './measure-job.ts';
 import type { MeasuringRoom } from './measuring-room.ts';
@@ -61,6 +61,8 @@ export class StationLinks {
   readonly #joined = new Map<string, Joined>();
   /** What the figures of each point depend on. */
   #measuredBy: ReadonlyMap<string, string>;
+  /** How long ago each point that gets no samples was told as one. */
+  readonly #unfedS = new WeakMap<Unfed, number>();
   #stopped = false;
   #outdated = 0;
 
@@ -133,6 +135,19 @@ export class StationLinks {
         ({ point: { key } }) => before.get(key) !== this.#measuredBy.get(key),
       );
       if (fresh.length > 0) this.#tellUnheard(id, link.health().condition, fresh);
+    }
+  }
+
+  /** Once a second: a point that its node does not feed is told as one at each interval, as if it gave no figures. */
+  tick(elapsedS: number): void {
+    for (const [id, { link, sampling }] of this.#joined) {
+      const receiving = link.health().condition.kind === 'receiving';
+      for (const unfed of receiving ? sampling.unfed : []) {
+        const waitedS = (this.#unfedS.get(unfed) ?? 0) + elapsedS;
+        const due = waitedS >= unfed.point.measure.everyS;
+        this.#unfedS.set(unfed, due ? 0 : waitedS);
+        if (due) this.#report(id, [unfed], waitedS);
+      }
     }
   }
 
@@ -231,7 +246,7 @@ export class StationLinks {
   }
 
   /** A reading without figures for each point that gets none at present. */
-  #report(id: string, entries: readonly Unfed[]): void {
+  #report(id: string, entries: readonly Unfed[], elapsedS: number | null = null): void {
     const standing = this.#joined.get(id)?.sampling.standing;
     for (const { machine, point, why } of entries) {
       const rateHz = standing?.description.nominalRateHz ?? ASSUMED_RATE_HZ;
@@ -243,7 +258,7 @@ export class StationLinks {
         standing?.head ?? 0,
         why,
       );
-      if (reading) this.#host.reading(point, reading, this.#host.wallMs(), null);
+      if (reading) this.#host.reading(point, reading, this.#host.wallMs(), elapsedS);
     }
   }
 }
@@ -258,7 +273,7 @@ function blankReading(
   why: string,
 ): Reading | null {
   try {
-    return measureRecord(planPoint(point, machine, rateHz, mainsHz), {
+    return measureRecord(planForShape(point, machine, rateHz, mainsHz), {
       counts: new Int32Array(0),
       firstIndex,
       unit: 'g',
@@ -273,6 +288,15 @@ function blankReading(
     });
   } catch {
     return null;
+  }
+}
+
+/** Of a reading without figures only its keys are of the plan: where the node's rate allows none, any rate gives them. */
+function planForShape(point: Point, machine: Machine, rateHz: number, mainsHz: number): PointPlan {
+  try {
+    return planPoint(point, machine, rateHz, mainsHz);
+  } catch {
+    return planPoint(point, machine, ASSUMED_RATE_HZ, mainsHz);
   }
 }
 

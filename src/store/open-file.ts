@@ -9,7 +9,7 @@
  * file, so it is an error and the file stays.
  */
 
-import { existsSync, readdirSync, renameSync, rmSync, statfsSync, statSync } from 'node:fs';
+import { existsSync, mkdirSync, readdirSync, renameSync, rmSync, statfsSync, statSync } from 'node:fs';
 import { join } from 'node:path';
 import SqliteDatabase, { type Database } from 'better-sqlite3';
 import { ForebayError } from '../config/errors.ts';
@@ -23,6 +23,21 @@ const fullBelowBytes = 1 << 20;
 export interface OpenedFile {
   db: Database;
   setAside?: { reason: string; path: string };
+}
+
+/** @throws ForebayError where the directory is not there and cannot be made. */
+export function makeDirectory(directory: string): void {
+  try {
+    mkdirSync(directory, { recursive: true });
+  } catch (error) {
+    throw new ForebayError(
+      'store.unwritable',
+      `storage.directory ${directory}: ${(error as Error).message}`,
+      {
+        cause: error,
+      },
+    );
+  }
 }
 
 export function lockDirectory(directory: string): Database {

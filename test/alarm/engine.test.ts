@@ -127,6 +127,23 @@ describe('a machine that stops and starts', () => {
     expect(alarmsIn(bench.effects)).toEqual([]);
   });
 
+  test('runs since it started, whatever was unknown in between', () => {
+    const bench = new Bench(onePoint());
+    const last = (mmS: number | null, running: boolean | null) => {
+      // A minute and more, for state messages have a bound.
+      for (let i = 0; i < 8; i++) bench.read({ mmS, running });
+      return statesIn(bench.effects).at(-1);
+    };
+    last(0.05, false);
+    const started = last(2, true);
+    expect(last(null, null)).toMatchObject({ running: null });
+    expect(last(2, true)).toMatchObject({ running: true, since: started?.since });
+    last(null, null);
+    const stopped = last(0.05, false);
+    expect(stopped).toMatchObject({ running: false });
+    expect(stopped?.since).not.toBe(started?.since);
+  });
+
   test('runs shorter than the delay add up, since the delay counts running time', () => {
     const bench = new Bench(onePoint(undefined, { startDelayS: 0 }));
     const cycle = () => [

@@ -21,6 +21,14 @@ describe('the text of a station file', () => {
     expect(linesOf('site: {id: weir\nlinks: []\n')[0]).toMatch(/^station\.yaml:2:1 file: /);
   });
 
+  it('is one document: a second one would go unwatched', () => {
+    const text = `${goodText}---\nmachines: []\n`;
+    const line = goodText.split('\n').length;
+    expect(errorsOf(text)).toMatchObject([{ code: 'config.syntax', line: expect.any(Number) }]);
+    expect(errorsOf(text)[0]!.line).toBeGreaterThanOrEqual(line);
+    expect(errorsOf(`---\n${goodText}`)).toEqual([]);
+  });
+
   it('refuses a key that stands twice, and lists the other mistakes as well', () => {
     const text = edited(
       '    vanes: 6\n',

@@ -108,8 +108,8 @@ describe('the report command', () => {
       });
     const journal = write('journal.jsonl', `${line('pump-3', 'ours')}\n${line('pump-9', 'another')}\n`);
     const { text } = await report({ file, config: demoStation, journal });
-    expect(text).toContain('<td>ours</td>');
-    expect(text).toContain('<td>4.2 mm/s</td>');
+    expect(text).toContain('<td data-label="Reason">ours</td>');
+    expect(text).toContain('<td data-label="Value">4.2 mm/s</td>');
     expect(text).not.toContain('another');
     const bad = write('bad.jsonl', `${line('pump-3', 'ours')}\nnot json\n`);
     await expect(report({ file, config: demoStation, journal: bad })).rejects.toThrow(/bad\.jsonl:2 /);

@@ -91,6 +91,43 @@ describe('a machine that comes with a new configuration', () => {
   });
 });
 
+describe('a point that its node does not feed', () => {
+  it('has a reading that says so at once and at each interval, so that the machine becomes unknown', async () => {
+    const node = await startNode();
+    const outcome = async () => ({ id: 0, missed: 'overwritten' });
+    const { links, told } = started(stationText(node.port, machine('pump-1', 'x')), outcome);
+    await node.begin();
+    await until(() => told.length > 0, 'the first word');
+    links.tick(0.6);
+    expect(told).toHaveLength(1);
+    links.tick(0.6);
+    links.tick(1);
+    expect(told.map(({ elapsedS }) => elapsedS)).toEqual([null, 1.2, 1]);
+    for (const { reading } of told) expect(reading.why).toEqual(['channel x is not among h, v']);
+  });
+
+  it('even where its rate is too low for any plan', async () => {
+    const channels = [{ name: 'h', unit: 'g' as const, scale: 2 ** -12 }];
+    const slow = {
+      node: 7,
+      rateHz: 20,
+      format: 'i16' as const,
+      channels,
+      serialNumber: 'A1',
+      firmware: '0.9',
+    };
+    const node = await TcpNode.start(slow, () => 0, 8);
+    cleanups.push(() => node.stop());
+    const outcome = async () => ({ id: 0, missed: 'overwritten' });
+    const { told } = started(stationText(node.port, machine('pump-1', 'h')), outcome);
+    await node.begin();
+    const why = /a rate of 20 Hz carries 7.813 Hz, too little for a velocity/;
+    const last = () => told.at(-1)?.reading;
+    await until(() => why.test(last()?.why[0] ?? ''), 'a word on its rate');
+    expect(last()).toMatchObject({ quality: 'bad', running: null, rate: { hz: 20 } });
+  });
+});
+
 describe('measuring that breaks', () => {
   it('gives a bad reading of the record, with the reason', async () => {
     const node = await startNode();

@@ -17,7 +17,7 @@ import SqliteDatabase from 'better-sqlite3';
 import { afterEach, describe, expect, it } from 'vitest';
 import { ForebayError } from '../../src/config/errors.ts';
 import { Database } from '../../src/store/database.ts';
-import { openFile } from '../../src/store/open-file.ts';
+import { makeDirectory, openFile } from '../../src/store/open-file.ts';
 import { WorkerStore } from '../../src/store/worker-store.ts';
 import { every, makeFolder, message, removeFolders, roomyLimits, storeWorkerUrl } from '../support/store.ts';
 
@@ -45,6 +45,16 @@ const codeOf = (work: () => unknown): string => {
 };
 
 describe('the database file', () => {
+  it('lies in a directory that is made, and the setting is named where that cannot be', () => {
+    const directory = makeFolder();
+    makeDirectory(join(directory, 'a/b'));
+    open(join(directory, 'a/b')).database.close();
+    writeFileSync(join(directory, 'file'), '');
+    const refused = () => makeDirectory(join(directory, 'file/state'));
+    expect(codeOf(refused)).toBe('store.unwritable');
+    expect(refused).toThrow(/^storage\.directory .*file\/state: /);
+  });
+
   it('goes on with the run time that is known beside it, where it has seen less', () => {
     const directory = makeFolder();
     const opened = (leastRunS: number) => {

@@ -17,7 +17,11 @@ export class TcpNode {
   }
 
   /** @param countAt the count of a channel at a sample index. */
-  static async start(spec: SentNode, countAt: (channel: number, index: number) => number): Promise<TcpNode> {
+  static async start(
+    spec: SentNode,
+    countAt: (channel: number, index: number) => number,
+    frameSamples = 512,
+  ): Promise<TcpNode> {
     const sockets = new Set<Socket>();
     const server = createServer((socket) => {
       sockets.add(socket);
@@ -37,7 +41,7 @@ export class TcpNode {
     const write = (bytes: Uint8Array) => {
       for (const socket of sockets) socket.write(bytes);
     };
-    const sender = new PacedSender(spec, write, { frameSamples: 512, counts });
+    const sender = new PacedSender(spec, write, { frameSamples, counts });
     return new TcpNode(server, sockets, address.port, sender);
   }
 
