@@ -10,7 +10,7 @@ const bandFields = {
 };
 const everyS = num(0.5, 3600, 'A record starts every so often, s');
 const velocityFields = {
-  fmax_hz: num(20, 20_000, 'Upper edge of the velocity spectrum, Hz'),
+  fmax_hz: num(11, 20_000, 'Upper edge of the velocity spectrum, Hz'),
   lines: int(25, 51_200, 'Lines of the velocity spectrum; the line spacing is fmax_hz / lines'),
   averages: int(1, 1000, 'Half-overlapped blocks to average, at least'),
   window: z

@@ -154,7 +154,7 @@ export function planPoint(point: Point, machine: Machine, rateHz: number, mainsH
   if (coarse !== null) notes.warn(`${coarse}: give more lines`);
   if (spectrum.window === 'rectangular') {
     notes.warn(
-      'window rectangular leaks: displacement and velocity of slow shafts read up to a fifth wrong; hann does not',
+      'window rectangular leaks: displacement and velocity of slow shafts read wrong; hann does not',
     );
   }
   const usable = point.sensor.usableHz;

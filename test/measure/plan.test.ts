@@ -185,6 +185,8 @@ describe('what settings ask for and cannot have', () => {
     expect(slow).toMatch(/no bearing will be judged at 2 Hz: \d+ turns a block/);
     const coarse = planOf({ measure: { velocity: { ...usual.velocity, lines: 100 } } }).warnings.join('\n');
     expect(coarse).toMatch(/orders will be null at 23.93 Hz: lines of 10 Hz are too wide/);
+    const leaky = planOf({ measure: { velocity: { ...usual.velocity, window: 'rectangular' } } });
+    expect(leaky.warnings.join('\n')).toMatch(/window rectangular leaks/);
     const edge = planOf({
       machine: { shaft: { kind: 'fixed', rpm: 1470, tolerancePct: 3 } },
       measure: { velocity: { ...usual.velocity, fmaxHz: 250 } },
